@@ -1,0 +1,6 @@
+//! The binding: thin, one file a class.
+
+use pyo3::prelude::*;
+
+#[pymodule]
+mod _core {}
