@@ -47,6 +47,11 @@ impl<'a, T: Scalar> Rows<'a, T> {
         self.stride
     }
 
+    /// Where row 0 starts: row `i` starts `i stride` further on.
+    pub(crate) fn start(&self) -> *const T {
+        self.data.as_ptr()
+    }
+
     /// Row `index`.
     #[must_use]
     pub fn row(&self, index: usize) -> &'a [T] {
@@ -100,6 +105,9 @@ impl<T: Scalar> RowStore<T> {
     }
 
     /// The first `count` rows.
+    ///
+    /// # Panics
+    /// Where there are fewer.
     #[must_use]
     pub fn view(&self, count: usize) -> Rows<'_, T> {
         assert!(count <= self.rows, "{count} rows asked of {}", self.rows);
@@ -123,7 +131,10 @@ impl<T: Scalar> RowStore<T> {
         &mut self.data[index * self.stride..][..self.dim]
     }
 
-    /// Rows `first` and `second`, to write to; `first < second`.
+    /// Rows `first` and `second`, to write to.
+    ///
+    /// # Panics
+    /// Unless `first < second`.
     pub fn pair_mut(&mut self, first: usize, second: usize) -> (&mut [T], &mut [T]) {
         assert!(first < second, "a pair is two rows in order");
         let (head, tail) = self.data.split_at_mut(second * self.stride);

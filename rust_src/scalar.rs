@@ -4,13 +4,13 @@
 //! always, and every sweep computes in `f64`. A `float32` basis thus halves the memory traffic, which is what
 //! bounds a long sweep, and loses nothing to accumulation.
 
+use crate::ops::Transfer;
+
 /// A type the rows of a basis can be stored in: `f64` or `f32`.
-pub trait Scalar:
-    sealed::Sealed + Copy + Default + PartialEq + std::fmt::Debug + Send + Sync + 'static
-{
+pub trait Scalar: Transfer + Default + PartialEq + std::fmt::Debug + Send + Sync + 'static {
     /// Distance from 1 to the next larger number (2^-52 for `f64`, 2^-23 for `f32`).
     const EPSILON: f64;
-    /// NumPy's name of the type.
+    /// The name Python knows it by: `float64` or `float32`.
     const NAME: &'static str;
     /// The nearest stored value.
     fn from_f64(value: f64) -> Self;
@@ -39,10 +39,4 @@ impl Scalar for f32 {
     fn to_f64(self) -> f64 {
         f64::from(self)
     }
-}
-
-mod sealed {
-    pub trait Sealed {}
-    impl Sealed for f64 {}
-    impl Sealed for f32 {}
 }

@@ -1,89 +1,320 @@
-//! The sweeps, as plain loops.
+//! The sweeps, written once for every instruction set.
+//!
+//! Two rules keep a sweep at the speed of the memory. Eight basis vectors share each load of the vector, so the
+//! vector costs an eighth of a load a product. And the columns are walked in blocks: a block of the vector
+//! stays in the first-level cache while all basis vectors pass over it, and where a block of the basis is used
+//! twice (subtract, then measure) it is still in the second-level cache the second time.
+//!
+//! Sums are taken lane by lane inside a block, then block by block, so the error of a long product grows with
+//! the number of blocks and of lane steps, not with the number of entries.
 
+use super::entries::{add_scaled, scaled};
+use super::lanes::{Lanes, Transfer};
 use crate::rows::Rows;
 use crate::scalar::Scalar;
 
-/// Sum of products of two vectors of equal length.
-#[must_use]
-pub fn dot(x: &[f64], y: &[f64]) -> f64 {
-    x.iter().zip(y).map(|(a, b)| a * b).sum()
+/// Entries of the vector in a block: 16 KiB, a third of a first-level cache.
+const BLOCK: usize = 2048;
+/// Bytes of the basis in a block that is used twice: well inside a second-level cache.
+const BLOCK_BYTES: usize = 512 * 1024;
+/// The smallest block worth starting the loops for.
+const BLOCK_LEAST: usize = 128;
+
+/// Entries in a block for a sweep that passes twice over `count` rows.
+fn block_for<T>(count: usize) -> usize {
+    let entries = BLOCK_BYTES / (count.max(1) * size_of::<T>());
+    (entries / BLOCK_LEAST * BLOCK_LEAST).clamp(BLOCK_LEAST, BLOCK)
 }
 
-/// Sum of squares; not guarded against overflow.
-#[must_use]
-pub fn norm_squared(x: &[f64]) -> f64 {
-    dot(x, x)
+/// Calls `$on` with a group size as constant until `$count` rows are done: eights, then what is left.
+macro_rules! in_groups {
+    ($count:expr, |$first:ident, $rows:ident, $chains:ident| $body:expr) => {{
+        let mut $first = 0;
+        while $first + 8 <= $count {
+            const $rows: usize = 8;
+            const $chains: usize = 1;
+            $body;
+            $first += 8;
+        }
+        if $first + 4 <= $count {
+            const $rows: usize = 4;
+            const $chains: usize = 2;
+            $body;
+            $first += 4;
+        }
+        if $first + 2 <= $count {
+            const $rows: usize = 2;
+            const $chains: usize = 4;
+            $body;
+            $first += 2;
+        }
+        if $first < $count {
+            const $rows: usize = 1;
+            const $chains: usize = 8;
+            $body;
+        }
+    }};
 }
 
-/// `h = Q v`; returns `v . v`. One read of `Q`.
-pub fn project<T: Scalar>(q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 {
-    for (index, row) in q.iter().enumerate() {
-        h[index] = row.iter().zip(v).map(|(a, b)| a.to_f64() * b).sum();
-    }
-    norm_squared(v)
-}
-
-/// `w = v - Q^T h`; returns `w . w`. One read of `Q`.
-pub fn subtract<T: Scalar>(q: Rows<'_, T>, h: &[f64], v: &[f64], w: &mut [f64]) -> f64 {
-    w.copy_from_slice(v);
-    for (index, row) in q.iter().enumerate() {
-        for (target, value) in w.iter_mut().zip(row) {
-            *target -= h[index] * value.to_f64();
+/// Products of `R` rows with `x`, `n` entries each, in `C` independent chains a row: enough of them to hide the
+/// latency of a multiply-add.
+///
+/// # Safety
+/// Every pointer in `rows`, and `x`, points to `n` readable entries.
+#[inline(always)]
+#[expect(clippy::needless_range_loop, reason = "constant bounds, so that the loops unroll into registers")]
+unsafe fn dots<L: Lanes, T: Transfer, const R: usize, const C: usize>(
+    lanes: L,
+    rows: [*const T; R],
+    x: *const f64,
+    n: usize,
+) -> [f64; R] {
+    let mut sums = [[lanes.splat(0.0); C]; R];
+    let mut at = 0;
+    // SAFETY: all accesses are at `at..at + WIDTH` with `at + WIDTH <= n`, or the `n - at` last entries.
+    unsafe {
+        while at + C * L::WIDTH <= n {
+            for chain in 0..C {
+                let here = at + chain * L::WIDTH;
+                let factor = lanes.load64(x.add(here));
+                for row in 0..R {
+                    sums[row][chain] =
+                        lanes.mul_add(T::load(lanes, rows[row].add(here)), factor, sums[row][chain]);
+                }
+            }
+            at += C * L::WIDTH;
+        }
+        while at + L::WIDTH <= n {
+            let factor = lanes.load64(x.add(at));
+            for row in 0..R {
+                sums[row][0] = lanes.mul_add(T::load(lanes, rows[row].add(at)), factor, sums[row][0]);
+            }
+            at += L::WIDTH;
+        }
+        if at < n {
+            let factor = lanes.load64_part(x.add(at), n - at);
+            for row in 0..R {
+                sums[row][0] =
+                    lanes.mul_add(T::load_part(lanes, rows[row].add(at), n - at), factor, sums[row][0]);
+            }
         }
     }
-    norm_squared(w)
+    sums.map(|chains| {
+        let mut total = chains[0];
+        for &chain in &chains[1..] {
+            total = lanes.add(total, chain);
+        }
+        lanes.sum(total)
+    })
 }
 
-/// `w = v - Q^T h` and `s = Q w`; returns `w . w`. One read of `Q` from memory, one from cache.
-pub fn subtract_measured<T: Scalar>(
+/// `out = x - sum_r factors[r] rows[r]` over `n` entries; `out` may be `x`.
+///
+/// # Safety
+/// Every pointer in `rows`, and `x`, points to `n` readable entries, `out` to `n` writable ones that overlap
+/// none of `rows`.
+#[inline(always)]
+unsafe fn less<L: Lanes, T: Transfer, const R: usize>(
+    lanes: L,
+    rows: [*const T; R],
+    factors: [f64; R],
+    x: *const f64,
+    out: *mut f64,
+    n: usize,
+) {
+    let factors = factors.map(|factor| lanes.splat(factor));
+    let mut at = 0;
+    // SAFETY: as in `dots`; each entry of `x` is read before the same entry of `out` is written.
+    unsafe {
+        while at + L::WIDTH <= n {
+            let mut value = lanes.load64(x.add(at));
+            for row in 0..R {
+                value = lanes.mul_sub(T::load(lanes, rows[row].add(at)), factors[row], value);
+            }
+            lanes.store64(out.add(at), value);
+            at += L::WIDTH;
+        }
+        if at < n {
+            let mut value = lanes.load64_part(x.add(at), n - at);
+            for row in 0..R {
+                value = lanes.mul_sub(T::load_part(lanes, rows[row].add(at), n - at), factors[row], value);
+            }
+            lanes.store64_part(out.add(at), value, n - at);
+        }
+    }
+}
+
+/// Adds to `h` the products of all rows with `x` over the columns `from..from + n`.
+///
+/// # Safety
+/// `x` points to `n` readable entries and `from + n <= q.dim()`.
+#[inline(always)]
+unsafe fn add_dots<L: Lanes, T: Scalar>(
+    lanes: L,
+    q: Rows<'_, T>,
+    from: usize,
+    x: *const f64,
+    n: usize,
+    h: &mut [f64],
+) {
+    let start = q.start();
+    let stride = q.stride();
+    in_groups!(q.count(), |first, R, C| {
+        // SAFETY: row `first + r < count` starts at `stride (first + r)` and holds `dim >= from + n` entries.
+        let sums = unsafe {
+            dots::<L, T, R, C>(lanes, std::array::from_fn(|r| start.add((first + r) * stride + from)), x, n)
+        };
+        for (target, sum) in h[first..].iter_mut().zip(sums) {
+            *target += sum;
+        }
+    });
+}
+
+/// `out = x - Q^T h` over the columns `from..from + n`.
+///
+/// # Safety
+/// `x` points to `n` readable and `out` to `n` writable entries (they may be the same), `from + n <= q.dim()`.
+#[inline(always)]
+unsafe fn less_rows<L: Lanes, T: Scalar>(
+    lanes: L,
     q: Rows<'_, T>,
     h: &[f64],
-    v: &[f64],
+    from: usize,
+    x: *const f64,
+    out: *mut f64,
+    n: usize,
+) {
+    let start = q.start();
+    let stride = q.stride();
+    let mut source = x;
+    in_groups!(q.count(), |first, R, _C| {
+        let factors: [f64; R] = std::array::from_fn(|r| h[first + r]);
+        // SAFETY: rows as in `add_dots`; `source` is `x` first and `out` after that.
+        unsafe {
+            less::<L, T, R>(
+                lanes,
+                std::array::from_fn(|r| start.add((first + r) * stride + from)),
+                factors,
+                source,
+                out,
+                n,
+            );
+        }
+        source = out.cast_const();
+    });
+    if source == x && x != out.cast_const() {
+        // No row at all. SAFETY: `n` entries each; distinct pointers come from distinct slices.
+        unsafe { std::ptr::copy_nonoverlapping(x, out, n) };
+    }
+}
+
+/// See [`super::Path::dot`].
+#[inline(always)]
+pub(super) fn dot<L: Lanes>(lanes: L, x: &[f64], y: &[f64]) -> f64 {
+    assert_eq!(x.len(), y.len(), "vectors of equal length");
+    let mut total = 0.0;
+    for (a, b) in x.chunks(BLOCK).zip(y.chunks(BLOCK)) {
+        // SAFETY: both chunks hold `a.len()` entries.
+        total += unsafe { dots::<L, f64, 1, 8>(lanes, [a.as_ptr()], b.as_ptr(), a.len()) }[0];
+    }
+    total
+}
+
+/// See [`super::Path::project`].
+#[inline(always)]
+pub(super) fn project<L: Lanes, T: Scalar>(lanes: L, q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 {
+    assert!(v.len() == q.dim() && h.len() == q.count(), "shapes of a projection");
+    h.fill(0.0);
+    let mut squares = 0.0;
+    for (index, block) in v.chunks(BLOCK).enumerate() {
+        // SAFETY: `block` holds its length and lies inside `v`, which is as long as a row.
+        unsafe {
+            squares += dots::<L, f64, 1, 8>(lanes, [block.as_ptr()], block.as_ptr(), block.len())[0];
+            add_dots(lanes, q, index * BLOCK, block.as_ptr(), block.len(), h);
+        }
+    }
+    squares
+}
+
+/// Where a subtraction reads: another vector, or its own target.
+#[derive(Clone, Copy)]
+pub(super) enum Source<'a> {
+    /// A vector as long as the target.
+    Vector(&'a [f64]),
+    /// The target itself.
+    Target,
+}
+
+/// See [`super::Path::subtract`] and [`super::Path::subtract_measured`]; measures where `s` is given.
+#[inline(always)]
+pub(super) fn subtract<L: Lanes, T: Scalar>(
+    lanes: L,
+    q: Rows<'_, T>,
+    h: &[f64],
+    source: Source<'_>,
     w: &mut [f64],
-    s: &mut [f64],
+    mut s: Option<&mut [f64]>,
 ) -> f64 {
-    subtract(q, h, v, w);
-    project(q, w, s)
-}
-
-/// `w -= Q^T h` and `s = Q w`; returns `w . w`.
-pub fn subtract_measured_in_place<T: Scalar>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], s: &mut [f64]) -> f64 {
-    for (index, row) in q.iter().enumerate() {
-        for (target, value) in w.iter_mut().zip(row) {
-            *target -= h[index] * value.to_f64();
+    assert!(w.len() == q.dim() && h.len() == q.count(), "shapes of a subtraction");
+    if let Source::Vector(v) = source {
+        assert_eq!(v.len(), w.len(), "vectors of equal length");
+    }
+    if let Some(s) = &mut s {
+        assert_eq!(s.len(), q.count(), "a coefficient a row");
+        s.fill(0.0);
+    }
+    let block = block_for::<T>(q.count());
+    let mut squares = 0.0;
+    for from in (0..w.len()).step_by(block) {
+        let here = &mut w[from..(from + block).min(q.dim())];
+        let (out, n) = (here.as_mut_ptr(), here.len());
+        let x = match source {
+            Source::Vector(v) => v[from..from + n].as_ptr(),
+            Source::Target => out.cast_const(),
+        };
+        // SAFETY: `x` and `out` each hold `n` entries, and `from + n <= dim`.
+        unsafe {
+            less_rows(lanes, q, h, from, x, out, n);
+            squares += dots::<L, f64, 1, 8>(lanes, [out.cast_const()], out, n)[0];
+            if let Some(s) = &mut s {
+                add_dots(lanes, q, from, out, n, s);
+            }
         }
     }
-    project(q, w, s)
+    squares
 }
 
-/// `target = factor * source`, rounded to the stored type.
-pub fn scale_into<T: Scalar>(factor: f64, source: &[f64], target: &mut [T]) {
-    for (out, value) in target.iter_mut().zip(source) {
-        *out = T::from_f64(factor * value);
-    }
-}
-
-/// Rotates two rows in their plane: `(x, y) <- (c x + s y, c y - s x)`.
-pub fn rotate<T: Scalar>(x: &mut [T], y: &mut [T], c: f64, s: f64) {
-    for (a, b) in x.iter_mut().zip(y) {
-        let (first, second) = (a.to_f64(), b.to_f64());
-        *a = T::from_f64(c * first + s * second);
-        *b = T::from_f64(c * second - s * first);
-    }
-}
-
-/// Applies the reflection `I - 2 u u^T` (`u` a unit vector over the `count` rows and one more, `extra`) to the
-/// rows: row `i` loses `2 u_i g`, where `g = sum_i u_i row_i + u_last extra`. `extra` is left as it is. The row
-/// length is that of `extra`. One read and one write of the rows.
-pub fn reflect<T: Scalar>(rows: &mut [T], stride: usize, count: usize, u: &[f64], extra: &[f64]) {
-    for column in 0..extra.len() {
-        let mut g = u[count] * extra[column];
-        for index in 0..count {
-            g += u[index] * rows[index * stride + column].to_f64();
+/// See [`super::Path::reflect`].
+#[inline(always)]
+pub(super) fn reflect<L: Lanes, T: Scalar>(
+    lanes: L,
+    rows: &mut [T],
+    stride: usize,
+    count: usize,
+    u: &[f64],
+    extra: &[f64],
+) {
+    let dim = extra.len();
+    assert!(stride >= dim && u.len() == count + 1, "shapes of a reflection");
+    assert!(count == 0 || rows.len() >= (count - 1) * stride + dim, "rows of a reflection");
+    // Left unset until written: clearing it would cost more than a short row.
+    let mut g = [const { std::mem::MaybeUninit::<f64>::uninit() }; BLOCK];
+    let g = g.as_mut_ptr().cast::<f64>();
+    let block = block_for::<T>(count);
+    for from in (0..dim).step_by(block) {
+        let n = block.min(dim - from);
+        // g = -(u_last extra + sum_i u_i row_i), so that row_i + 2 u_i g is the reflected row.
+        // SAFETY: `g` holds `BLOCK >= n` entries, written by `scaled` before they are read; `extra` has `n` from
+        // `from` on.
+        unsafe { scaled(lanes, -u[count], extra.as_ptr().add(from), g, n) };
+        if let Some(q) = Rows::new(rows, stride, count, dim) {
+            // SAFETY: as above, and `from + n <= dim`.
+            unsafe { less_rows(lanes, q, &u[..count], from, g.cast_const(), g, n) };
         }
-        for index in 0..count {
-            let entry = &mut rows[index * stride + column];
-            *entry = T::from_f64(entry.to_f64() - 2.0 * u[index] * g);
+        for (index, &entry) in u[..count].iter().enumerate() {
+            let row = rows[index * stride + from..][..n].as_mut_ptr();
+            // SAFETY: `row` and `g` hold `n` entries.
+            unsafe { add_scaled(lanes, 2.0 * entry, g.cast_const(), row, n) };
         }
     }
 }

@@ -1,2 +1,3 @@
 //! Claims about the kernel, each in the name of its test.
 #![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test may stop where it finds a surprise")]
+mod ops;

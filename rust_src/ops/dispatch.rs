@@ -1,0 +1,102 @@
+//! From a path to code compiled for it: one stamp a sweep.
+
+use super::path::{Path, Set};
+use super::sweep::Source;
+use crate::rows::Rows;
+use crate::scalar::Scalar;
+
+/// Every sweep that is stamped, under one roof: the stamped names are the same.
+mod sweeps {
+    pub(super) use super::super::entries::{normalize_into, rotate, scale_into};
+    pub(super) use super::super::sweep::{dot, project, reflect, subtract};
+}
+
+/// Stamps a method of [`Path`] and a free function on the current path. Each instruction set gets its own copy
+/// of the sweep, compiled with its features on.
+macro_rules! stamp {
+    ($($(#[$doc:meta])* fn $name:ident $(<$T:ident>)? ($($arg:ident: $type:ty),*) $(-> $out:ty)?
+        = $sweep:ident($($pass:expr),*);)*) => {
+        impl Path {$(
+            $(#[$doc])*
+            ///
+            /// # Panics
+            /// Where the shapes do not match.
+            #[inline]
+            pub fn $name $(<$T: Scalar>)? (self, $($arg: $type),*) $(-> $out)? {
+                match self.0 {
+                    #[cfg(target_arch = "x86_64")]
+                    Set::Avx512(lanes) => {
+                        #[target_feature(enable = "avx512f")]
+                        fn on $(<$T: Scalar>)? (lanes: super::avx512::Avx512, $($arg: $type),*) $(-> $out)? {
+                            sweeps::$sweep(lanes, $($pass),*)
+                        }
+                        // SAFETY: `lanes` proves that the processor has the feature.
+                        unsafe { on(lanes, $($arg),*) }
+                    }
+                    #[cfg(target_arch = "x86_64")]
+                    Set::Avx2(lanes) => {
+                        #[target_feature(enable = "avx2,fma")]
+                        fn on $(<$T: Scalar>)? (lanes: super::avx2::Avx2, $($arg: $type),*) $(-> $out)? {
+                            sweeps::$sweep(lanes, $($pass),*)
+                        }
+                        // SAFETY: `lanes` proves that the processor has both features.
+                        unsafe { on(lanes, $($arg),*) }
+                    }
+                    #[cfg(target_arch = "aarch64")]
+                    Set::Neon(lanes) => sweeps::$sweep(lanes, $($pass),*),
+                    Set::Portable(lanes) => sweeps::$sweep(lanes, $($pass),*),
+                }
+            }
+        )*}
+
+        $(
+            $(#[$doc])*
+            ///
+            /// # Panics
+            /// Where the shapes do not match.
+            #[inline]
+            pub fn $name $(<$T: Scalar>)? ($($arg: $type),*) $(-> $out)? {
+                Path::current().$name($($arg),*)
+            }
+        )*
+    };
+}
+
+stamp! {
+    /// Sum of products of two vectors of equal length.
+    fn dot(x: &[f64], y: &[f64]) -> f64 = dot(x, y);
+
+    /// Sum of squares; not guarded against overflow.
+    fn norm_squared(x: &[f64]) -> f64 = dot(x, x);
+
+    /// `h = Q v`; returns `v . v`. One read of `Q`, `2 rank dim` flops.
+    fn project<T>(q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 = project(q, v, h);
+
+    /// `w = v - Q^T h`; returns `w . w`. One read of `Q`, `2 rank dim` flops.
+    fn subtract<T>(q: Rows<'_, T>, h: &[f64], v: &[f64], w: &mut [f64]) -> f64
+        = subtract(q, h, Source::Vector(v), w, None);
+
+    /// `w = v - Q^T h` and `s = Q w`; returns `w . w`. One read of `Q` from memory and one from cache,
+    /// `4 rank dim` flops.
+    fn subtract_measured<T>(q: Rows<'_, T>, h: &[f64], v: &[f64], w: &mut [f64], s: &mut [f64]) -> f64
+        = subtract(q, h, Source::Vector(v), w, Some(s));
+
+    /// `w -= Q^T h` and `s = Q w`; returns `w . w`. As [`subtract_measured`].
+    fn subtract_measured_in_place<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], s: &mut [f64]) -> f64
+        = subtract(q, h, Source::Target, w, Some(s));
+
+    /// `target = factor source`, rounded to the stored type.
+    fn scale_into<T>(factor: f64, source: &[f64], target: &mut [T]) = scale_into(factor, source, target);
+
+    /// `target = source / norm`, rounded to the stored type.
+    fn normalize_into<T>(norm: f64, source: &[f64], target: &mut [T]) = normalize_into(norm, source, target);
+
+    /// Rotates two rows in their plane: `(x, y) <- (c x + s y, c y - s x)`.
+    fn rotate<T>(x: &mut [T], y: &mut [T], c: f64, s: f64) = rotate(x, y, c, s);
+
+    /// Applies the reflection `I - 2 u u^T`, `u` a unit vector over `count` rows and one more, `extra`: row `i`
+    /// loses `2 u_i g` with `g = sum_i u_i row_i + u_last extra`. `extra`, as long as a row, stays as it is. One
+    /// read of the rows from memory and one from cache, one write, `4 count dim` flops.
+    fn reflect<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], extra: &[f64])
+        = reflect(rows, stride, count, u, extra);
+}

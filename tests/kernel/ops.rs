@@ -1,0 +1,144 @@
+//! The sweeps on every path, against loops too plain to be wrong.
+
+use perpend::ops::Path;
+use perpend::{RowStore, Scalar};
+use proptest::prelude::*;
+
+/// Rounding of a sum of `n` products of magnitude at most `size`, computed in any order.
+fn slack(n: usize, size: f64) -> f64 {
+    4.0 * f64::EPSILON * (n as f64 + 4.0) * (size + f64::MIN_POSITIVE)
+}
+
+fn store<T: Scalar>(rows: &[Vec<f64>], dim: usize) -> RowStore<T> {
+    let mut store = RowStore::zeros(rows.len(), dim);
+    for (index, row) in rows.iter().enumerate() {
+        for (target, &value) in store.row_mut(index).iter_mut().zip(row) {
+            *target = T::from_f64(value);
+        }
+    }
+    store
+}
+
+fn entries(n: usize) -> impl Strategy<Value = Vec<f64>> {
+    prop::collection::vec(-1e3..1e3_f64, n)
+}
+
+/// Up to 21 rows of up to 2100 entries: past each group size, each register's rest and the block length.
+fn case() -> impl Strategy<Value = (Vec<Vec<f64>>, Vec<f64>, Vec<f64>)> {
+    (prop_oneof![0..40_usize, 2030..2100_usize], 0..22_usize).prop_flat_map(|(dim, count)| {
+        (prop::collection::vec(entries(dim), count), entries(dim), entries(count + 1))
+    })
+}
+
+fn plain_dot<T: Scalar>(row: &[T], x: &[f64]) -> (f64, f64) {
+    let products: Vec<f64> = row.iter().zip(x).map(|(a, b)| a.to_f64() * b).collect();
+    (products.iter().sum(), products.iter().map(|p| p.abs()).sum())
+}
+
+fn sweeps_agree<T: Scalar>(path: Path, rows: &[Vec<f64>], v: &[f64], u: &[f64]) {
+    let (dim, count) = (v.len(), rows.len());
+    let mut q = store::<T>(rows, dim);
+    let mut h = vec![f64::NAN; count];
+    let squares = path.project(q.view(count), v, &mut h);
+    let (plain, size) = plain_dot(v, v);
+    assert!((squares - plain).abs() <= slack(dim, size));
+    for (index, &got) in h.iter().enumerate() {
+        let (plain, size) = plain_dot(q.row(index), v);
+        assert!((got - plain).abs() <= slack(dim, size), "project: {got} against {plain}");
+    }
+
+    let coefficients = &u[..count];
+    let mut w = vec![f64::NAN; dim];
+    let mut s = vec![f64::NAN; count];
+    let measured = path.subtract_measured(q.view(count), coefficients, v, &mut w, &mut s);
+    for column in 0..dim {
+        let terms: Vec<f64> = (0..count).map(|i| coefficients[i] * q.row(i)[column].to_f64()).collect();
+        let plain = v[column] - terms.iter().sum::<f64>();
+        let size = v[column].abs() + terms.iter().map(|t| t.abs()).sum::<f64>();
+        assert!((w[column] - plain).abs() <= slack(count, size), "subtract: {} against {plain}", w[column]);
+    }
+    for (index, &got) in s.iter().enumerate() {
+        let (plain, size) = plain_dot(q.row(index), &w);
+        assert!((got - plain).abs() <= slack(dim, size), "measure: {got} against {plain}");
+    }
+    let mut alone = vec![f64::NAN; dim];
+    assert_eq!(path.subtract(q.view(count), coefficients, v, &mut alone).to_bits(), measured.to_bits());
+    assert_eq!(alone, w);
+    let mut in_place = v.to_vec();
+    let mut again = vec![f64::NAN; count];
+    path.subtract_measured_in_place(q.view(count), coefficients, &mut in_place, &mut again);
+    assert_eq!((in_place, again), (w, s));
+
+    reflects::<T>(path, &mut q, v, u);
+}
+
+fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]) {
+    let (dim, count) = (q.dim(), q.rows());
+    let norm = u.iter().map(|x| x * x).sum::<f64>().sqrt().max(f64::MIN_POSITIVE);
+    let unit: Vec<f64> = u.iter().map(|x| x / norm).collect();
+    let before = q.clone();
+    let (rows, stride) = q.parts_mut();
+    path.reflect(rows, stride, count, &unit, extra);
+    for column in 0..dim {
+        let all: Vec<f64> =
+            (0..count).map(|i| before.row(i)[column].to_f64()).chain([extra[column]]).collect();
+        let g: f64 = all.iter().zip(&unit).map(|(a, b)| a * b).sum();
+        let size = all.iter().map(|a| a.abs()).sum::<f64>();
+        for index in 0..count {
+            let plain = all[index] - 2.0 * unit[index] * g;
+            let got = q.row(index)[column].to_f64();
+            assert!(
+                (got - plain).abs() <= slack(count, size) + 4.0 * T::EPSILON * size,
+                "{got} against {plain}"
+            );
+        }
+    }
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(96))]
+
+    #[test]
+    fn every_path_computes_what_plain_loops_compute((rows, v, u) in case()) {
+        for path in Path::available() {
+            sweeps_agree::<f64>(path, &rows, &v, &u);
+            sweeps_agree::<f32>(path, &rows, &v, &u);
+        }
+    }
+
+    #[test]
+    fn a_rotation_turns_both_rows_and_nothing_else(x in entries(19), angle in 0.0..7.0_f64) {
+        for path in Path::available() {
+            let mut pair = store::<f64>(&[x.clone(), x.iter().rev().copied().collect()], 19);
+            let before = pair.clone();
+            let (first, second) = pair.pair_mut(0, 1);
+            path.rotate(first, second, angle.cos(), angle.sin());
+            for i in 0..19 {
+                let (a, b) = (before.row(0)[i], before.row(1)[i]);
+                prop_assert!((pair.row(0)[i] - (angle.cos() * a + angle.sin() * b)).abs() <= slack(2, 2e3));
+                prop_assert!((pair.row(1)[i] - (angle.cos() * b - angle.sin() * a)).abs() <= slack(2, 2e3));
+            }
+        }
+    }
+
+    #[test]
+    fn normalizing_gives_unit_length_in_the_stored_type(x in prop::collection::vec(0.5..2.0_f64, 1..80)) {
+        let norm = x.iter().map(|a| a * a).sum::<f64>().sqrt();
+        for path in Path::available() {
+            let mut unit = vec![0.0_f32; x.len()];
+            path.normalize_into(norm, &x, &mut unit);
+            for (got, value) in unit.iter().zip(&x) {
+                prop_assert!((f64::from(*got) - value / norm).abs() <= f64::from(f32::EPSILON) * value / norm);
+            }
+        }
+    }
+}
+
+#[test]
+fn the_forced_path_is_the_one_in_use() {
+    if let Ok(name) = std::env::var(perpend::ops::VARIABLE) {
+        assert_eq!(Path::current().name(), name);
+    } else {
+        assert_eq!(Path::current().name(), Path::available()[0].name());
+    }
+}
