@@ -16,6 +16,7 @@
 //!
 //! Rows are stored in `f32` or `f64` ([`Scalar`]); all arithmetic, and everything small, is `f64`.
 
+pub mod basis;
 pub mod dense;
 mod error;
 pub mod ops;
@@ -27,6 +28,7 @@ pub mod watch;
 #[cfg(feature = "python")]
 mod python;
 
+pub use basis::Basis;
 pub use error::Error;
 pub use rows::{RowStore, Rows};
 pub use scalar::Scalar;

@@ -7,7 +7,7 @@ use crate::scalar::Scalar;
 
 /// Every sweep that is stamped, under one roof: the stamped names are the same.
 mod sweeps {
-    pub(super) use super::super::entries::{normalize_into, rotate, scale_into};
+    pub(super) use super::super::entries::{normalize_into, rotate, rotate_chain, scale_into};
     pub(super) use super::super::sweep::{dot, project, reflect, subtract};
 }
 
@@ -93,6 +93,11 @@ stamp! {
 
     /// Rotates two rows in their plane: `(x, y) <- (c x + s y, c y - s x)`.
     fn rotate<T>(x: &mut [T], y: &mut [T], c: f64, s: f64) = rotate(x, y, c, s);
+
+    /// Rotation `i` turns rows `first + i` and `first + i + 1` of `dim` entries, in order from the top: one read
+    /// and one write of those rows.
+    fn rotate_chain<T>(rows: &mut [T], stride: usize, dim: usize, first: usize, rotations: &[(f64, f64)])
+        = rotate_chain(rows, stride, dim, first, rotations);
 
     /// Applies the reflection `I - 2 u u^T`, `u` a unit vector over `count` rows and one more, `extra`: row `i`
     /// loses `2 u_i g` with `g = sum_i u_i row_i + u_last extra`. `extra`, as long as a row, stays as it is. One

@@ -109,3 +109,54 @@ pub(super) unsafe fn add_scaled<L: Lanes, T: Transfer>(
         }
     }
 }
+
+/// See [`super::Path::rotate_chain`].
+#[inline(always)]
+pub(super) fn rotate_chain<L: Lanes, T: Scalar>(
+    lanes: L,
+    rows: &mut [T],
+    stride: usize,
+    dim: usize,
+    first: usize,
+    rotations: &[(f64, f64)],
+) {
+    if rotations.is_empty() {
+        return;
+    }
+    assert!(
+        stride >= dim && rows.len() >= (first + rotations.len()) * stride + dim,
+        "rows of a chain of rotations"
+    );
+    let top = rows[first * stride..].as_mut_ptr();
+    let mut at = 0;
+    // The upper row of a pair is finished by its rotation; the lower one goes on into the next in registers.
+    // SAFETY: row `first + i` starts at `i stride` from `top` and holds `dim` entries; `at + WIDTH <= dim`.
+    unsafe {
+        while at + L::WIDTH <= dim {
+            let mut here = top.add(at);
+            let mut carried = T::load(lanes, here);
+            for &(c, s) in rotations {
+                let (cosine, sine) = (lanes.splat(c), lanes.splat(s));
+                let below = T::load(lanes, here.add(stride));
+                T::store(lanes, here, lanes.mul_add(sine, below, lanes.mul(cosine, carried)));
+                carried = lanes.mul_sub(sine, carried, lanes.mul(cosine, below));
+                here = here.add(stride);
+            }
+            T::store(lanes, here, carried);
+            at += L::WIDTH;
+        }
+        if at < dim {
+            let rest = dim - at;
+            let mut here = top.add(at);
+            let mut carried = T::load_part(lanes, here, rest);
+            for &(c, s) in rotations {
+                let (cosine, sine) = (lanes.splat(c), lanes.splat(s));
+                let below = T::load_part(lanes, here.add(stride), rest);
+                T::store_part(lanes, here, lanes.mul_add(sine, below, lanes.mul(cosine, carried)), rest);
+                carried = lanes.mul_sub(sine, carried, lanes.mul(cosine, below));
+                here = here.add(stride);
+            }
+            T::store_part(lanes, here, carried, rest);
+        }
+    }
+}

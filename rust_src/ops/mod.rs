@@ -21,8 +21,8 @@ mod portable;
 mod sweep;
 
 pub use dispatch::{
-    dot, norm_squared, normalize_into, project, reflect, rotate, scale_into, subtract, subtract_measured,
-    subtract_measured_in_place,
+    dot, norm_squared, normalize_into, project, reflect, rotate, rotate_chain, scale_into, subtract,
+    subtract_measured, subtract_measured_in_place,
 };
 pub(crate) use lanes::Transfer;
 pub use path::{Path, VARIABLE};

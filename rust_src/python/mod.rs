@@ -1,6 +1,34 @@
-//! The binding: thin, one file a class.
+//! The binding: thin, one file a class. The documentation of its classes is in `_core.pyi`.
+
+mod basis;
+mod convert;
+mod errors;
+mod step;
 
 use pyo3::prelude::*;
 
+use crate::ops::Path;
+
+/// The kernel of perpend.
 #[pymodule]
-mod _core {}
+mod _core {
+    use super::{Bound, Path, PyModule, PyModuleMethods, PyResult, pyfunction};
+
+    #[pymodule_export]
+    use super::basis::PyBasis;
+    #[pymodule_export]
+    use super::step::Step;
+
+    /// Name of the instruction set in use.
+    #[pyfunction]
+    fn kernel_path() -> &'static str {
+        Path::current().name()
+    }
+
+    /// Refuses to load where the environment asks for instructions this processor does not have.
+    #[pymodule_init]
+    fn init(module: &Bound<'_, PyModule>) -> PyResult<()> {
+        Path::requested()?;
+        module.add("__version__", env!("CARGO_PKG_VERSION"))
+    }
+}

@@ -1,0 +1,207 @@
+from typing import Literal, final
+
+import numpy as np
+from numpy.typing import ArrayLike, DTypeLike, NDArray
+
+__version__: str
+
+def kernel_path() -> Literal["avx512", "avx2", "neon", "portable"]:
+    """Name the instruction set the kernel uses in this process.
+
+    Returns
+    -------
+    str
+        The widest set the processor has, or the one the environment variable ``PERPEND_KERNEL`` names.
+    """
+
+@final
+class Step:
+    """What became of a vector given to `Basis.add`.
+
+    Attributes
+    ----------
+    accepted : bool
+        Whether the basis grew by it.
+    reason : {"zero", "dependent", "full"} or None
+        Why it was not accepted.
+    rank : int
+        Rank before.
+    coefficients : ndarray, shape (rank,)
+        Coefficients of the vector on the basis as it was before, in the unit of the vector.
+    norm, residual_norm : float
+        Norm of the vector, and of what the basis did not explain.
+    threshold : float
+        The residual norm up to which the vector would have counted as dependent.
+    passes : int
+        Subtractions made: 1 where the first one, measured, left a residual orthogonal to rounding.
+    loss : float
+        Measured loss of orthogonality of the residual ``w``: the norm of ``Q w`` over the norm of ``w``.
+    """
+
+    @property
+    def accepted(self) -> bool: ...
+    @property
+    def reason(self) -> Literal["zero", "dependent", "full"] | None: ...
+    @property
+    def rank(self) -> int: ...
+    @property
+    def coefficients(self) -> NDArray[np.float64]: ...
+    @property
+    def norm(self) -> float: ...
+    @property
+    def residual_norm(self) -> float: ...
+    @property
+    def threshold(self) -> float: ...
+    @property
+    def passes(self) -> int: ...
+    @property
+    def loss(self) -> float: ...
+
+@final
+class Basis:
+    """A growing orthonormal basis, updated one vector at a time.
+
+    The vectors accepted so far, as columns, are ``vectors.T @ triangular``. Orthonormality rests on a measurement made
+    with each vector, not on the conditioning of what was added: the spectral norm of ``I - Q Q^T`` stays below
+    ``10 * eps * sqrt(rank)``.
+
+    Parameters
+    ----------
+    dim : int
+        Entries a vector.
+    capacity : int, optional
+        The most vectors to hold, at most `dim`. Storage for them is made at once and nothing is allocated later.
+        Without it the basis grows as needed, to `dim` at most.
+    dtype : {"float64", "float32"}
+        Type the basis is stored in. Arithmetic, coefficients and the triangular factor are float64 in either case.
+    tolerance : float or (float, float), optional
+        A vector counts as dependent where its residual norm is at most ``relative * norm``, or at most `absolute`
+        where a pair ``(relative, absolute)`` is given. Default: ``dim * eps`` of the stored type, relative.
+
+    Raises
+    ------
+    ValueError
+        Where `capacity` exceeds `dim` or a tolerance is negative or not finite.
+    TypeError
+        Where `dtype` is neither of the two.
+    """
+
+    def __new__(
+        cls,
+        dim: int,
+        capacity: int | None = None,
+        *,
+        dtype: DTypeLike = "float64",
+        tolerance: float | tuple[float, float] | None = None,
+    ) -> Basis: ...
+    def add(self, vector: ArrayLike) -> Step:
+        """Add a vector. Two reads of the basis, ``6 * rank * dim`` flops; rarely a third.
+
+        Parameters
+        ----------
+        vector : array_like, shape (dim,)
+            Finite real numbers of any scale. Neither modified nor kept.
+
+        Returns
+        -------
+        Step
+            A vector that is zero, dependent or one too many is an outcome (`Step.reason`) and leaves the basis as it
+            is.
+
+        Raises
+        ------
+        ValueError
+            Wrong length, an entry that is not finite, or a norm beyond the largest float64.
+        TypeError
+            Entries that are not real numbers.
+        """
+
+    def split(self, vector: ArrayLike) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Split a vector against the basis, without learning.
+
+        Parameters
+        ----------
+        vector : array_like, shape (dim,)
+            Finite real numbers.
+
+        Returns
+        -------
+        coefficients : ndarray, shape (rank,)
+            On the basis vectors.
+        residual : ndarray, shape (dim,)
+            What they do not explain, orthogonal to them.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `add`.
+        """
+
+    def residual_norm(self, vector: ArrayLike) -> float:
+        """Distance of a vector from the span of the basis: the norm of the residual of `split`."""
+
+    def drop(self, index: int) -> None:
+        """Forget an accepted vector; basis and triangular factor hold for the rest.
+
+        Costs ``6 * dim * (rank - index)`` flops, nothing for the last vector. ``drop(0)`` followed by `add` makes a
+        sliding window.
+
+        Parameters
+        ----------
+        index : int
+            Which of the accepted vectors, in the order they came.
+
+        Raises
+        ------
+        ValueError
+            Where there is no such vector.
+        """
+
+    def solve(self, target: ArrayLike) -> tuple[NDArray[np.float64], float]:
+        """Least-squares weights of the accepted vectors for a target.
+
+        Parameters
+        ----------
+        target : array_like, shape (dim,)
+            Finite real numbers.
+
+        Returns
+        -------
+        weights : ndarray, shape (rank,)
+            One an accepted vector.
+        residual_norm : float
+            Norm of the target less the weighted vectors.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `add`.
+        """
+
+    def condition(self) -> float:
+        """Ratio of the largest to the smallest singular value of the accepted vectors; 1 for none."""
+
+    def orthogonality_error(self) -> float:
+        """Spectral norm of ``I - Q Q^T``, computed now; ``rank**2 * dim`` flops."""
+
+    @property
+    def vectors(self) -> NDArray[np.float64] | NDArray[np.float32]:
+        """The orthonormal basis, shape (rank, dim), a copy in the stored type."""
+
+    @property
+    def triangular(self) -> NDArray[np.float64]:
+        """The upper triangular factor, shape (rank, rank), diagonal positive, a copy."""
+
+    @property
+    def rank(self) -> int:
+        """Vectors held."""
+
+    @property
+    def dim(self) -> int:
+        """Entries a vector."""
+
+    @property
+    def capacity(self) -> int:
+        """The most vectors it can hold."""
+
+    def __len__(self) -> int: ...

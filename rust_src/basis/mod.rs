@@ -1,0 +1,166 @@
+//! The growing orthonormal basis.
+//!
+//! Vector by vector, `A = (a_1, a_2, ...)` becomes `a_j = sum_i R[i, j] q_i` with `Q Q^T = I` and `R` upper
+//! triangular, diagonal positive. A vector costs two sweeps over the basis: `h = Q v`, then `w = v - Q^T h` with
+//! `s = Q w` measured while each block of `w` and `Q` is still in cache. Where the measured loss `|s| / |w|` is
+//! above [`LOSS_LIMIT`] the vector is swept again, so orthonormality rests on a measurement, not on the conditioning of
+//! what was added. (The classical algorithm applied twice is enough: Giraud, Langou, Rozloznik, van den Eshof,
+//! Numer. Math. 101 (2005) 87-100; here "twice" is decided by looking.)
+
+mod drop;
+mod grow;
+mod health;
+mod orthogonalize;
+mod solve;
+mod triangular;
+
+pub use grow::{Reason, Step};
+pub use orthogonalize::{LOSS_LIMIT, Split};
+pub use solve::Solution;
+
+use crate::error::Error;
+use crate::rows::{RowStore, Rows};
+use crate::scalar::Scalar;
+use triangular::Triangular;
+
+/// Rows made room for at first where no capacity is given.
+const FIRST_ROWS: usize = 8;
+
+/// When a vector counts as dependent: its residual norm is at most `max(relative |v|, absolute)`.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Tolerance {
+    /// Relative to the norm of the vector.
+    pub relative: f64,
+    /// In the unit of the vector.
+    pub absolute: f64,
+}
+
+impl Tolerance {
+    /// `dim * eps` relative, nothing absolute: the rounding a vector of that length carries anyway.
+    #[must_use]
+    pub fn of_rounding<T: Scalar>(dim: usize) -> Self {
+        Self { relative: dim as f64 * T::EPSILON, absolute: 0.0 }
+    }
+}
+
+/// An orthonormal basis that grows a vector at a time, with the triangular factor of what was added.
+#[derive(Clone, Debug)]
+pub struct Basis<T> {
+    q: RowStore<T>,
+    r: Triangular,
+    rank: usize,
+    capacity: Option<usize>,
+    tolerance: Tolerance,
+    /// Row to be measured next after a drop.
+    cursor: usize,
+    /// Plane rotations of the last drop.
+    rotations: Vec<(f64, f64)>,
+    /// Coefficients of the last vector, in its unit; `rank` of them count.
+    h: Vec<f64>,
+    /// Measured coefficients of the last residual.
+    s: Vec<f64>,
+    /// The correction before it.
+    correction: Vec<f64>,
+    /// Residual of the last vector.
+    w: Vec<f64>,
+    /// The last vector brought into the range where squares are safe.
+    scaled: Vec<f64>,
+}
+
+impl<T: Scalar> Basis<T> {
+    /// An empty basis for vectors of `dim` entries. With `capacity` it holds that many vectors at most and
+    /// allocates nothing from here on; without, it grows as needed, to `dim` at most.
+    ///
+    /// # Errors
+    /// [`Error::Parameter`] where `capacity` exceeds `dim`, or a tolerance is negative or not a number.
+    pub fn new(dim: usize, capacity: Option<usize>, tolerance: Option<Tolerance>) -> Result<Self, Error> {
+        if let Some(capacity) = capacity.filter(|&capacity| capacity > dim) {
+            return Err(Error::Parameter {
+                name: "capacity",
+                expected: format!("at most dim = {dim}: no more vectors can be independent"),
+                got: capacity.to_string(),
+            });
+        }
+        let tolerance = tolerance.unwrap_or_else(|| Tolerance::of_rounding::<T>(dim));
+        for (name, value) in [("tolerance", tolerance.relative), ("absolute tolerance", tolerance.absolute)] {
+            if !(value >= 0.0 && value.is_finite()) {
+                return Err(Error::Parameter {
+                    name,
+                    expected: "a finite number, 0 or more".into(),
+                    got: value.to_string(),
+                });
+            }
+        }
+        let room = capacity.unwrap_or(FIRST_ROWS.min(dim));
+        Ok(Self {
+            q: RowStore::zeros(room, dim),
+            r: Triangular::with_capacity(room),
+            rank: 0,
+            capacity,
+            tolerance,
+            cursor: 0,
+            rotations: Vec::with_capacity(room),
+            h: vec![0.0; room],
+            s: vec![0.0; room],
+            correction: vec![0.0; room],
+            w: vec![0.0; dim],
+            scaled: vec![0.0; dim],
+        })
+    }
+
+    /// Entries a vector.
+    #[must_use]
+    pub fn dim(&self) -> usize {
+        self.q.dim()
+    }
+
+    /// Vectors held.
+    #[must_use]
+    pub fn rank(&self) -> usize {
+        self.rank
+    }
+
+    /// The most vectors it can hold.
+    #[must_use]
+    pub fn capacity(&self) -> usize {
+        self.capacity.unwrap_or(self.dim())
+    }
+
+    /// When a vector counts as dependent.
+    #[must_use]
+    pub fn tolerance(&self) -> Tolerance {
+        self.tolerance
+    }
+
+    /// The orthonormal rows, `rank` by `dim`.
+    #[must_use]
+    pub fn vectors(&self) -> Rows<'_, T> {
+        self.q.view(self.rank)
+    }
+
+    /// The triangular factor, `rank` by `rank`, row-major: vector `j` is `sum_i R[i, j] q_i`.
+    #[must_use]
+    pub fn triangular(&self) -> Vec<f64> {
+        self.r.to_dense()
+    }
+
+    /// Coefficients of the vector last added or split, on the basis as it was then.
+    #[must_use]
+    pub fn coefficients(&self) -> &[f64] {
+        &self.h
+    }
+
+    /// Residual of the vector last added or split, orthogonal to the basis as it was then.
+    #[must_use]
+    pub fn residual(&self) -> &[f64] {
+        &self.w
+    }
+
+    /// Makes room for one row more.
+    fn make_room(&mut self) {
+        if self.rank == self.q.rows() {
+            let room = (2 * self.rank).max(FIRST_ROWS).min(self.dim());
+            self.q.grow(room);
+        }
+    }
+}

@@ -1,0 +1,176 @@
+//! `perpend.Basis`.
+
+use std::sync::{Mutex, PoisonError};
+
+use numpy::{PyArray1, PyArray2};
+use pyo3::prelude::*;
+use pyo3::sync::MutexExt;
+
+use super::convert::{Stored, array_of_rows, matrix, row, stored};
+use super::errors::fenced;
+use super::step::Step;
+use crate::basis::{Basis, Tolerance};
+use crate::{Error, Scalar};
+
+/// A basis in one of the stored types.
+enum Inner {
+    Float64(Basis<f64>),
+    Float32(Basis<f32>),
+}
+
+/// Does the same with a basis of either type.
+macro_rules! either {
+    ($inner:expr, $basis:ident => $body:expr) => {
+        match $inner {
+            Inner::Float64($basis) => $body,
+            Inner::Float32($basis) => $body,
+        }
+    };
+}
+
+/// The growing orthonormal basis; see `_core.pyi` for the documentation.
+#[pyclass(frozen, module = "perpend", name = "Basis")]
+pub(super) struct PyBasis {
+    inner: Mutex<Inner>,
+}
+
+/// The tolerance argument: nothing, a relative one, or a pair of a relative and an absolute one.
+#[derive(FromPyObject)]
+enum ToleranceArgument {
+    Relative(f64),
+    Both(f64, f64),
+}
+
+impl PyBasis {
+    /// Runs `call` on the basis, alone: calls from several threads take turns.
+    fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
+        let mut inner = self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
+        fenced(|| call(&mut inner))
+    }
+
+    /// Reads something that cannot fail.
+    fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&Inner) -> R) -> R {
+        call(&self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
+    }
+}
+
+/// Makes a basis of one type.
+fn make<T: Scalar>(dim: usize, capacity: Option<usize>, tolerance: Option<Tolerance>) -> PyResult<Basis<T>> {
+    fenced(|| Basis::new(dim, capacity, tolerance))
+}
+
+#[pymethods]
+impl PyBasis {
+    #[new]
+    #[pyo3(signature = (dim, capacity=None, *, dtype=None, tolerance=None))]
+    fn new(
+        dim: usize,
+        capacity: Option<usize>,
+        dtype: Option<&Bound<'_, PyAny>>,
+        tolerance: Option<ToleranceArgument>,
+    ) -> PyResult<Self> {
+        let tolerance = tolerance.map(|argument| match argument {
+            ToleranceArgument::Relative(relative) => Tolerance { relative, absolute: 0.0 },
+            ToleranceArgument::Both(relative, absolute) => Tolerance { relative, absolute },
+        });
+        let inner = match dtype.map_or(Ok(Stored::Float64), stored)? {
+            Stored::Float64 => Inner::Float64(make(dim, capacity, tolerance)?),
+            Stored::Float32 => Inner::Float32(make(dim, capacity, tolerance)?),
+        };
+        Ok(Self { inner: Mutex::new(inner) })
+    }
+
+    fn add(&self, vector: &Bound<'_, PyAny>) -> PyResult<Step> {
+        let vector = row(vector)?;
+        let entries = vector.entries()?;
+        self.with(vector.py(), |inner| {
+            either!(inner, basis => {
+                let step = basis.add(entries)?;
+                Ok(Step::new(step, &basis.coefficients()[..step.rank]))
+            })
+        })
+    }
+
+    fn split<'py>(
+        &self,
+        vector: &Bound<'py, PyAny>,
+    ) -> PyResult<(Bound<'py, PyArray1<f64>>, Bound<'py, PyArray1<f64>>)> {
+        let vector = row(vector)?;
+        let entries = vector.entries()?;
+        let py = vector.py();
+        self.with(py, |inner| {
+            either!(inner, basis => {
+                basis.split(entries)?;
+                let coefficients = PyArray1::from_slice(py, basis.coefficients());
+                Ok((coefficients, PyArray1::from_slice(py, basis.residual())))
+            })
+        })
+    }
+
+    fn residual_norm(&self, vector: &Bound<'_, PyAny>) -> PyResult<f64> {
+        let vector = row(vector)?;
+        let entries = vector.entries()?;
+        self.with(vector.py(), |inner| either!(inner, basis => Ok(basis.split(entries)?.residual_norm)))
+    }
+
+    fn drop(&self, py: Python<'_>, index: usize) -> PyResult<()> {
+        self.with(py, |inner| either!(inner, basis => basis.drop(index)))
+    }
+
+    fn solve<'py>(&self, target: &Bound<'py, PyAny>) -> PyResult<(Bound<'py, PyArray1<f64>>, f64)> {
+        let target = row(target)?;
+        let entries = target.entries()?;
+        let py = target.py();
+        self.with(py, |inner| {
+            let solution = either!(inner, basis => basis.solve(entries))?;
+            Ok((PyArray1::from_vec(py, solution.weights), solution.residual_norm))
+        })
+    }
+
+    fn condition(&self, py: Python<'_>) -> PyResult<f64> {
+        self.with(py, |inner| either!(inner, basis => basis.condition()))
+    }
+
+    fn orthogonality_error(&self, py: Python<'_>) -> PyResult<f64> {
+        self.with(py, |inner| either!(inner, basis => basis.orthogonality_error()))
+    }
+
+    #[getter]
+    fn vectors<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyAny>> {
+        self.read(py, |inner| either!(inner, basis => Ok(array_of_rows(py, basis.vectors())?.into_any())))
+    }
+
+    #[getter]
+    fn triangular<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyArray2<f64>>> {
+        let (dense, rank) =
+            self.read(py, |inner| either!(inner, basis => (basis.triangular(), basis.rank())));
+        matrix(py, dense, rank, rank)
+    }
+
+    #[getter]
+    fn rank(&self, py: Python<'_>) -> usize {
+        self.read(py, |inner| either!(inner, basis => basis.rank()))
+    }
+
+    #[getter]
+    fn dim(&self, py: Python<'_>) -> usize {
+        self.read(py, |inner| either!(inner, basis => basis.dim()))
+    }
+
+    #[getter]
+    fn capacity(&self, py: Python<'_>) -> usize {
+        self.read(py, |inner| either!(inner, basis => basis.capacity()))
+    }
+
+    fn __len__(&self, py: Python<'_>) -> usize {
+        self.rank(py)
+    }
+
+    fn __repr__(&self, py: Python<'_>) -> String {
+        self.read(py, |inner| {
+            either!(inner, basis => {
+                format!("Basis(dim={}, capacity={}, rank={})", basis.dim(), basis.capacity(), basis.rank())
+            })
+        })
+    }
+}

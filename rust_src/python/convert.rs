@@ -1,0 +1,134 @@
+//! Arrays in, arrays out.
+//!
+//! A contiguous row of `float64` in native byte order is read where it lies. Anything else that NumPy can read
+//! as real numbers (lists, strided, byte-swapped, other widths, objects with `__array__`) is copied once.
+
+use numpy::{PyArray1, PyArray2, PyArrayMethods, PyReadonlyArray1, PyReadonlyArray2, PyUntypedArrayMethods};
+use pyo3::exceptions::{PyTypeError, PyValueError};
+use pyo3::prelude::*;
+use pyo3::sync::PyOnceLock;
+use pyo3::types::PyString;
+
+use crate::{Rows, Scalar};
+
+/// A row of numbers, borrowed from an array for the length of a call.
+pub(super) struct Row<'py>(PyReadonlyArray1<'py, f64>);
+
+impl<'py> Row<'py> {
+    /// The interpreter it came from.
+    pub fn py(&self) -> Python<'py> {
+        self.0.py()
+    }
+
+    /// Its entries.
+    pub fn entries(&self) -> PyResult<&[f64]> {
+        self.0.as_slice().map_err(|_| PyValueError::new_err("vector: not contiguous"))
+    }
+}
+
+/// Reads `object` as one row of numbers.
+pub(super) fn row<'py>(object: &Bound<'py, PyAny>) -> PyResult<Row<'py>> {
+    if let Ok(array) = object.cast::<PyArray1<f64>>()
+        && array.is_contiguous()
+        && array.is_aligned()
+    {
+        return Ok(Row(array.readonly()));
+    }
+    let array = as_float64(object)?;
+    let got = dimensions(&array)?;
+    match array.cast_into::<PyArray1<f64>>() {
+        Ok(array) => Ok(Row(array.readonly())),
+        Err(_) => Err(PyValueError::new_err(format!("vector: expected one dimension, got {got}"))),
+    }
+}
+
+/// Rows of numbers, borrowed from an array for the length of a call.
+pub(super) struct Block<'py>(PyReadonlyArray2<'py, f64>);
+
+impl Block<'_> {
+    /// Its entries, row after row, and how many rows and columns they make.
+    pub fn entries(&self) -> PyResult<(&[f64], usize, usize)> {
+        let shape = self.0.as_array().dim();
+        match self.0.as_slice() {
+            Ok(entries) => Ok((entries, shape.0, shape.1)),
+            Err(_) => Err(PyValueError::new_err("rows: not contiguous")),
+        }
+    }
+}
+
+/// Reads `object` as rows of numbers.
+pub(super) fn block<'py>(object: &Bound<'py, PyAny>) -> PyResult<Block<'py>> {
+    if let Ok(array) = object.cast::<PyArray2<f64>>()
+        && array.is_c_contiguous()
+        && array.is_aligned()
+    {
+        return Ok(Block(array.readonly()));
+    }
+    let array = as_float64(object)?;
+    let got = dimensions(&array)?;
+    match array.cast_into::<PyArray2<f64>>() {
+        Ok(array) => Ok(Block(array.readonly())),
+        Err(_) => Err(PyValueError::new_err(format!("rows: expected two dimensions, got {got}"))),
+    }
+}
+
+fn dimensions(array: &Bound<'_, PyAny>) -> PyResult<usize> {
+    array.getattr("ndim")?.extract()
+}
+
+/// A contiguous `float64` copy of anything NumPy reads as real numbers; a mask becomes NaN.
+fn as_float64<'py>(object: &Bound<'py, PyAny>) -> PyResult<Bound<'py, PyAny>> {
+    static NUMPY: PyOnceLock<Py<PyModule>> = PyOnceLock::new();
+    let py = object.py();
+    let numpy = NUMPY.get_or_try_init(py, || py.import("numpy").map(Bound::unbind))?.bind(py);
+    let array = numpy.call_method1("asanyarray", (object,))?;
+    let kind = array.getattr("dtype")?.getattr("kind")?;
+    let kind = kind.cast::<PyString>()?.to_str()?;
+    if !matches!(kind, "f" | "i" | "u" | "b") {
+        let dtype = array.getattr("dtype")?.str()?;
+        return Err(PyTypeError::new_err(format!("expected real numbers, got an array of {dtype}")));
+    }
+    let array = array.call_method1("astype", ("float64",))?;
+    let array = if array.hasattr("mask")? { array.call_method1("filled", (f64::NAN,))? } else { array };
+    numpy.call_method1("ascontiguousarray", (array,))
+}
+
+/// Rows as a new array of their own type.
+pub(super) fn array_of_rows<'py, T: Scalar + numpy::Element>(
+    py: Python<'py>,
+    rows: Rows<'_, T>,
+) -> PyResult<Bound<'py, PyArray2<T>>> {
+    let entries: Vec<T> = rows.iter().flatten().copied().collect();
+    PyArray1::from_vec(py, entries).reshape([rows.count(), rows.dim()])
+}
+
+/// Row-major entries as a new two-dimensional array.
+pub(super) fn matrix(
+    py: Python<'_>,
+    entries: Vec<f64>,
+    rows: usize,
+    cols: usize,
+) -> PyResult<Bound<'_, PyArray2<f64>>> {
+    PyArray1::from_vec(py, entries).reshape([rows, cols])
+}
+
+/// The stored type an argument names.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Stored {
+    Float64,
+    Float32,
+}
+
+/// Reads a `dtype` argument: a name, or anything NumPy takes for one.
+pub(super) fn stored(object: &Bound<'_, PyAny>) -> PyResult<Stored> {
+    let name = if object.is_instance_of::<PyString>() {
+        object.str()?
+    } else {
+        object.py().import("numpy")?.call_method1("dtype", (object,))?.getattr("name")?.str()?
+    };
+    match name.to_str()? {
+        "float64" => Ok(Stored::Float64),
+        "float32" => Ok(Stored::Float32),
+        other => Err(PyTypeError::new_err(format!("dtype: expected float64 or float32, got {other}"))),
+    }
+}
