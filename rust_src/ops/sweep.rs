@@ -226,11 +226,12 @@ pub(super) fn project<L: Lanes, T: Scalar>(lanes: L, q: Rows<'_, T>, v: &[f64], 
     assert!(v.len() == q.dim() && h.len() == q.count(), "shapes of a projection");
     h.fill(0.0);
     let mut squares = 0.0;
-    for (index, block) in v.chunks(BLOCK).enumerate() {
+    let length = block_for::<T>(q.count());
+    for (index, block) in v.chunks(length).enumerate() {
         // SAFETY: `block` holds its length and lies inside `v`, which is as long as a row.
         unsafe {
             squares += dots::<L, f64, 1, 8>(lanes, [block.as_ptr()], block.as_ptr(), block.len())[0];
-            add_dots(lanes, q, index * BLOCK, block.as_ptr(), block.len(), h);
+            add_dots(lanes, q, index * length, block.as_ptr(), block.len(), h);
         }
     }
     squares
@@ -265,7 +266,7 @@ pub(super) fn subtract<L: Lanes, T: Scalar>(
     }
     let block = block_for::<T>(q.count());
     let mut squares = 0.0;
-    for from in (0..w.len()).step_by(block) {
+    for from in (0..w.len()).step_by(block).rev() {
         let here = &mut w[from..(from + block).min(q.dim())];
         let (out, n) = (here.as_mut_ptr(), here.len());
         let x = match source {
