@@ -1,7 +1,12 @@
 //! Times the kernel's sweeps against this machine's own read rate, on the shapes of `cases.csv`.
 //!
 //! Every answer is asserted before it is timed. `cargo bench` times; `cargo bench -- --check` runs each case once.
-#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, reason = "a bench stops where it finds a surprise")]
+#![allow(
+    clippy::unwrap_used,
+    clippy::expect_used,
+    clippy::panic,
+    reason = "a bench stops where it finds a surprise"
+)]
 
 use std::hint::black_box;
 use std::time::Instant;
@@ -17,7 +22,10 @@ fn main() {
     println!("kernel path: {}", ops::Path::current().name());
     let rate = if check { f64::NAN } else { read_rate(if check { 1 } else { 9 }) };
     println!("read rate, a dot product over {} MB: {rate:.1} GB/s", LONG * 8 / 1_000_000);
-    println!("{:>8} {:>5} {:>12} {:>10} {:>12} {:>10}", "dim", "rank", "split us", "sweeps", "GB/s", "of rate");
+    println!(
+        "{:>8} {:>5} {:>12} {:>10} {:>12} {:>10}",
+        "dim", "rank", "split us", "sweeps", "GB/s", "of rate"
+    );
     for (dim, rank) in cases() {
         let (mut basis, vector) = filled(dim, rank);
         assert_answer(&mut basis, &vector);

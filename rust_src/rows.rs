@@ -110,14 +110,17 @@ impl<T: Scalar> RowStore<T> {
     /// Where there are fewer.
     #[must_use]
     pub fn view(&self, count: usize) -> Rows<'_, T> {
-        assert!(count <= self.rows, "{count} rows asked of {}", self.rows);
-        Rows { data: &self.data, stride: self.stride, count, dim: self.dim }
+        self.view_range(0, count)
     }
 
-    /// The first `count` rows, and the row after them to write to.
-    pub fn view_and_next(&mut self, count: usize) -> (Rows<'_, T>, &mut [T]) {
-        let (head, tail) = self.data.split_at_mut(count * self.stride);
-        (Rows { data: head, stride: self.stride, count, dim: self.dim }, &mut tail[..self.dim])
+    /// `count` rows from row `first` on.
+    ///
+    /// # Panics
+    /// Where there are fewer.
+    #[must_use]
+    pub fn view_range(&self, first: usize, count: usize) -> Rows<'_, T> {
+        assert!(first + count <= self.rows, "{count} rows from {first} on asked of {}", self.rows);
+        Rows { data: &self.data[first * self.stride..], stride: self.stride, count, dim: self.dim }
     }
 
     /// Row `index`.

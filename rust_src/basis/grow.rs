@@ -67,17 +67,7 @@ impl<T: Scalar> Basis<T> {
         let vanished = Vanished { relative: self.tolerance.relative, absolute: self.tolerance.absolute };
         let split = self.orthogonalize(v, vanished)?;
         let threshold = (self.tolerance.relative * split.norm).max(self.tolerance.absolute);
-        // Where nothing is left, or only what sweeping could not clean, there is no direction to take.
-        let unclean = split.loss > UNCLEAN;
-        let reason = if split.norm == 0.0 {
-            Some(Reason::Zero)
-        } else if split.residual_norm <= threshold || split.residual_norm == 0.0 || unclean {
-            Some(Reason::Dependent)
-        } else if self.rank == self.capacity() {
-            Some(Reason::Full)
-        } else {
-            None
-        };
+        let reason = self.reason(split.norm, split.residual_norm, threshold, split.loss);
         let step = Step {
             reason,
             rank: self.rank,
@@ -88,13 +78,33 @@ impl<T: Scalar> Basis<T> {
             loss: split.loss,
         };
         if step.accepted() {
-            self.make_room();
-            let (_, next) = self.q.view_and_next(self.rank);
-            ops::normalize_into(split.kept_norm, &self.w, next);
-            self.r.push(&self.h, times_power(split.kept_norm, split.exponent));
-            self.rank += 1;
+            let w = std::mem::take(&mut self.w);
+            self.push(split.kept_norm, &w, split.exponent);
+            self.w = w;
         }
         Ok(step)
+    }
+
+    /// Why a vector of that norm, with that residual, is not accepted.
+    pub(super) fn reason(&self, norm: f64, residual_norm: f64, threshold: f64, loss: f64) -> Option<Reason> {
+        if norm == 0.0 {
+            Some(Reason::Zero)
+        } else if residual_norm <= threshold || residual_norm == 0.0 || loss > UNCLEAN {
+            Some(Reason::Dependent)
+        } else if self.rank == self.capacity() {
+            Some(Reason::Full)
+        } else {
+            None
+        }
+    }
+
+    /// Appends the residual `w`, of norm `norm`, as a basis row, and the coefficients in `h` as a column of the
+    /// triangular factor; `w` is that of the vector times `2^-exponent`.
+    pub(super) fn push(&mut self, norm: f64, w: &[f64], exponent: i32) {
+        self.make_room();
+        ops::normalize_into(norm, w, self.q.row_mut(self.rank));
+        self.r.push(&self.h, times_power(norm, exponent));
+        self.rank += 1;
     }
 }
 

@@ -7,6 +7,7 @@
 //! what was added. (The classical algorithm applied twice is enough: Giraud, Langou, Rozloznik, van den Eshof,
 //! Numer. Math. 101 (2005) 87-100; here "twice" is decided by looking.)
 
+mod block;
 mod drop;
 mod grow;
 mod health;
@@ -14,6 +15,7 @@ mod orthogonalize;
 mod solve;
 mod triangular;
 
+pub use block::BLOCK_ROWS;
 pub use grow::{Reason, Step};
 pub use orthogonalize::{LOSS_LIMIT, Split};
 pub use solve::Solution;
@@ -53,6 +55,8 @@ pub struct Basis<T> {
     tolerance: Tolerance,
     /// Row to be measured next after a drop.
     cursor: usize,
+    /// Room for many vectors at once.
+    block: block::Workspace,
     /// Plane rotations of the last drop.
     rotations: Vec<(f64, f64)>,
     /// Coefficients of the last vector, in its unit; `rank` of them count.
@@ -99,6 +103,7 @@ impl<T: Scalar> Basis<T> {
             capacity,
             tolerance,
             cursor: 0,
+            block: block::Workspace::default(),
             rotations: Vec::with_capacity(room),
             h: vec![0.0; room],
             s: vec![0.0; room],

@@ -7,6 +7,7 @@ use crate::scalar::Scalar;
 
 /// Every sweep that is stamped, under one roof: the stamped names are the same.
 mod sweeps {
+    pub(super) use super::super::block::{project_block, subtract_block};
     pub(super) use super::super::entries::{normalize_into, rotate, rotate_chain, scale_into};
     pub(super) use super::super::sweep::{dot, project, reflect, subtract};
 }
@@ -84,6 +85,17 @@ stamp! {
     /// `w -= Q^T h` and `s = Q w`; returns `w . w`. As [`subtract_measured`].
     fn subtract_measured_in_place<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], s: &mut [f64]) -> f64
         = subtract(q, h, Source::Target, w, Some(s));
+
+    /// `H = V Q^T` for `count` vectors, one after another in `v`; `h` has a row a vector. One read of `Q`.
+    fn project_block<T>(q: Rows<'_, T>, v: &[f64], count: usize, h: &mut [f64]) = project_block(q, v, count, h);
+
+    /// `W = V - H Q` and `S = W Q^T` for `count` vectors. One read of `Q` from memory, the rest from cache.
+    fn subtract_block<T>(q: Rows<'_, T>, h: &[f64], v: &[f64], w: &mut [f64], count: usize, s: &mut [f64])
+        = subtract_block(q, h, Source::Vector(v), w, count, s);
+
+    /// `W -= H Q` and `S = W Q^T` for `count` vectors.
+    fn subtract_block_in_place<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], count: usize, s: &mut [f64])
+        = subtract_block(q, h, Source::Target, w, count, s);
 
     /// `target = factor source`, rounded to the stored type.
     fn scale_into<T>(factor: f64, source: &[f64], target: &mut [T]) = scale_into(factor, source, target);

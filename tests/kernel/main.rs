@@ -1,3 +1,4 @@
 //! Claims about the kernel, each in the name of its test.
 #![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test may stop where it finds a surprise")]
+mod basis;
 mod ops;

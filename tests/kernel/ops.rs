@@ -69,7 +69,48 @@ fn sweeps_agree<T: Scalar>(path: Path, rows: &[Vec<f64>], v: &[f64], u: &[f64]) 
     path.subtract_measured_in_place(q.view(count), coefficients, &mut in_place, &mut again);
     assert_eq!((in_place, again), (w, s));
 
+    blocks_agree::<T>(path, &q, v, u);
     reflects::<T>(path, &mut q, v, u);
+}
+
+/// A block of vectors against the same vectors one by one.
+fn blocks_agree<T: Scalar>(path: Path, q: &RowStore<T>, v: &[f64], u: &[f64]) {
+    let (dim, rank) = (q.dim(), q.rows());
+    let q = q.view(rank);
+    for count in [1, 3, 4, 7, 8, 17] {
+        let many: Vec<f64> =
+            (0..count).flat_map(|i| v.iter().map(move |x| x * (1.0 + f64::from(i)))).collect();
+        let count = count as usize;
+        let mut h = vec![f64::NAN; count * rank];
+        path.project_block(q, &many, count, &mut h);
+        let factors: Vec<f64> = (0..count * rank).map(|i| u[i % rank.max(1)]).collect();
+        let mut w = vec![f64::NAN; count * dim];
+        let mut s = vec![f64::NAN; count * rank];
+        path.subtract_block(q, &factors, &many, &mut w, count, &mut s);
+        let mut in_place = many.clone();
+        let mut again = vec![f64::NAN; count * rank];
+        path.subtract_block_in_place(q, &factors, &mut in_place, count, &mut again);
+        assert_eq!((&in_place, &again), (&w, &s));
+        for index in 0..count {
+            let x = &many[index * dim..][..dim];
+            for (row, &got) in h[index * rank..][..rank].iter().enumerate() {
+                let (plain, size) = plain_dot(q.row(row), x);
+                assert!((got - plain).abs() <= slack(dim, size), "block project: {got} against {plain}");
+            }
+            let mut alone = vec![f64::NAN; dim];
+            path.subtract(q, &factors[index * rank..][..rank], x, &mut alone);
+            let out = &w[index * dim..][..dim];
+            for (column, (&got, &plain)) in out.iter().zip(&alone).enumerate() {
+                let size: f64 =
+                    (0..rank).map(|r| (factors[index * rank + r] * q.row(r)[column].to_f64()).abs()).sum();
+                assert!((got - plain).abs() <= slack(rank, size + x[column].abs()), "block subtract");
+            }
+            for (row, &got) in s[index * rank..][..rank].iter().enumerate() {
+                let (plain, size) = plain_dot(q.row(row), out);
+                assert!((got - plain).abs() <= slack(dim, size), "block measure: {got} against {plain}");
+            }
+        }
+    }
 }
 
 fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]) {
