@@ -71,10 +71,10 @@ fn filled(dim: usize, rank: usize) -> (Basis<f64>, Vec<f64>) {
     let mut basis = Basis::new(dim, Some(rank), None).unwrap();
     let mut vector = vec![0.0; dim];
     for _ in 0..rank {
-        vector.iter_mut().for_each(|entry| *entry = noise(&mut state));
+        vector.fill_with(|| noise(&mut state));
         assert!(basis.add(&vector).unwrap().accepted());
     }
-    vector.iter_mut().for_each(|entry| *entry = noise(&mut state));
+    vector.fill_with(|| noise(&mut state));
     (basis, vector)
 }
 
@@ -94,7 +94,7 @@ fn assert_answer(basis: &mut Basis<f64>, vector: &[f64]) {
 fn read_rate(repeats: usize) -> f64 {
     let x = vec![1.0; LONG];
     let y = vec![0.5; LONG];
-    assert_eq!(ops::dot(&x, &y), LONG as f64 / 2.0);
+    assert!((ops::dot(&x, &y) - LONG as f64 / 2.0).abs() < 0.5);
     let seconds = median(repeats, 1, || {
         black_box(ops::dot(black_box(&x), black_box(&y)));
     });

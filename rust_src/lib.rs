@@ -16,6 +16,7 @@
 //!
 //! Rows are stored in `f32` or `f64` ([`Scalar`]); all arithmetic, and everything small, is `f64`.
 
+mod angles;
 pub mod basis;
 pub mod dense;
 mod error;
@@ -28,6 +29,7 @@ pub mod watch;
 #[cfg(feature = "python")]
 mod python;
 
+pub use angles::principal_angles;
 pub use basis::Basis;
 pub use error::Error;
 pub use rows::{RowStore, Rows};

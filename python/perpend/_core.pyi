@@ -81,7 +81,7 @@ class Basis:
     Raises
     ------
     ValueError
-        Where `capacity` exceeds `dim` or a tolerance is negative or not finite.
+        Where `dim` is 0, `capacity` exceeds it, or a tolerance is negative or not finite.
     TypeError
         Where `dtype` is neither of the two.
     """
@@ -139,6 +139,73 @@ class Basis:
 
     def residual_norm(self, vector: ArrayLike) -> float:
         """Distance of a vector from the span of the basis: the norm of the residual of `split`."""
+
+    def add_rows(self, rows: ArrayLike) -> tuple[NDArray[np.bool_], NDArray[np.float64]]:
+        """Add many vectors: the decisions of one `add` after another, at matrix-matrix speed.
+
+        The interpreter is released meanwhile. An interrupt stops between blocks and leaves the rows before it added.
+
+        Parameters
+        ----------
+        rows : array_like, shape (n, dim)
+            One vector a row.
+
+        Returns
+        -------
+        accepted : ndarray of bool, shape (n,)
+            Whether the basis grew by the row.
+        residual_norm : ndarray, shape (n,)
+            What the basis, as it was then, did not explain of the row.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `add`, naming the row; then nothing has been added.
+        """
+
+    def split_rows(self, rows: ArrayLike) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Split many vectors against the basis: `split` for each row.
+
+        Parameters
+        ----------
+        rows : array_like, shape (n, dim)
+            One vector a row.
+
+        Returns
+        -------
+        coefficients : ndarray, shape (n, rank)
+            On the basis vectors.
+        residuals : ndarray, shape (n, dim)
+            What they do not explain.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `add`, naming the row.
+        """
+
+    def angles(self, other: Basis) -> NDArray[np.float64]:
+        """Principal angles between the spans of two bases, accurate near 0 and near pi/2.
+
+        Parameters
+        ----------
+        other : Basis
+            Of the same `dim`; either type.
+
+        Returns
+        -------
+        ndarray, shape (min(rank, other.rank),)
+            Radians, ascending. From sines where they are small and from cosines where they are not (Bjorck and Golub
+            1973, Knyazev and Argentati 2002).
+
+        Raises
+        ------
+        ValueError
+            Where the dimensions differ.
+        """
+
+    def copy(self) -> Basis:
+        """Copy the basis; the two go separate ways."""
 
     def drop(self, index: int) -> None:
         """Forget an accepted vector; basis and triangular factor hold for the rest.

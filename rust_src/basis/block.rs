@@ -44,7 +44,7 @@ impl<T: Scalar> Basis<T> {
     /// not a whole number of vectors.
     pub fn check_rows(&self, rows: &[f64]) -> Result<(), Error> {
         let dim = self.dim();
-        if dim == 0 || !rows.len().is_multiple_of(dim) {
+        if !rows.len().is_multiple_of(dim) {
             return Err(Error::Length { what: "row", expected: dim, got: rows.len() });
         }
         for (index, row) in rows.chunks_exact(dim).enumerate() {

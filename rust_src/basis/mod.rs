@@ -76,8 +76,11 @@ impl<T: Scalar> Basis<T> {
     /// allocates nothing from here on; without, it grows as needed, to `dim` at most.
     ///
     /// # Errors
-    /// [`Error::Parameter`] where `capacity` exceeds `dim`, or a tolerance is negative or not a number.
+    /// [`Error::Parameter`] where `dim` is 0, `capacity` exceeds it, or a tolerance is negative or not a number.
     pub fn new(dim: usize, capacity: Option<usize>, tolerance: Option<Tolerance>) -> Result<Self, Error> {
+        if dim == 0 {
+            return Err(Error::Parameter { name: "dim", expected: "at least 1".into(), got: "0".into() });
+        }
         if let Some(capacity) = capacity.filter(|&capacity| capacity > dim) {
             return Err(Error::Parameter {
                 name: "capacity",

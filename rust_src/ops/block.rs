@@ -19,7 +19,6 @@ const DEPTH: usize = 16;
 /// # Safety
 /// Every pointer points to `n` readable entries.
 #[inline(always)]
-#[expect(clippy::needless_range_loop, reason = "constant bounds, so that the loops unroll into registers")]
 unsafe fn products<L: Lanes, T: Transfer, const R: usize, const V: usize>(
     lanes: L,
     rows: [*const T; R],
@@ -61,7 +60,6 @@ unsafe fn products<L: Lanes, T: Transfer, const R: usize, const V: usize>(
 /// `x` and `out` point to rows of `x_stride` and `out_stride` entries, `V` of them, `rows` to `depth` of them,
 /// each with `C WIDTH` entries from its start.
 #[inline(always)]
-#[expect(clippy::too_many_arguments, reason = "the shape of a tile")]
 #[expect(clippy::needless_range_loop, reason = "constant bounds, so that the loops unroll into registers")]
 unsafe fn less_tile<L: Lanes, T: Transfer, const V: usize, const C: usize>(
     lanes: L,

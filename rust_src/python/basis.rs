@@ -6,13 +6,14 @@ use numpy::{PyArray1, PyArray2};
 use pyo3::prelude::*;
 use pyo3::sync::MutexExt;
 
-use super::convert::{Stored, array_of_rows, matrix, row, stored};
+use super::convert::{Stored, array_of_rows, block, matrix, row, stored};
 use super::errors::fenced;
 use super::step::Step;
 use crate::basis::{Basis, Tolerance};
 use crate::{Error, Scalar};
 
 /// A basis in one of the stored types.
+#[derive(Clone)]
 enum Inner {
     Float64(Basis<f64>),
     Float32(Basis<f32>),
@@ -45,6 +46,12 @@ impl PyBasis {
     /// Runs `call` on the basis, alone: calls from several threads take turns.
     fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
         let mut inner = self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
+        fenced(|| call(&mut inner))
+    }
+
+    /// The same without the interpreter: for work long enough that other threads should go on meanwhile.
+    fn alone<R>(&self, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
+        let mut inner = self.inner.lock().unwrap_or_else(PoisonError::into_inner);
         fenced(|| call(&mut inner))
     }
 
@@ -111,6 +118,69 @@ impl PyBasis {
         let vector = row(vector)?;
         let entries = vector.entries()?;
         self.with(vector.py(), |inner| either!(inner, basis => Ok(basis.split(entries)?.residual_norm)))
+    }
+
+    fn add_rows<'py>(
+        &self,
+        rows: &Bound<'py, PyAny>,
+    ) -> PyResult<(Bound<'py, PyArray1<bool>>, Bound<'py, PyArray1<f64>>)> {
+        let py = rows.py();
+        let block = block(rows)?;
+        let (entries, count) = block.of(self.dim(py))?;
+        self.with(py, |inner| either!(inner, basis => basis.check_rows(entries)))?;
+        let mut steps = Vec::with_capacity(count);
+        for piece in block.pieces(entries) {
+            py.detach(|| self.alone(|inner| either!(inner, basis => basis.add_rows(piece, &mut steps))))?;
+            py.check_signals()?;
+        }
+        let accepted = steps.iter().map(crate::basis::Step::accepted).collect();
+        let norms = steps.iter().map(|step| step.residual_norm).collect();
+        Ok((PyArray1::from_vec(py, accepted), PyArray1::from_vec(py, norms)))
+    }
+
+    fn split_rows<'py>(
+        &self,
+        rows: &Bound<'py, PyAny>,
+    ) -> PyResult<(Bound<'py, PyArray2<f64>>, Bound<'py, PyArray2<f64>>)> {
+        let py = rows.py();
+        let block = block(rows)?;
+        let dim = self.dim(py);
+        let (entries, count) = block.of(dim)?;
+        let (mut coefficients, mut residuals) = (Vec::new(), Vec::with_capacity(entries.len()));
+        for (index, row) in entries.chunks_exact(dim).enumerate() {
+            self.with(py, |inner| {
+                either!(inner, basis => {
+                    basis.split(row).map_err(|error| error.in_row(index))?;
+                    coefficients.extend_from_slice(basis.coefficients());
+                    residuals.extend_from_slice(basis.residual());
+                    Ok(())
+                })
+            })?;
+        }
+        let rank = coefficients.len().checked_div(count).unwrap_or_else(|| self.rank(py));
+        Ok((matrix(py, coefficients, count, rank)?, matrix(py, residuals, count, dim)?))
+    }
+
+    fn angles<'py>(&self, other: &Bound<'py, Self>) -> PyResult<Bound<'py, PyArray1<f64>>> {
+        let py = other.py();
+        // A copy of the other, so that two locks are never held together.
+        let other = other.get().read(py, Inner::clone);
+        let angles = self.with(py, |inner| {
+            either!(inner, a => either!(&other, b => crate::principal_angles(a.vectors(), b.vectors())))
+        })?;
+        Ok(PyArray1::from_vec(py, angles))
+    }
+
+    fn __copy__(&self, py: Python<'_>) -> Self {
+        Self { inner: Mutex::new(self.read(py, Inner::clone)) }
+    }
+
+    fn __deepcopy__(&self, py: Python<'_>, _memo: &Bound<'_, PyAny>) -> Self {
+        self.__copy__(py)
+    }
+
+    fn copy(&self, py: Python<'_>) -> Self {
+        self.__copy__(py)
     }
 
     fn drop(&self, py: Python<'_>, index: usize) -> PyResult<()> {

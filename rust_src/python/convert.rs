@@ -45,14 +45,27 @@ pub(super) fn row<'py>(object: &Bound<'py, PyAny>) -> PyResult<Row<'py>> {
 /// Rows of numbers, borrowed from an array for the length of a call.
 pub(super) struct Block<'py>(PyReadonlyArray2<'py, f64>);
 
+/// Entries worked on before the interpreter is asked for signals again: some milliseconds of work.
+const PIECE: usize = 1 << 18;
+
 impl Block<'_> {
-    /// Its entries, row after row, and how many rows and columns they make.
-    pub fn entries(&self) -> PyResult<(&[f64], usize, usize)> {
-        let shape = self.0.as_array().dim();
+    /// Its entries, row after row, and how many rows of `dim` they make.
+    pub fn of(&self, dim: usize) -> PyResult<(&[f64], usize)> {
+        let (count, width) = self.0.as_array().dim();
+        if width != dim {
+            return Err(PyValueError::new_err(format!("rows: expected {dim} columns, got {width}")));
+        }
         match self.0.as_slice() {
-            Ok(entries) => Ok((entries, shape.0, shape.1)),
+            Ok(entries) => Ok((entries, count)),
             Err(_) => Err(PyValueError::new_err("rows: not contiguous")),
         }
+    }
+
+    /// The entries in pieces of whole rows, short enough to look for signals between them.
+    pub fn pieces<'a>(&self, entries: &'a [f64]) -> impl Iterator<Item = &'a [f64]> + use<'a> {
+        let width = self.0.as_array().dim().1.max(1);
+        let rows = (PIECE / width).next_multiple_of(crate::basis::BLOCK_ROWS).max(crate::basis::BLOCK_ROWS);
+        entries.chunks(rows * width)
     }
 }
 
