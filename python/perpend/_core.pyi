@@ -3,6 +3,8 @@ from typing import Literal, final
 import numpy as np
 from numpy.typing import ArrayLike, DTypeLike, NDArray
 
+__all__ = ["Basis", "Step", "__version__", "kernel_path"]
+
 __version__: str
 
 def kernel_path() -> Literal["avx512", "avx2", "neon", "portable"]:
@@ -207,6 +209,8 @@ class Basis:
     def copy(self) -> Basis:
         """Copy the basis; the two go separate ways."""
 
+    def __copy__(self) -> Basis: ...
+    def __deepcopy__(self, _memo: object, /) -> Basis: ...
     def drop(self, index: int) -> None:
         """Forget an accepted vector; basis and triangular factor hold for the rest.
 

@@ -2,11 +2,11 @@
 
 use std::sync::{Mutex, PoisonError};
 
-use numpy::{PyArray1, PyArray2};
+use numpy::PyArray1;
 use pyo3::prelude::*;
 use pyo3::sync::MutexExt;
 
-use super::convert::{Stored, array_of_rows, block, matrix, row, stored};
+use super::convert::{Array1, Array2, Stored, array_of_rows, block, matrix, row};
 use super::errors::fenced;
 use super::step::Step;
 use crate::basis::{Basis, Tolerance};
@@ -69,18 +69,21 @@ fn make<T: Scalar>(dim: usize, capacity: Option<usize>, tolerance: Option<Tolera
 #[pymethods]
 impl PyBasis {
     #[new]
-    #[pyo3(signature = (dim, capacity=None, *, dtype=None, tolerance=None))]
+    #[pyo3(
+        signature = (dim, capacity=None, *, dtype=Stored::Float64, tolerance=None),
+        text_signature = "(dim, capacity=None, *, dtype='float64', tolerance=None)"
+    )]
     fn new(
         dim: usize,
         capacity: Option<usize>,
-        dtype: Option<&Bound<'_, PyAny>>,
+        dtype: Stored,
         tolerance: Option<ToleranceArgument>,
     ) -> PyResult<Self> {
         let tolerance = tolerance.map(|argument| match argument {
             ToleranceArgument::Relative(relative) => Tolerance { relative, absolute: 0.0 },
             ToleranceArgument::Both(relative, absolute) => Tolerance { relative, absolute },
         });
-        let inner = match dtype.map_or(Ok(Stored::Float64), stored)? {
+        let inner = match dtype {
             Stored::Float64 => Inner::Float64(make(dim, capacity, tolerance)?),
             Stored::Float32 => Inner::Float32(make(dim, capacity, tolerance)?),
         };
@@ -98,10 +101,7 @@ impl PyBasis {
         })
     }
 
-    fn split<'py>(
-        &self,
-        vector: &Bound<'py, PyAny>,
-    ) -> PyResult<(Bound<'py, PyArray1<f64>>, Bound<'py, PyArray1<f64>>)> {
+    fn split<'py>(&self, vector: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, Array1<'py, f64>)> {
         let vector = row(vector)?;
         let entries = vector.entries()?;
         let py = vector.py();
@@ -120,10 +120,7 @@ impl PyBasis {
         self.with(vector.py(), |inner| either!(inner, basis => Ok(basis.split(entries)?.residual_norm)))
     }
 
-    fn add_rows<'py>(
-        &self,
-        rows: &Bound<'py, PyAny>,
-    ) -> PyResult<(Bound<'py, PyArray1<bool>>, Bound<'py, PyArray1<f64>>)> {
+    fn add_rows<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, bool>, Array1<'py, f64>)> {
         let py = rows.py();
         let block = block(rows)?;
         let (entries, count) = block.of(self.dim(py))?;
@@ -138,10 +135,7 @@ impl PyBasis {
         Ok((PyArray1::from_vec(py, accepted), PyArray1::from_vec(py, norms)))
     }
 
-    fn split_rows<'py>(
-        &self,
-        rows: &Bound<'py, PyAny>,
-    ) -> PyResult<(Bound<'py, PyArray2<f64>>, Bound<'py, PyArray2<f64>>)> {
+    fn split_rows<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<(Array2<'py, f64>, Array2<'py, f64>)> {
         let py = rows.py();
         let block = block(rows)?;
         let dim = self.dim(py);
@@ -161,7 +155,7 @@ impl PyBasis {
         Ok((matrix(py, coefficients, count, rank)?, matrix(py, residuals, count, dim)?))
     }
 
-    fn angles<'py>(&self, other: &Bound<'py, Self>) -> PyResult<Bound<'py, PyArray1<f64>>> {
+    fn angles<'py>(&self, other: &Bound<'py, Self>) -> PyResult<Array1<'py, f64>> {
         let py = other.py();
         // A copy of the other, so that two locks are never held together.
         let other = other.get().read(py, Inner::clone);
@@ -187,7 +181,7 @@ impl PyBasis {
         self.with(py, |inner| either!(inner, basis => basis.drop(index)))
     }
 
-    fn solve<'py>(&self, target: &Bound<'py, PyAny>) -> PyResult<(Bound<'py, PyArray1<f64>>, f64)> {
+    fn solve<'py>(&self, target: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, f64)> {
         let target = row(target)?;
         let entries = target.entries()?;
         let py = target.py();
@@ -211,7 +205,7 @@ impl PyBasis {
     }
 
     #[getter]
-    fn triangular<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyArray2<f64>>> {
+    fn triangular<'py>(&self, py: Python<'py>) -> PyResult<Array2<'py, f64>> {
         let (dense, rank) =
             self.read(py, |inner| either!(inner, basis => (basis.triangular(), basis.rank())));
         matrix(py, dense, rank, rank)

@@ -11,6 +11,11 @@ use pyo3::types::PyString;
 
 use crate::{Rows, Scalar};
 
+/// A new array of one dimension.
+pub(super) type Array1<'py, T> = Bound<'py, PyArray1<T>>;
+/// A new array of two.
+pub(super) type Array2<'py, T> = Bound<'py, PyArray2<T>>;
+
 /// A row of numbers, borrowed from an array for the length of a call.
 pub(super) struct Row<'py>(PyReadonlyArray1<'py, f64>);
 
@@ -110,7 +115,7 @@ fn as_float64<'py>(object: &Bound<'py, PyAny>) -> PyResult<Bound<'py, PyAny>> {
 pub(super) fn array_of_rows<'py, T: Scalar + numpy::Element>(
     py: Python<'py>,
     rows: Rows<'_, T>,
-) -> PyResult<Bound<'py, PyArray2<T>>> {
+) -> PyResult<Array2<'py, T>> {
     let entries: Vec<T> = rows.iter().flatten().copied().collect();
     PyArray1::from_vec(py, entries).reshape([rows.count(), rows.dim()])
 }
@@ -121,7 +126,7 @@ pub(super) fn matrix(
     entries: Vec<f64>,
     rows: usize,
     cols: usize,
-) -> PyResult<Bound<'_, PyArray2<f64>>> {
+) -> PyResult<Array2<'_, f64>> {
     PyArray1::from_vec(py, entries).reshape([rows, cols])
 }
 
@@ -132,16 +137,20 @@ pub(super) enum Stored {
     Float32,
 }
 
-/// Reads a `dtype` argument: a name, or anything NumPy takes for one.
-pub(super) fn stored(object: &Bound<'_, PyAny>) -> PyResult<Stored> {
-    let name = if object.is_instance_of::<PyString>() {
-        object.str()?
-    } else {
-        object.py().import("numpy")?.call_method1("dtype", (object,))?.getattr("name")?.str()?
-    };
-    match name.to_str()? {
-        "float64" => Ok(Stored::Float64),
-        "float32" => Ok(Stored::Float32),
-        other => Err(PyTypeError::new_err(format!("dtype: expected float64 or float32, got {other}"))),
+impl<'py> FromPyObject<'_, 'py> for Stored {
+    type Error = PyErr;
+
+    /// Reads a `dtype` argument: a name, or anything NumPy takes for one.
+    fn extract(object: Borrowed<'_, 'py, PyAny>) -> PyResult<Self> {
+        let name = if object.is_instance_of::<PyString>() {
+            object.str()?
+        } else {
+            object.py().import("numpy")?.call_method1("dtype", (object,))?.getattr("name")?.str()?
+        };
+        match name.to_str()? {
+            "float64" => Ok(Self::Float64),
+            "float32" => Ok(Self::Float32),
+            other => Err(PyTypeError::new_err(format!("expected float64 or float32, got {other}"))),
+        }
     }
 }

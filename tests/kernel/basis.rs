@@ -122,7 +122,9 @@ fn run<T: Scalar>(dim: usize, operations: &[Operation]) {
                 let mut noise = Noise(*seed);
                 let mut v = noise.combination(&accepted, dim);
                 let size = norm(&v).max(1.0);
-                v.iter_mut().for_each(|x| *x += size * 10f64.powi(-digits) * noise.next());
+                for x in &mut v {
+                    *x += size * 10f64.powi(-digits) * noise.next();
+                }
                 if basis.add(&v).unwrap().accepted() {
                     accepted.push(v);
                 }
@@ -301,7 +303,9 @@ fn solving_gives_back_the_weights_of_a_combination() {
     let mut basis = Basis::<f64>::new(30, None, None).unwrap();
     let mut noise = Noise(11);
     let vectors: Vec<Vec<f64>> = (0..7).map(|_| noise.vector(30)).collect();
-    vectors.iter().for_each(|v| assert!(basis.add(v).unwrap().accepted()));
+    for v in &vectors {
+        assert!(basis.add(v).unwrap().accepted());
+    }
     let weights = noise.vector(7);
     let mut target = vec![0.0; 30];
     for (v, weight) in vectors.iter().zip(&weights) {

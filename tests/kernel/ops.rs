@@ -77,10 +77,8 @@ fn sweeps_agree<T: Scalar>(path: Path, rows: &[Vec<f64>], v: &[f64], u: &[f64]) 
 fn blocks_agree<T: Scalar>(path: Path, q: &RowStore<T>, v: &[f64], u: &[f64]) {
     let (dim, rank) = (q.dim(), q.rows());
     let q = q.view(rank);
-    for count in [1, 3, 4, 7, 8, 17] {
-        let many: Vec<f64> =
-            (0..count).flat_map(|i| v.iter().map(move |x| x * (1.0 + f64::from(i)))).collect();
-        let count = count as usize;
+    for count in [1_usize, 3, 4, 7, 8, 17] {
+        let many: Vec<f64> = (0..count).flat_map(|i| v.iter().map(move |x| x * (1.0 + i as f64))).collect();
         let mut h = vec![f64::NAN; count * rank];
         path.project_block(q, &many, count, &mut h);
         let factors: Vec<f64> = (0..count * rank).map(|i| u[i % rank.max(1)]).collect();
@@ -114,15 +112,14 @@ fn blocks_agree<T: Scalar>(path: Path, q: &RowStore<T>, v: &[f64], u: &[f64]) {
 }
 
 fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]) {
-    let (dim, count) = (q.dim(), q.rows());
+    let count = q.rows();
     let norm = u.iter().map(|x| x * x).sum::<f64>().sqrt().max(f64::MIN_POSITIVE);
     let unit: Vec<f64> = u.iter().map(|x| x / norm).collect();
     let before = q.clone();
     let (rows, stride) = q.parts_mut();
     path.reflect(rows, stride, count, &unit, extra);
-    for column in 0..dim {
-        let all: Vec<f64> =
-            (0..count).map(|i| before.row(i)[column].to_f64()).chain([extra[column]]).collect();
+    for (column, &last) in extra.iter().enumerate() {
+        let all: Vec<f64> = (0..count).map(|i| before.row(i)[column].to_f64()).chain([last]).collect();
         let g: f64 = all.iter().zip(&unit).map(|(a, b)| a * b).sum();
         let size = all.iter().map(|a| a.abs()).sum::<f64>();
         for index in 0..count {
