@@ -7,7 +7,7 @@
 //! too large is swept once more on its own. (Block Gram-Schmidt with measured re-orthogonalization; its
 //! stability without the measurement: Barlow and Smoktunowicz, Numer. Math. 123 (2013) 395-423.)
 
-use super::orthogonalize::{LOSS_LIMIT, SAFE_SQUARES, check, clean, norm_of};
+use super::orthogonalize::{LOSS_LIMIT, Measured, SAFE_SQUARES, check, clean, norm_of};
 use super::{Basis, Step};
 use crate::error::Error;
 use crate::ops;
@@ -134,8 +134,8 @@ impl<T: Scalar> Basis<T> {
         let inside = self.q.view_range(older, added);
         ops::project(inside, w, &mut block.inside);
         let squares = ops::subtract_measured_in_place(inside, &block.inside, w, &mut self.s);
-        let mut cleaned =
-            clean(inside, w, squares, &mut block.inside, &mut self.s, &mut self.correction, floor);
+        let measured = Measured { squares, s: &mut self.s, correction: &mut self.correction };
+        let mut cleaned = clean(inside, w, measured, &mut block.inside, floor);
 
         // The leftover on the older basis, combined as the residuals were.
         let (before, here) = block.s.split_at_mut(index * older);
@@ -157,7 +157,8 @@ impl<T: Scalar> Basis<T> {
                 buffer.resize(rank, 0.0);
             }
             let squares = ops::project(q, w, &mut self.s);
-            cleaned = clean(q, w, squares, &mut self.h, &mut self.s, &mut self.correction, floor);
+            let measured = Measured { squares, s: &mut self.s, correction: &mut self.correction };
+            cleaned = clean(q, w, measured, &mut self.h, floor);
             extra = cleaned.passes;
             here.fill(0.0);
         }

@@ -10,7 +10,6 @@
 mod block;
 mod drop;
 mod grow;
-mod health;
 mod orthogonalize;
 mod solve;
 mod triangular;
@@ -18,9 +17,11 @@ mod triangular;
 pub use block::BLOCK_ROWS;
 pub use grow::{Reason, Step};
 pub use orthogonalize::{LOSS_LIMIT, Split};
+pub(crate) use orthogonalize::{Measured, clean};
 pub use solve::Solution;
 
 use crate::error::Error;
+use crate::orthonormal::{Mender, orthogonality_error};
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
 use triangular::Triangular;
@@ -53,8 +54,8 @@ pub struct Basis<T> {
     rank: usize,
     capacity: Option<usize>,
     tolerance: Tolerance,
-    /// Row to be measured next after a drop.
-    cursor: usize,
+    /// Measures a row after a drop.
+    mender: Mender,
     /// Room for many vectors at once.
     block: block::Workspace,
     /// Plane rotations of the last drop.
@@ -105,7 +106,7 @@ impl<T: Scalar> Basis<T> {
             rank: 0,
             capacity,
             tolerance,
-            cursor: 0,
+            mender: Mender::with_room(room, dim),
             block: block::Workspace::default(),
             rotations: Vec::with_capacity(room),
             h: vec![0.0; room],
@@ -150,6 +151,14 @@ impl<T: Scalar> Basis<T> {
     #[must_use]
     pub fn triangular(&self) -> Vec<f64> {
         self.r.to_dense()
+    }
+
+    /// Spectral norm of `I - Q Q^T`, computed now; `2 rank^2 dim` flops.
+    ///
+    /// # Errors
+    /// [`Error::NoConvergence`], never seen.
+    pub fn orthogonality_error(&self) -> Result<f64, Error> {
+        orthogonality_error(self.vectors())
     }
 
     /// Coefficients of the vector last added or split, on the basis as it was then.

@@ -100,7 +100,8 @@ impl<T: Scalar> Basis<T> {
         let floor = (vanished.relative * norm).max(times_power(vanished.absolute, -exponent));
 
         squares = ops::subtract_measured(q, &self.h, source, &mut self.w, &mut self.s);
-        let cleaned = clean(q, &mut self.w, squares, &mut self.h, &mut self.s, &mut self.correction, floor);
+        let measured = Measured { squares, s: &mut self.s, correction: &mut self.correction };
+        let cleaned = clean(q, &mut self.w, measured, &mut self.h, floor);
         if exponent != 0 {
             self.h.iter_mut().for_each(|h| *h = times_power(*h, exponent));
         }
@@ -115,9 +116,19 @@ impl<T: Scalar> Basis<T> {
     }
 }
 
+/// What the sweep before a cleaning measured.
+pub(crate) struct Measured<'a> {
+    /// Square of the residual.
+    pub squares: f64,
+    /// What is left of the basis in it.
+    pub s: &'a mut Vec<f64>,
+    /// Room as long as `s`.
+    pub correction: &'a mut Vec<f64>,
+}
+
 /// A residual after cleaning.
 #[derive(Clone, Copy, Debug)]
-pub(super) struct Cleaned {
+pub(crate) struct Cleaned {
     /// Its norm.
     pub norm: f64,
     /// Norm of what is left of the basis in it, as measured.
@@ -136,15 +147,14 @@ impl Cleaned {
 /// Subtracts from `w`, whose square is `squares`, what is measured to be left of `q` in it, `s`, until the
 /// measured loss is within the limit, the norm within `floor`, or a subtraction changes nothing any more: then
 /// only rounding is left, of the measurement or of the vector. What is subtracted is added to `h`.
-pub(super) fn clean<T: Scalar>(
+pub(crate) fn clean<T: Scalar>(
     q: Rows<'_, T>,
     w: &mut [f64],
-    mut squares: f64,
+    measured: Measured<'_>,
     h: &mut [f64],
-    s: &mut Vec<f64>,
-    correction: &mut Vec<f64>,
     floor: f64,
 ) -> Cleaned {
+    let Measured { mut squares, s, correction } = measured;
     let limit = LOSS_LIMIT * T::EPSILON;
     let mut before = f64::INFINITY;
     let mut passes = 0;

@@ -2,3 +2,4 @@
 #![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test may stop where it finds a surprise")]
 mod basis;
 mod ops;
+mod tracker;

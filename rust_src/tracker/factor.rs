@@ -1,0 +1,142 @@
+//! The small triangular factor `R` of the tracked rows `R Q`, and the changes a tick makes to it.
+//!
+//! All are plane rotations of rows, `O(k^2)` flops; nothing is ever squared, so an energy `1e-12` of the largest
+//! keeps its digits.
+
+/// Entries below this are taken as zero: their squares, the energies, would be subnormal.
+const VANISHED: f64 = 1e-150;
+
+/// Upper triangular, row-major, with room for one row and column more than is kept from tick to tick.
+#[derive(Clone, Debug)]
+pub(super) struct Factor {
+    entries: Vec<f64>,
+    stride: usize,
+    size: usize,
+    /// `R u` of the last cut.
+    image: Vec<f64>,
+}
+
+impl Factor {
+    /// Room for `limit` rows and columns.
+    pub(super) fn with_room(limit: usize) -> Self {
+        Self { entries: vec![0.0; limit * limit], stride: limit, size: 0, image: vec![0.0; limit] }
+    }
+
+    /// Rows, which are also columns.
+    pub(super) fn size(&self) -> usize {
+        self.size
+    }
+
+    /// Row `index` from the diagonal on.
+    pub(super) fn tail(&self, index: usize) -> &[f64] {
+        &self.entries[index * self.stride..][index..self.size]
+    }
+
+    /// Sum of squares: the energy tracked, times the total weight.
+    pub(super) fn energy(&self) -> f64 {
+        (0..self.size).map(|row| self.tail(row).iter().map(|entry| entry * entry).sum::<f64>()).sum()
+    }
+
+    /// Multiplies all by `factor`, at most 1, and lets vanish what has decayed out of range.
+    pub(super) fn decay(&mut self, factor: f64) {
+        for row in 0..self.size {
+            for entry in &mut self.entries[row * self.stride..][row..self.size] {
+                let value = *entry * factor;
+                *entry = if value.abs() < VANISHED { 0.0 } else { value };
+            }
+        }
+    }
+
+    /// Takes in one more row, `size` entries, which is used up: `R^T R` gains its square.
+    pub(super) fn append(&mut self, row: &mut [f64]) {
+        for index in 0..self.size {
+            let pivot = &mut self.entries[index * self.stride..][index..self.size];
+            let rest = &mut row[index..self.size];
+            if rest[0] == 0.0 {
+                continue;
+            }
+            let (c, s, norm) = rotation(pivot[0], rest[0]);
+            pivot[0] = norm;
+            turn(&mut pivot[1..], &mut rest[1..], c, s);
+        }
+    }
+
+    /// Takes in one more row that reaches into one more column: `size + 1` entries, which are used up.
+    pub(super) fn border(&mut self, row: &mut [f64]) {
+        let last = self.size;
+        self.size += 1;
+        for index in 0..self.size {
+            self.entries[index * self.stride + last] = 0.0;
+        }
+        self.append(row);
+    }
+
+    /// `R x`.
+    pub(super) fn apply(&self, x: &[f64], image: &mut [f64]) {
+        for (index, out) in image[..self.size].iter_mut().enumerate() {
+            *out = self.tail(index).iter().zip(&x[index..]).map(|(a, b)| a * b).sum();
+        }
+    }
+
+    /// Columns reflected by `I - 2 u u^T`, the last of them cut off, rows rotated back to triangular form.
+    ///
+    /// The reflected matrix is `R - 2 (R u) u^T`: one sweep of rotations from below turns `R u` into a multiple of the
+    /// first unit vector and leaves one diagonal below the main one, the rank-one change then touches the first
+    /// row only, and a second sweep from above clears that diagonal. About `9 k^2` flops.
+    pub(super) fn cut(&mut self, u: &[f64]) {
+        let mut image = std::mem::take(&mut self.image);
+        self.apply(u, &mut image);
+        let kept = self.size - 1;
+        for index in (0..kept).rev() {
+            if image[index + 1] == 0.0 {
+                self.entries[(index + 1) * self.stride + index] = 0.0;
+                continue;
+            }
+            let (c, s, norm) = rotation(image[index], image[index + 1]);
+            image[index] = norm;
+            let (upper, lower) = self.pair(index, kept);
+            lower[0] = 0.0;
+            turn(upper, lower, c, s);
+        }
+        for (entry, &last) in self.entries[..kept].iter_mut().zip(u) {
+            *entry -= 2.0 * image[0] * last;
+        }
+        self.image = image;
+        for index in 0..kept {
+            let (upper, lower) = self.pair(index, kept);
+            if lower[0] == 0.0 {
+                continue;
+            }
+            let (c, s, norm) = rotation(upper[0], lower[0]);
+            (upper[0], lower[0]) = (norm, 0.0);
+            turn(&mut upper[1..], &mut lower[1..], c, s);
+        }
+        self.size = kept;
+    }
+
+    /// Rows `index` and the next, columns `index` to `columns`.
+    fn pair(&mut self, index: usize, columns: usize) -> (&mut [f64], &mut [f64]) {
+        let (head, rest) = self.entries[index * self.stride..].split_at_mut(self.stride);
+        (&mut head[index..columns], &mut rest[index..columns])
+    }
+}
+
+/// Cosine, sine and norm of the rotation that turns `(a, b)` into `(norm, 0)`; `b` is not zero.
+fn rotation(a: f64, b: f64) -> (f64, f64, f64) {
+    let norm = (a * a + b * b).sqrt();
+    if norm < VANISHED {
+        let norm = a.hypot(b);
+        return (a / norm, b / norm, norm);
+    }
+    let scale = norm.recip();
+    (a * scale, b * scale, norm)
+}
+
+/// `(x, y) <- (c x + s y, c y - s x)`.
+fn turn(x: &mut [f64], y: &mut [f64], c: f64, s: f64) {
+    for (a, b) in x.iter_mut().zip(y) {
+        let (first, second) = (*a, *b);
+        *a = c * first + s * second;
+        *b = c * second - s * first;
+    }
+}
