@@ -3,7 +3,7 @@ from typing import Literal, final
 import numpy as np
 from numpy.typing import ArrayLike, DTypeLike, NDArray
 
-__all__ = ["Basis", "Step", "__version__", "kernel_path"]
+__all__ = ["Basis", "Step", "Tracker", "__version__", "kernel_path"]
 
 __version__: str
 
@@ -276,3 +276,207 @@ class Basis:
         """The most vectors it can hold."""
 
     def __len__(self) -> int: ...
+
+@final
+class Tracker:
+    """A subspace that follows a stream of rows, one at a time, at constant cost.
+
+    It keeps the weighted mean and a factor of the weighted scatter of all rows learned, each row worth ``1 - 1/memory``
+    less a tick. More directions are tracked than reported: one that grows is seen coming, and truncation costs little;
+    `certificate` says how much at most.
+
+    Parameters
+    ----------
+    channels : int
+        Entries a row.
+    rank : int
+        Principal axes reported, 1 to `channels`.
+    memory : float, optional
+        Time constant of forgetting, in rows. Without it nothing is forgotten and the answer is that of the whole batch.
+    center : bool
+        Whether the weighted mean is tracked and taken off.
+    guard : int, optional
+        Directions tracked beyond `rank`. Default: as many again, at least 8, and never more than there are.
+    dtype : {"float64", "float32"}
+        Type the directions are stored in. Arithmetic, mean and energies are float64 in either case.
+
+    Raises
+    ------
+    ValueError
+        Where `rank`, `guard` or `memory` is out of its range.
+    TypeError
+        Where `dtype` is neither of the two.
+    """
+
+    def __new__(
+        cls,
+        channels: int,
+        rank: int,
+        *,
+        memory: float | None = None,
+        center: bool = True,
+        guard: int | None = None,
+        dtype: DTypeLike = "float64",
+    ) -> Tracker: ...
+    def update(self, row: ArrayLike, weight: float = 1.0, *, elapsed: float = 1.0) -> bool:
+        """Learn one row; ``12 * (rank + guard) * channels`` flops.
+
+        Parameters
+        ----------
+        row : array_like, shape (channels,)
+            Real numbers; NaN is a gap, filled by the model's own value. Neither modified nor kept.
+        weight : float
+            What the row counts, 0 or more. 0 learns nothing and forgets nothing.
+        elapsed : float
+            Ticks since the row before: what was learned decays by as many.
+
+        Returns
+        -------
+        bool
+            False where the row was skipped: a weight of 0, or too few channels observed (`skipped` counts those).
+
+        Raises
+        ------
+        ValueError
+            Wrong length, an infinite entry, `weight` or `elapsed` negative or not finite.
+        TypeError
+            Entries that are not real numbers.
+        """
+
+    def update_rows(self, rows: ArrayLike) -> None:
+        """Learn many rows, one tick each; the interpreter is released meanwhile.
+
+        Parameters
+        ----------
+        rows : array_like, shape (n, channels)
+            One row a tick, NaN a gap.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `update`, naming the row; then nothing has been learned.
+        """
+
+    def split(self, row: ArrayLike) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Split a row, less the mean, against the axes as they stand, without learning.
+
+        Parameters
+        ----------
+        row : array_like, shape (channels,)
+            Real numbers; NaN is a gap.
+
+        Returns
+        -------
+        coefficients : ndarray, shape (rank,)
+            On the axes; fitted to the observed channels where there are gaps.
+        residual : ndarray, shape (channels,)
+            What the axes do not explain; 0 in a gap.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `update`.
+        """
+
+    def residual_norm(self, row: ArrayLike) -> float:
+        """Norm of the residual of `split`, times ``sqrt(channels / observed)`` where there are gaps."""
+
+    def reconstruct(self, row: ArrayLike) -> NDArray[np.float64]:
+        """Give the model's own value of a row, shape (channels,): the mean, and what the axes make of the rest."""
+
+    def angles(self, other: Tracker) -> NDArray[np.float64]:
+        """Principal angles between the reported subspaces of two trackers, in radians, ascending.
+
+        They mean something where `gap` of both is well above 0.
+
+        Raises
+        ------
+        ValueError
+            Where the channels differ in number.
+        """
+
+    def certificate(self) -> tuple[NDArray[np.float64], float | None]:
+        """Bound what truncation can have cost.
+
+        Returns
+        -------
+        energies : ndarray, shape (rank,)
+            Upper bounds: the exact weighted energies lie between `energies` and these.
+        angle : float or None
+            Upper bound, in radians, on the largest angle between the reported subspace and the exact weighted one
+            (Davis and Kahan 1970); None where the eigengap is too small for a bound.
+        """
+
+    def merge(self, other: Tracker) -> None:
+        """Take in all that another tracker has learned, both decayed to the later clock.
+
+        Parameters
+        ----------
+        other : Tracker
+            With the same channels, rank, memory, centring and dtype.
+
+        Raises
+        ------
+        ValueError
+            Where one of those differs.
+        """
+
+    def orthogonality_error(self) -> float:
+        """Spectral norm of ``I - Q Q^T`` of the tracked directions, computed now."""
+
+    def copy(self) -> Tracker:
+        """Copy the tracker; the two go separate ways."""
+
+    def __copy__(self) -> Tracker: ...
+    def __deepcopy__(self, _memo: object, /) -> Tracker: ...
+    @property
+    def axes(self) -> NDArray[np.float64] | NDArray[np.float32]:
+        """Principal axes, shape (rank, channels), a copy; signs and order held from call to call."""
+
+    @property
+    def energies(self) -> NDArray[np.float64]:
+        """Weighted variances along the axes, shape (rank,), descending."""
+
+    @property
+    def mean(self) -> NDArray[np.float64]:
+        """Weighted mean, shape (channels,)."""
+
+    @property
+    def noise_energy(self) -> float:
+        """Weighted variance outside the reported axes, all channels together."""
+
+    @property
+    def explained(self) -> float:
+        """Share of the variance along the reported axes."""
+
+    @property
+    def gap(self) -> float:
+        """Relative eigengap below the last reported axis; near 0 its direction, and any angle, means nothing."""
+
+    @property
+    def samples(self) -> int:
+        """Rows learned."""
+
+    @property
+    def skipped(self) -> int:
+        """Rows skipped for their gaps."""
+
+    @property
+    def total_weight(self) -> float:
+        """Sum of the weights of the rows learned, each decayed to now."""
+
+    @property
+    def channels(self) -> int:
+        """Entries a row."""
+
+    @property
+    def rank(self) -> int:
+        """Axes reported."""
+
+    @property
+    def guard(self) -> int:
+        """Directions tracked beyond those."""
+
+    @property
+    def memory(self) -> float | None:
+        """Time constant of forgetting, in rows."""

@@ -1,16 +1,14 @@
 //! `perpend.Basis`.
 
-use std::sync::{Mutex, PoisonError};
-
 use numpy::PyArray1;
 use pyo3::prelude::*;
-use pyo3::sync::MutexExt;
 
 use super::convert::{Array1, Array2, Stored, array_of_rows, block, matrix, row};
 use super::errors::fenced;
+use super::guarded::Guarded;
 use super::step::Step;
+use crate::Scalar;
 use crate::basis::{Basis, Tolerance};
-use crate::{Error, Scalar};
 
 /// A basis in one of the stored types.
 #[derive(Clone)]
@@ -32,7 +30,7 @@ macro_rules! either {
 /// The growing orthonormal basis; see `_core.pyi` for the documentation.
 #[pyclass(frozen, module = "perpend", name = "Basis")]
 pub(super) struct PyBasis {
-    inner: Mutex<Inner>,
+    inner: Guarded<Inner>,
 }
 
 /// The tolerance argument: nothing, a relative one, or a pair of a relative and an absolute one.
@@ -40,25 +38,6 @@ pub(super) struct PyBasis {
 enum ToleranceArgument {
     Relative(f64),
     Both(f64, f64),
-}
-
-impl PyBasis {
-    /// Runs `call` on the basis, alone: calls from several threads take turns.
-    fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
-        let mut inner = self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
-        fenced(|| call(&mut inner))
-    }
-
-    /// The same without the interpreter: for work long enough that other threads should go on meanwhile.
-    fn alone<R>(&self, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
-        let mut inner = self.inner.lock().unwrap_or_else(PoisonError::into_inner);
-        fenced(|| call(&mut inner))
-    }
-
-    /// Reads something that cannot fail.
-    fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&Inner) -> R) -> R {
-        call(&self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
-    }
 }
 
 /// Makes a basis of one type.
@@ -87,13 +66,13 @@ impl PyBasis {
             Stored::Float64 => Inner::Float64(make(dim, capacity, tolerance)?),
             Stored::Float32 => Inner::Float32(make(dim, capacity, tolerance)?),
         };
-        Ok(Self { inner: Mutex::new(inner) })
+        Ok(Self { inner: Guarded::new(inner) })
     }
 
     fn add(&self, vector: &Bound<'_, PyAny>) -> PyResult<Step> {
         let vector = row(vector)?;
         let entries = vector.entries()?;
-        self.with(vector.py(), |inner| {
+        self.inner.with(vector.py(), |inner| {
             either!(inner, basis => {
                 let step = basis.add(entries)?;
                 Ok(Step::new(step, &basis.coefficients()[..step.rank]))
@@ -105,7 +84,7 @@ impl PyBasis {
         let vector = row(vector)?;
         let entries = vector.entries()?;
         let py = vector.py();
-        self.with(py, |inner| {
+        self.inner.with(py, |inner| {
             either!(inner, basis => {
                 basis.split(entries)?;
                 let coefficients = PyArray1::from_slice(py, basis.coefficients());
@@ -117,17 +96,19 @@ impl PyBasis {
     fn residual_norm(&self, vector: &Bound<'_, PyAny>) -> PyResult<f64> {
         let vector = row(vector)?;
         let entries = vector.entries()?;
-        self.with(vector.py(), |inner| either!(inner, basis => Ok(basis.split(entries)?.residual_norm)))
+        self.inner.with(vector.py(), |inner| either!(inner, basis => Ok(basis.split(entries)?.residual_norm)))
     }
 
     fn add_rows<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, bool>, Array1<'py, f64>)> {
         let py = rows.py();
         let block = block(rows)?;
         let (entries, count) = block.of(self.dim(py))?;
-        self.with(py, |inner| either!(inner, basis => basis.check_rows(entries)))?;
+        self.inner.with(py, |inner| either!(inner, basis => basis.check_rows(entries)))?;
         let mut steps = Vec::with_capacity(count);
         for piece in block.pieces(entries) {
-            py.detach(|| self.alone(|inner| either!(inner, basis => basis.add_rows(piece, &mut steps))))?;
+            py.detach(|| {
+                self.inner.alone(|inner| either!(inner, basis => basis.add_rows(piece, &mut steps)))
+            })?;
             py.check_signals()?;
         }
         let accepted = steps.iter().map(crate::basis::Step::accepted).collect();
@@ -142,7 +123,7 @@ impl PyBasis {
         let (entries, count) = block.of(dim)?;
         let (mut coefficients, mut residuals) = (Vec::new(), Vec::with_capacity(entries.len()));
         for (index, row) in entries.chunks_exact(dim).enumerate() {
-            self.with(py, |inner| {
+            self.inner.with(py, |inner| {
                 either!(inner, basis => {
                     basis.split(row).map_err(|error| error.in_row(index))?;
                     coefficients.extend_from_slice(basis.coefficients());
@@ -158,15 +139,15 @@ impl PyBasis {
     fn angles<'py>(&self, other: &Bound<'py, Self>) -> PyResult<Array1<'py, f64>> {
         let py = other.py();
         // A copy of the other, so that two locks are never held together.
-        let other = other.get().read(py, Inner::clone);
-        let angles = self.with(py, |inner| {
+        let other = other.get().inner.read(py, Inner::clone);
+        let angles = self.inner.with(py, |inner| {
             either!(inner, a => either!(&other, b => crate::principal_angles(a.vectors(), b.vectors())))
         })?;
         Ok(PyArray1::from_vec(py, angles))
     }
 
     fn __copy__(&self, py: Python<'_>) -> Self {
-        Self { inner: Mutex::new(self.read(py, Inner::clone)) }
+        Self { inner: Guarded::new(self.inner.read(py, Inner::clone)) }
     }
 
     fn __deepcopy__(&self, py: Python<'_>, _memo: &Bound<'_, PyAny>) -> Self {
@@ -178,52 +159,53 @@ impl PyBasis {
     }
 
     fn drop(&self, py: Python<'_>, index: usize) -> PyResult<()> {
-        self.with(py, |inner| either!(inner, basis => basis.drop(index)))
+        self.inner.with(py, |inner| either!(inner, basis => basis.drop(index)))
     }
 
     fn solve<'py>(&self, target: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, f64)> {
         let target = row(target)?;
         let entries = target.entries()?;
         let py = target.py();
-        self.with(py, |inner| {
+        self.inner.with(py, |inner| {
             let solution = either!(inner, basis => basis.solve(entries))?;
             Ok((PyArray1::from_vec(py, solution.weights), solution.residual_norm))
         })
     }
 
     fn condition(&self, py: Python<'_>) -> PyResult<f64> {
-        self.with(py, |inner| either!(inner, basis => basis.condition()))
+        self.inner.with(py, |inner| either!(inner, basis => basis.condition()))
     }
 
     fn orthogonality_error(&self, py: Python<'_>) -> PyResult<f64> {
-        self.with(py, |inner| either!(inner, basis => basis.orthogonality_error()))
+        self.inner.with(py, |inner| either!(inner, basis => basis.orthogonality_error()))
     }
 
     #[getter]
     fn vectors<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyAny>> {
-        self.read(py, |inner| either!(inner, basis => Ok(array_of_rows(py, basis.vectors())?.into_any())))
+        self.inner
+            .read(py, |inner| either!(inner, basis => Ok(array_of_rows(py, basis.vectors())?.into_any())))
     }
 
     #[getter]
     fn triangular<'py>(&self, py: Python<'py>) -> PyResult<Array2<'py, f64>> {
         let (dense, rank) =
-            self.read(py, |inner| either!(inner, basis => (basis.triangular(), basis.rank())));
+            self.inner.read(py, |inner| either!(inner, basis => (basis.triangular(), basis.rank())));
         matrix(py, dense, rank, rank)
     }
 
     #[getter]
     fn rank(&self, py: Python<'_>) -> usize {
-        self.read(py, |inner| either!(inner, basis => basis.rank()))
+        self.inner.read(py, |inner| either!(inner, basis => basis.rank()))
     }
 
     #[getter]
     fn dim(&self, py: Python<'_>) -> usize {
-        self.read(py, |inner| either!(inner, basis => basis.dim()))
+        self.inner.read(py, |inner| either!(inner, basis => basis.dim()))
     }
 
     #[getter]
     fn capacity(&self, py: Python<'_>) -> usize {
-        self.read(py, |inner| either!(inner, basis => basis.capacity()))
+        self.inner.read(py, |inner| either!(inner, basis => basis.capacity()))
     }
 
     fn __len__(&self, py: Python<'_>) -> usize {
@@ -231,7 +213,7 @@ impl PyBasis {
     }
 
     fn __repr__(&self, py: Python<'_>) -> String {
-        self.read(py, |inner| {
+        self.inner.read(py, |inner| {
             either!(inner, basis => {
                 format!("Basis(dim={}, capacity={}, rank={})", basis.dim(), basis.capacity(), basis.rank())
             })

@@ -3,7 +3,9 @@
 mod basis;
 mod convert;
 mod errors;
+mod guarded;
 mod step;
+mod tracker;
 
 use pyo3::prelude::*;
 
@@ -18,6 +20,8 @@ mod _core {
     use super::basis::PyBasis;
     #[pymodule_export]
     use super::step::Step;
+    #[pymodule_export]
+    use super::tracker::PyTracker;
 
     /// Name of the instruction set in use.
     #[pyfunction]

@@ -27,8 +27,8 @@ impl<T: Scalar> Tracker<T> {
     pub fn certificate(&mut self) -> Result<Certificate, Error> {
         self.refresh()?;
         let lost = self.lost * self.per_weight();
-        let last = self.energies().last().copied().unwrap_or(0.0);
-        let gap = last - self.guard_energies().first().copied().unwrap_or(0.0);
+        let weakest = self.energies().last().copied().unwrap_or(0.0);
+        let gap = weakest - self.guard_energies().first().copied().unwrap_or(0.0);
         let sine = (gap > lost).then(|| lost / (gap - lost)).filter(|&sine| sine <= 1.0);
         Ok(Certificate { lost, sine })
     }

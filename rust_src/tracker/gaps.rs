@@ -159,4 +159,26 @@ impl<T: Scalar> Tracker<T> {
         let residual_norm_squared = scale * ops::norm_squared(residual);
         Ok(Split { residual_norm_squared, missing, determined })
     }
+
+    /// The model's own value of a row: the mean, and what the reported axes give of the rest; gaps are filled.
+    ///
+    /// # Errors
+    /// As [`Tracker::split_into`].
+    pub fn reconstruct_into(&mut self, row: &[f64], value: &mut [f64]) -> Result<(), Error> {
+        self.check(row)?;
+        self.refresh()?;
+        let d = &mut self.room.d;
+        for ((d, mean), entry) in d.iter_mut().zip(&self.mean).zip(row) {
+            *d = entry - mean;
+        }
+        let axes = self.principal.axes();
+        self.gaps.fill(d, axes);
+        let coefficients = &mut self.gaps.coefficients;
+        ops::project(axes, d, coefficients);
+        for c in &mut *coefficients {
+            *c = -*c;
+        }
+        ops::subtract(axes, coefficients, &self.mean, value);
+        Ok(())
+    }
 }

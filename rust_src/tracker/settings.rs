@@ -39,7 +39,8 @@ impl Settings {
     pub fn kept(&self, elapsed: f64) -> f64 {
         match self.memory {
             None => 1.0,
-            Some(memory) if elapsed == 1.0 => 1.0 - memory.recip(),
+            // The usual tick, without the transcendental functions.
+            Some(memory) if elapsed.to_bits() == 1f64.to_bits() => 1.0 - memory.recip(),
             Some(memory) => (elapsed * (-memory.recip()).ln_1p()).exp(),
         }
     }

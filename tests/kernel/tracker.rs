@@ -121,8 +121,8 @@ fn the_exact_answer_lies_within_the_certificate() {
             assert!(*got <= exact + slack && *exact <= got + certificate.lost + slack);
         }
         // The trace of what is lacking is what was given up.
-        let tracked = tracker.total_energy() - certificate.lost;
-        let lacking = energies.iter().sum::<f64>() - tracked;
+        let held = tracker.total_energy() - certificate.lost;
+        let lacking = energies.iter().sum::<f64>() - held;
         assert!((lacking - certificate.lost).abs() <= 1e-9 * lacking.max(energies[0]));
         if let Some(sine) = certificate.sine {
             let mut exact = perpend::RowStore::<f64>::zeros(3, channels);
@@ -157,7 +157,9 @@ fn gaps_are_filled_by_least_squares_on_the_observed_channels() {
     tracker.refresh().unwrap();
     for gaps in [vec![4], vec![0, 5], vec![1, 2, 3, 7, 8, 9]] {
         let mut row = training[299].clone();
-        gaps.iter().for_each(|&gap| row[gap] = f64::NAN);
+        for &gap in &gaps {
+            row[gap] = f64::NAN;
+        }
         let (mut c, mut residual) = (vec![0.0; rank], vec![0.0; channels]);
         let split = tracker.split_into(&row, &mut c, &mut residual).unwrap();
         assert!(split.determined && split.missing == gaps.len());

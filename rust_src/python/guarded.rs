@@ -1,0 +1,35 @@
+//! One object, many threads: calls take turns, and a panic stays inside.
+
+use std::sync::{Mutex, PoisonError};
+
+use pyo3::prelude::*;
+use pyo3::sync::MutexExt;
+
+use super::errors::fenced;
+use crate::Error;
+
+/// A kernel object that is worked on by one call at a time.
+pub(super) struct Guarded<T>(Mutex<T>);
+
+impl<T> Guarded<T> {
+    pub fn new(object: T) -> Self {
+        Self(Mutex::new(object))
+    }
+
+    /// Runs `call` on the object, holding the interpreter: for work too short to let it go.
+    pub fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut T) -> Result<R, Error>) -> PyResult<R> {
+        let mut object = self.0.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
+        fenced(|| call(&mut object))
+    }
+
+    /// The same without the interpreter: for work long enough that other threads should go on meanwhile.
+    pub fn alone<R>(&self, call: impl FnOnce(&mut T) -> Result<R, Error>) -> PyResult<R> {
+        let mut object = self.0.lock().unwrap_or_else(PoisonError::into_inner);
+        fenced(|| call(&mut object))
+    }
+
+    /// Reads something that cannot fail.
+    pub fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&T) -> R) -> R {
+        call(&self.0.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
+    }
+}
