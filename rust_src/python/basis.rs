@@ -3,7 +3,7 @@
 use numpy::PyArray1;
 use pyo3::prelude::*;
 
-use super::convert::{Array1, Array2, Stored, array_of_rows, block, matrix, row};
+use super::convert::{Array1, Array2, Count, Stored, array_of_rows, block, matrix, row};
 use super::errors::fenced;
 use super::guarded::Guarded;
 use super::step::Step;
@@ -53,11 +53,12 @@ impl PyBasis {
         text_signature = "(dim, capacity=None, *, dtype='float64', tolerance=None)"
     )]
     fn new(
-        dim: usize,
-        capacity: Option<usize>,
+        dim: Count,
+        capacity: Option<Count>,
         dtype: Stored,
         tolerance: Option<ToleranceArgument>,
     ) -> PyResult<Self> {
+        let (dim, capacity) = (dim.0, capacity.map(|capacity| capacity.0));
         let tolerance = tolerance.map(|argument| match argument {
             ToleranceArgument::Relative(relative) => Tolerance { relative, absolute: 0.0 },
             ToleranceArgument::Both(relative, absolute) => Tolerance { relative, absolute },
@@ -158,8 +159,8 @@ impl PyBasis {
         self.__copy__(py)
     }
 
-    fn drop(&self, py: Python<'_>, index: usize) -> PyResult<()> {
-        self.inner.with(py, |inner| either!(inner, basis => basis.drop(index)))
+    fn drop(&self, py: Python<'_>, index: Count) -> PyResult<()> {
+        self.inner.with(py, |inner| either!(inner, basis => basis.drop(index.0)))
     }
 
     fn solve<'py>(&self, target: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, f64)> {

@@ -4,7 +4,7 @@
 //! as real numbers (lists, strided, byte-swapped, other widths, objects with `__array__`) is copied once.
 
 use numpy::{PyArray1, PyArray2, PyArrayMethods, PyReadonlyArray1, PyReadonlyArray2, PyUntypedArrayMethods};
-use pyo3::exceptions::{PyTypeError, PyValueError};
+use pyo3::exceptions::{PyOverflowError, PyTypeError, PyValueError};
 use pyo3::prelude::*;
 use pyo3::sync::PyOnceLock;
 use pyo3::types::PyString;
@@ -151,6 +151,24 @@ impl<'py> FromPyObject<'_, 'py> for Stored {
             "float64" => Ok(Self::Float64),
             "float32" => Ok(Self::Float32),
             other => Err(PyTypeError::new_err(format!("expected float64 or float32, got {other}"))),
+        }
+    }
+}
+
+/// A count or an index: a whole number, 0 or more.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Count(pub usize);
+
+impl<'py> FromPyObject<'_, 'py> for Count {
+    type Error = PyErr;
+
+    fn extract(object: Borrowed<'_, 'py, PyAny>) -> PyResult<Self> {
+        match object.extract::<usize>() {
+            Ok(count) => Ok(Self(count)),
+            Err(error) if error.is_instance_of::<PyOverflowError>(object.py()) => Err(PyValueError::new_err(
+                format!("expected a whole number, 0 or more, got {}", object.str()?),
+            )),
+            Err(error) => Err(error),
         }
     }
 }

@@ -3,7 +3,7 @@
 use numpy::PyArray1;
 use pyo3::prelude::*;
 
-use super::convert::{Array1, Stored, array_of_rows, block, row};
+use super::convert::{Array1, Count, Stored, array_of_rows, block, row};
 use super::errors::fenced;
 use super::guarded::Guarded;
 use crate::Error;
@@ -71,14 +71,15 @@ impl PyTracker {
         text_signature = "(channels, rank, *, memory=None, center=True, guard=None, dtype='float64')"
     )]
     fn new(
-        channels: usize,
-        rank: usize,
+        channels: Count,
+        rank: Count,
         memory: Option<f64>,
         center: bool,
-        guard: Option<usize>,
+        guard: Option<Count>,
         dtype: Stored,
     ) -> PyResult<Self> {
-        let settings = Settings { channels, rank, memory, center, guard };
+        let guard = guard.map(|guard| guard.0);
+        let settings = Settings { channels: channels.0, rank: rank.0, memory, center, guard };
         let inner = fenced(|| {
             Ok(match dtype {
                 Stored::Float64 => Inner::Float64(Tracker::new(settings)?),
