@@ -29,6 +29,11 @@ pub enum Error {
         /// What has that norm.
         what: &'static str,
     },
+    /// The memory asked for cannot be had.
+    Memory {
+        /// How much was asked for; a number, since it may exceed any integer.
+        bytes: f64,
+    },
     /// A parameter is outside its range.
     Parameter {
         /// Its name.
@@ -79,6 +84,7 @@ impl fmt::Display for Error {
                 write!(f, "{what}: expected finite entries, got {value} at index {index}")
             }
             Self::Overflow { what } => write!(f, "{what}: its norm exceeds the largest float64"),
+            Self::Memory { bytes } => write!(f, "{bytes:.3e} bytes of memory cannot be had"),
             Self::Parameter { name, expected, got } => write!(f, "{name}: expected {expected}, got {got}"),
             Self::Unlike { what, expected, got } => {
                 write!(f, "{what} differs: expected {expected}, got {got}")

@@ -20,6 +20,7 @@ mod angles;
 pub mod basis;
 pub mod dense;
 mod error;
+mod memory;
 pub mod ops;
 mod orthonormal;
 mod rows;

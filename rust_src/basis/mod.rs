@@ -21,6 +21,7 @@ pub(crate) use orthogonalize::{Measured, clean};
 pub use solve::Solution;
 
 use crate::error::Error;
+use crate::memory::check_room;
 use crate::orthonormal::{Mender, orthogonality_error};
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
@@ -77,7 +78,8 @@ impl<T: Scalar> Basis<T> {
     /// allocates nothing from here on; without, it grows as needed, to `dim` at most.
     ///
     /// # Errors
-    /// [`Error::Parameter`] where `dim` is 0, `capacity` exceeds it, or a tolerance is negative or not a number.
+    /// [`Error::Parameter`] where `dim` is 0, `capacity` exceeds it, or a tolerance is negative or not a number;
+    /// [`Error::Memory`].
     pub fn new(dim: usize, capacity: Option<usize>, tolerance: Option<Tolerance>) -> Result<Self, Error> {
         if dim == 0 {
             return Err(Error::Parameter { name: "dim", expected: "at least 1".into(), got: "0".into() });
@@ -100,6 +102,8 @@ impl<T: Scalar> Basis<T> {
             }
         }
         let room = capacity.unwrap_or(FIRST_ROWS.min(dim));
+        // Rows, triangle and workspace.
+        check_room(dim.saturating_add(room), room.saturating_add(4))?;
         Ok(Self {
             q: RowStore::zeros(room, dim),
             r: Triangular::with_capacity(room),

@@ -176,7 +176,8 @@ pub(crate) fn clean<T: Scalar>(
 
 /// Euclidean norm of a few coefficients.
 pub(super) fn norm_of(x: &[f64]) -> f64 {
-    x.iter().map(|x| x * x).sum::<f64>().sqrt()
+    // Not `sum`: that of nothing is -0.
+    x.iter().fold(0.0, |sum, x| sum + x * x).sqrt()
 }
 
 /// Refuses what [`Basis::add`] refuses of the entries of a vector.

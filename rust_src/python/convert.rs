@@ -1,9 +1,13 @@
 //! Arrays in, arrays out.
 //!
-//! A contiguous row of `float64` in native byte order is read where it lies. Anything else that NumPy can read
+//! A contiguous row of `float64` in native byte order is read where it lies; not a subclass of arrays, which may
+//! carry a mask. Anything else that NumPy can read
 //! as real numbers (lists, strided, byte-swapped, other widths, objects with `__array__`) is copied once.
 
-use numpy::{PyArray1, PyArray2, PyArrayMethods, PyReadonlyArray1, PyReadonlyArray2, PyUntypedArrayMethods};
+use numpy::{
+    PyArray1, PyArray2, PyArrayMethods, PyReadonlyArray1, PyReadonlyArray2, PyUntypedArray,
+    PyUntypedArrayMethods,
+};
 use pyo3::exceptions::{PyOverflowError, PyTypeError, PyValueError};
 use pyo3::prelude::*;
 use pyo3::sync::PyOnceLock;
@@ -33,7 +37,8 @@ impl<'py> Row<'py> {
 
 /// Reads `object` as one row of numbers.
 pub(super) fn row<'py>(object: &Bound<'py, PyAny>) -> PyResult<Row<'py>> {
-    if let Ok(array) = object.cast::<PyArray1<f64>>()
+    if object.is_exact_instance_of::<PyUntypedArray>()
+        && let Ok(array) = object.cast::<PyArray1<f64>>()
         && array.is_contiguous()
         && array.is_aligned()
     {
@@ -76,7 +81,8 @@ impl Block<'_> {
 
 /// Reads `object` as rows of numbers.
 pub(super) fn block<'py>(object: &Bound<'py, PyAny>) -> PyResult<Block<'py>> {
-    if let Ok(array) = object.cast::<PyArray2<f64>>()
+    if object.is_exact_instance_of::<PyUntypedArray>()
+        && let Ok(array) = object.cast::<PyArray2<f64>>()
         && array.is_c_contiguous()
         && array.is_aligned()
     {

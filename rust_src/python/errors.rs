@@ -3,7 +3,7 @@
 use std::panic::{AssertUnwindSafe, catch_unwind};
 
 use pyo3::PyErr;
-use pyo3::exceptions::{PyRuntimeError, PyValueError};
+use pyo3::exceptions::{PyMemoryError, PyRuntimeError, PyValueError};
 
 use crate::Error;
 
@@ -17,6 +17,7 @@ impl From<Error> for PyErr {
             | Error::Parameter { .. }
             | Error::Unlike { .. }
             | Error::InRow { .. } => PyValueError::new_err(message),
+            Error::Memory { .. } => PyMemoryError::new_err(message),
             Error::NoConvergence { .. } => PyRuntimeError::new_err(message),
         }
     }

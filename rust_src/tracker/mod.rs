@@ -34,6 +34,7 @@ pub use settings::Settings;
 pub use update::{Skipped, Update};
 
 use crate::error::Error;
+use crate::memory::check_room;
 use crate::orthonormal::{Mender, orthogonality_error};
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
@@ -72,10 +73,15 @@ impl<T: Scalar> Tracker<T> {
     /// A tracker that has learned nothing.
     ///
     /// # Errors
-    /// [`Error::Parameter`] naming the setting that is out of its range.
+    /// [`Error::Parameter`] naming the setting that is out of its range; [`Error::Memory`].
     pub fn new(settings: Settings) -> Result<Self, Error> {
         settings.check()?;
         let (channels, limit) = (settings.channels, settings.directions());
+        // Directions, axes and workspace; the factor and what searches it.
+        check_room(
+            channels.saturating_add(4 * limit),
+            limit.saturating_add(settings.rank).saturating_add(8),
+        )?;
         Ok(Self {
             settings,
             q: RowStore::zeros(limit, channels),
