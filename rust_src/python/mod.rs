@@ -4,8 +4,10 @@ mod basis;
 mod convert;
 mod errors;
 mod guarded;
+mod reading;
 mod step;
 mod tracker;
+mod watch;
 
 use pyo3::prelude::*;
 
@@ -19,9 +21,13 @@ mod _core {
     #[pymodule_export]
     use super::basis::PyBasis;
     #[pymodule_export]
+    use super::reading::PyReading;
+    #[pymodule_export]
     use super::step::Step;
     #[pymodule_export]
     use super::tracker::PyTracker;
+    #[pymodule_export]
+    use super::watch::PyWatch;
 
     /// Name of the instruction set in use.
     #[pyfunction]
