@@ -1,4 +1,5 @@
-from typing import Literal, final
+from collections.abc import Sequence
+from typing import Any, Literal, TypedDict, final
 
 import numpy as np
 from numpy.typing import ArrayLike, DTypeLike, NDArray
@@ -276,3 +277,224 @@ class Basis:
         """The most vectors it can hold."""
 
     def __len__(self) -> int: ...
+
+Phase = Literal["settling", "healthy", "exceeding", "alarmed", "adopting"]
+Exceeded = Literal["spe", "t2", "spe_smooth", "t2_smooth"]
+
+class Event(TypedDict):
+    """One alarm, from on to off. Ticks count from 0 over the whole life of the watch."""
+
+    start: int
+    end: int | None
+    peak: int
+    peak_ratio: float
+    exceeds: tuple[Exceeded, ...]
+    suspects: list[tuple[str, float]]
+
+@final
+class Reading:
+    """What one tick found: a value, it does not change when the watch goes on."""
+
+    @property
+    def tick(self) -> int:
+        """Number of the tick, from 0."""
+
+    @property
+    def phase(self) -> Phase:
+        """Where the watch stands after this row."""
+
+    @property
+    def alarm(self) -> bool:
+        """Whether the alarm is on."""
+
+    @property
+    def spe(self) -> float:
+        """Squared residual of the row, in squared spreads; NaN where the row was not judged."""
+
+    @property
+    def spe_limit(self) -> float:
+        """Limit that `spe` was judged by; NaN while settling."""
+
+    @property
+    def t2(self) -> float:
+        """Hotelling T2 of the row on the principal axes; NaN where the row was not judged."""
+
+    @property
+    def t2_limit(self) -> float:
+        """Limit that `t2` was judged by; NaN while settling."""
+
+    @property
+    def spe_smooth(self) -> float:
+        """Exponentially weighted average of the standardised `spe`, in its own healthy spreads."""
+
+    @property
+    def spe_smooth_limit(self) -> float:
+        """Limit that `spe_smooth` was judged by."""
+
+    @property
+    def t2_smooth(self) -> float:
+        """Exponentially weighted average of the standardised `t2`, in its own healthy spreads."""
+
+    @property
+    def t2_smooth_limit(self) -> float:
+        """Limit that `t2_smooth` was judged by."""
+
+    @property
+    def exceeds(self) -> tuple[Exceeded, ...]:
+        """Which of the four limits this row passed."""
+
+    @property
+    def widening(self) -> float:
+        """Factor, 1 or more, by which the limits are wider for resting on few healthy rows so far."""
+
+    @property
+    def weight(self) -> float:
+        """How much of the row was learned: 1 healthy, 0 gated or frozen, between when adopting."""
+
+    @property
+    def rank(self) -> int:
+        """Principal axes in use; 0 while settling."""
+
+    @property
+    def drift(self) -> float | None:
+        """Largest principal angle from the accepted baseline, radians; None where the eigengap denies it a meaning."""
+
+    @property
+    def captured(self) -> float | None:
+        """Share of the baseline's explained energy that the present axes still capture."""
+
+    @property
+    def mean_shift(self) -> float | None:
+        """Distance of the present mean from the baseline's, in spreads of the mean's own healthy movement."""
+
+    @property
+    def missing(self) -> list[str]:
+        """Channels without a value in this row."""
+
+    @property
+    def stuck(self) -> list[str]:
+        """Channels that used to move and have not for longer than they ever stood still."""
+
+    @property
+    def vanished(self) -> list[str]:
+        """Channels that have had no value for longer than `hold` rows."""
+
+    def contributions(self) -> NDArray[np.float64]:
+        """Squared residual of each channel: shape (channels,), they sum to `spe`."""
+
+    def suspects(self, n: int = 3) -> list[tuple[str, float]]:
+        """Name the channels whose single correction would take away most of the excess.
+
+        Parameters
+        ----------
+        n : int
+            How many, at most.
+
+        Returns
+        -------
+        list of (name, share)
+            Most suspect first. The share is the part of the statistic, 0 to 1, that vanishes when this one channel is
+            replaced by what the others say of it. They are suspects: where several channels move together, or the
+            trouble is none of them, the first need not be at fault.
+        """
+
+@final
+class Watch:
+    """A monitoring loop: judges each row by what it learned from the healthy ones before it, then learns it.
+
+    Parameters
+    ----------
+    channels : int
+        Channels a row.
+    names : sequence of str, optional
+        Their names; `channel_0`, ... if not given.
+    rank : int, optional
+        Principal axes; below `channels`. Chosen when settling ends if not given.
+    memory : float or None
+        Rows after which a healthy row's weight has fallen to 1/e; None forgets nothing.
+    settle : int
+        Rows to learn units, rank and first limits from.
+    false_alarm : float
+        Share of healthy rows that may pass each limit by chance.
+    confirm, of : int
+        The alarm goes on when `confirm` of the last `of` rows exceed a limit, and off when as many do not.
+    hold : int
+        Rows beyond a limit, in succession, after which the watch adopts what it sees with bounded influence.
+    limits : {"moments", "empirical", "spectrum"}
+        Limits from the moments of healthy statistics (chi-square matched), from their streamed quantile, or from the
+        model's energies (Jackson and Mudholkar for SPE, F for T2).
+    dtype : {"float64", "float32"}
+        What rows of the model are stored in.
+    """
+
+    def __new__(
+        cls,
+        channels: int,
+        names: Sequence[str] | None = None,
+        *,
+        rank: int | None = None,
+        memory: float | None = 5000.0,
+        settle: int = 500,
+        false_alarm: float = 1e-3,
+        confirm: int = ...,
+        of: int = ...,
+        hold: int = ...,
+        limits: Literal["moments", "empirical", "spectrum"] = "moments",
+        dtype: DTypeLike = "float64",
+    ) -> Watch: ...
+    def tick(self, row: ArrayLike) -> Reading:
+        """Judge one row, then learn it as far as the gate allows. NaN is a gap; infinity is an error."""
+
+    def replay(self, rows: ArrayLike) -> dict[str, NDArray[Any]]:
+        """Tick through many rows: shape (ticks, channels).
+
+        Returns
+        -------
+        dict of arrays
+            One entry a property of `Reading`, first axis the ticks: `tick`, `phase` (str), `alarm`, `spe`, `spe_limit`, `t2`,
+            `t2_limit`, `spe_smooth`, ..., `drift` (NaN for None), `missing` (count), `contributions` (ticks, channels).
+        """
+
+    def settle_on(self, rows: ArrayLike) -> None:
+        """End settling with exactly these rows, shape (rows, channels), instead of the first `settle` of the stream."""
+
+    def freeze(self) -> None:
+        """Stop learning until `resume`; judging goes on."""
+
+    def resume(self) -> None:
+        """Learn again after `freeze`."""
+
+    def accept(self) -> None:
+        """Take the present state as the new baseline; the alarm and its counters start afresh."""
+
+    @property
+    def names(self) -> list[str]:
+        """Names of the channels."""
+
+    @property
+    def channels(self) -> int:
+        """Channels a row."""
+
+    @property
+    def phase(self) -> Phase:
+        """Where the watch stands."""
+
+    @property
+    def rank(self) -> int:
+        """Principal axes in use; 0 while settling."""
+
+    @property
+    def ticks(self) -> int:
+        """Rows judged or settled on so far."""
+
+    @property
+    def frozen(self) -> bool:
+        """Whether learning is stopped by `freeze`."""
+
+    @property
+    def constant(self) -> list[str]:
+        """Channels that did not move while settling: neither judged nor suspected until they do."""
+
+    @property
+    def events(self) -> list[Event]:
+        """The latest alarms, oldest first: a bounded list."""
