@@ -1,1 +1,4 @@
 //! The monitoring loop.
+
+pub mod limits;
+pub mod smooth;
