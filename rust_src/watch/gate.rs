@@ -1,0 +1,103 @@
+//! What may be learned.
+//!
+//! A row beyond a limit is not learned and nothing is forgotten. That alone locks up: after a change of regime every
+//! row is beyond, the model never moves, and a limit that follows only the rows it let through shrinks. So the
+//! gate counts the rows beyond; after `hold` of them it lets them in again with bounded influence, weight
+//! limit/statistic, until rows stay within the limits of themselves.
+//!
+//! The count is of rows beyond in succession, and a succession ends with `of` rows within in a row: a new regime
+//! that shows beyond the limits nine times in ten must be adopted too. While it adopts, and for [`SETTLING`] times `hold`
+//! rows after, the limits forget with time constant `hold`: else the rows met while adopting would leave
+//! them wide for a whole memory.
+
+/// How long, in `hold`s, limits forget quickly after adopting: three time constants leave 5 % of what was met.
+const SETTLING: u64 = 3;
+
+/// Counts rows beyond the limits.
+#[derive(Clone, Debug)]
+pub struct Gate {
+    hold: u64,
+    calm_needed: u64,
+    beyond: u64,
+    calm: u64,
+    recent: u64,
+}
+
+impl Gate {
+    /// Opens after `hold` rows beyond; `of` rows within end a succession.
+    #[must_use]
+    pub fn new(hold: u64, of: u64) -> Self {
+        Self { hold, calm_needed: of, beyond: 0, calm: 0, recent: 0 }
+    }
+
+    /// Takes in whether the newest row exceeds a limit; returns whether it is to be adopted.
+    pub fn take(&mut self, exceeds: bool) -> bool {
+        self.recent = self.recent.saturating_sub(1);
+        if exceeds {
+            self.beyond = (self.beyond + 1).min(self.hold + 1);
+            self.calm = 0;
+        } else {
+            self.calm = (self.calm + 1).min(self.calm_needed);
+            if self.calm == self.calm_needed {
+                self.beyond = 0;
+            }
+        }
+        let adopting = exceeds && self.beyond > self.hold;
+        if adopting {
+            self.recent = self.hold.saturating_mul(SETTLING);
+        }
+        adopting
+    }
+
+    /// Whether limits are to forget quickly.
+    #[must_use]
+    pub fn hasty(&self) -> bool {
+        self.recent > 0
+    }
+
+    /// Lets rows beyond in from the next one on: somebody has said that they are healthy.
+    pub fn open(&mut self) {
+        self.beyond = self.hold;
+    }
+
+    /// Starts counting afresh.
+    pub fn reset(&mut self) {
+        self.beyond = 0;
+        self.calm = 0;
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn nothing_is_adopted_before_hold_rows_in_succession() {
+        let mut gate = Gate::new(20, 5);
+        assert!((0..20).all(|_| !gate.take(true)));
+        assert!(gate.take(true) && gate.hasty());
+    }
+
+    #[test]
+    fn a_regime_nine_tenths_beyond_is_adopted_too() {
+        let mut gate = Gate::new(20, 5);
+        assert!((0..40).any(|row| gate.take(row % 10 != 0)));
+    }
+
+    #[test]
+    fn rows_within_end_a_succession() {
+        let mut gate = Gate::new(20, 5);
+        for _ in 0..50 {
+            assert!((0..19).all(|_| !gate.take(true)));
+            assert!((0..5).all(|_| !gate.take(false)));
+        }
+    }
+
+    #[test]
+    fn opened_by_hand_it_adopts_the_next_row_beyond() {
+        let mut gate = Gate::new(300, 5);
+        gate.open();
+        assert!(!gate.take(false));
+        assert!(gate.take(true));
+    }
+}
