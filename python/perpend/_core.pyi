@@ -4,7 +4,7 @@ from typing import Any, Literal, TypedDict, final
 import numpy as np
 from numpy.typing import ArrayLike, DTypeLike, NDArray
 
-__all__ = ["Basis", "Step", "__version__", "kernel_path"]
+__all__ = ["Basis", "Reading", "Step", "Watch", "__version__", "kernel_path"]
 
 __version__: str
 
@@ -278,17 +278,17 @@ class Basis:
 
     def __len__(self) -> int: ...
 
-Phase = Literal["settling", "healthy", "exceeding", "alarmed", "adopting"]
-Exceeded = Literal["spe", "t2", "spe_smooth", "t2_smooth"]
+_Phase = Literal["settling", "healthy", "exceeding", "alarmed", "adopting"]
+_Exceeded = Literal["spe", "t2", "spe_smooth", "t2_smooth"]
 
-class Event(TypedDict):
+class _Event(TypedDict):
     """One alarm, from on to off. Ticks count from 0 over the whole life of the watch."""
 
     start: int
     end: int | None
     peak: int
     peak_ratio: float
-    exceeds: tuple[Exceeded, ...]
+    exceeds: tuple[_Exceeded, ...]
     suspects: list[tuple[str, float]]
 
 @final
@@ -300,7 +300,7 @@ class Reading:
         """Number of the tick, from 0."""
 
     @property
-    def phase(self) -> Phase:
+    def phase(self) -> _Phase:
         """Where the watch stands after this row."""
 
     @property
@@ -340,7 +340,7 @@ class Reading:
         """Limit that `t2_smooth` was judged by."""
 
     @property
-    def exceeds(self) -> tuple[Exceeded, ...]:
+    def exceeds(self) -> tuple[_Exceeded, ...]:
         """Which of the four limits this row passed."""
 
     @property
@@ -436,9 +436,9 @@ class Watch:
         memory: float | None = 5000.0,
         settle: int = 500,
         false_alarm: float = 1e-3,
-        confirm: int = ...,
-        of: int = ...,
-        hold: int = ...,
+        confirm: int = 3,
+        of: int = 5,
+        hold: int = 300,
         limits: Literal["moments", "empirical", "spectrum"] = "moments",
         dtype: DTypeLike = "float64",
     ) -> Watch: ...
@@ -451,8 +451,9 @@ class Watch:
         Returns
         -------
         dict of arrays
-            One entry a property of `Reading`, first axis the ticks: `tick`, `phase` (str), `alarm`, `spe`, `spe_limit`, `t2`,
-            `t2_limit`, `spe_smooth`, ..., `drift` (NaN for None), `missing` (count), `contributions` (ticks, channels).
+            One entry a property of `Reading`, first axis the ticks: `tick`, `phase` (str), `alarm`, `spe`, `spe_limit`,
+            `t2`, `t2_limit`, `spe_smooth`, ..., `drift` (NaN for None), `missing` (count), `contributions`
+            (ticks, channels).
         """
 
     def settle_on(self, rows: ArrayLike) -> None:
@@ -476,7 +477,7 @@ class Watch:
         """Channels a row."""
 
     @property
-    def phase(self) -> Phase:
+    def phase(self) -> _Phase:
         """Where the watch stands."""
 
     @property
@@ -485,7 +486,11 @@ class Watch:
 
     @property
     def ticks(self) -> int:
-        """Rows judged or settled on so far."""
+        """Rows given to `tick` or `replay` so far."""
+
+    @property
+    def dropped(self) -> int:
+        """Settling rows left out as glitches."""
 
     @property
     def frozen(self) -> bool:
@@ -493,8 +498,11 @@ class Watch:
 
     @property
     def constant(self) -> list[str]:
-        """Channels that did not move while settling: neither judged nor suspected until they do."""
+        """Channels that did not move, or had no values, while settling.
+
+        They are neither judged nor suspected until they have moved and shown `settle` values since.
+        """
 
     @property
-    def events(self) -> list[Event]:
+    def events(self) -> list[_Event]:
         """The latest alarms, oldest first: a bounded list."""

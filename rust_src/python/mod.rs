@@ -3,7 +3,9 @@
 mod basis;
 mod convert;
 mod errors;
+mod reading;
 mod step;
+mod watch;
 
 use pyo3::prelude::*;
 
@@ -17,7 +19,11 @@ mod _core {
     #[pymodule_export]
     use super::basis::PyBasis;
     #[pymodule_export]
+    use super::reading::PyReading;
+    #[pymodule_export]
     use super::step::Step;
+    #[pymodule_export]
+    use super::watch::PyWatch;
 
     /// Name of the instruction set in use.
     #[pyfunction]

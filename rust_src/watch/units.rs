@@ -22,6 +22,7 @@ pub struct Units {
 
 impl Units {
     /// Units of the rows for which `keep` holds: `rows` is row-major. A channel needs at least `enough` values.
+    #[must_use]
     pub fn of(rows: &[f64], channels: usize, keep: &[bool], enough: usize) -> Self {
         let mut units = Self {
             mean: vec![0.0; channels],

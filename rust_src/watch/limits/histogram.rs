@@ -6,11 +6,11 @@
 
 /// Buckets a doubling of the value.
 const PER_OCTAVE: f64 = 128.0;
-/// Octaves covered: from a quarter of the reference value to 2^14 times it. What is below counts in the first bucket,
-/// what is above in the last.
-const OCTAVES: f64 = 16.0;
+/// Sixteen octaves: up to 2^14 times the reference value. What is below counts in the first bucket, what is above in the
+/// last.
+const BUCKETS: usize = 128 * 16;
+/// The lowest bucket starts at a quarter of the reference value.
 const LOWEST: f64 = -2.0;
-const BUCKETS: usize = (PER_OCTAVE * OCTAVES) as usize;
 /// Weight of a new count at which all counts are scaled down.
 const LARGE: f64 = 1e100;
 /// Rows that must lie beyond a level before it is read from the counts.
@@ -95,6 +95,7 @@ impl Histogram {
 }
 
 #[cfg(test)]
+#[expect(clippy::unwrap_used, reason = "a test may stop where it finds a surprise")]
 mod tests {
     use super::*;
 

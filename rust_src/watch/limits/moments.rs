@@ -1,4 +1,4 @@
-//! Running mean, variance and lag-one correlation of a statistic, with forgetting.
+//! Running mean, variance, skewness and lag-one correlation of a statistic, with forgetting.
 
 /// Lag-one correlation above which a series says no more of its own spread than this.
 const STIFFEST: f64 = 0.999;
@@ -11,6 +11,8 @@ pub struct Moments {
     square: f64,
     mean: f64,
     variance: f64,
+    /// Third central moment.
+    third: f64,
     covariance: f64,
     last: f64,
 }
@@ -21,9 +23,14 @@ impl Moments {
         let first = self.weight == 0.0;
         self.weight = keep * self.weight + 1.0;
         self.square = keep * keep * self.square + 1.0;
+        let share = self.weight.recip();
         let step = value - self.mean;
-        self.mean += step / self.weight;
-        self.variance += (step * (value - self.mean) - self.variance) / self.weight;
+        // The new value lies (1 - share) step from the new mean, the old ones share step further from it than before.
+        let (far, near) = ((1.0 - share) * step, share * step);
+        self.third =
+            (1.0 - share) * (self.third - 3.0 * near * self.variance - near.powi(3)) + share * far.powi(3);
+        self.mean += near;
+        self.variance = (1.0 - share) * (self.variance + near * step);
         if !first {
             let product = (value - self.mean) * (self.last - self.mean);
             self.covariance += (product - self.covariance) / self.weight;
@@ -48,6 +55,13 @@ impl Moments {
     #[must_use]
     pub fn variance(&self) -> f64 {
         self.variance
+    }
+
+    /// Third central moment over the cube of the spread; 0 where nothing moves.
+    #[must_use]
+    pub fn skewness(&self) -> f64 {
+        let scale = self.variance * self.variance.sqrt();
+        if scale > 0.0 && self.third.is_finite() { self.third / scale } else { 0.0 }
     }
 
     /// Correlation of a value with the one before, kept within 0 and 0.999.
@@ -87,6 +101,8 @@ mod tests {
         let variance = series.iter().map(|x| (x - mean) * (x - mean)).sum::<f64>() / n;
         assert!((moments.mean() - mean).abs() < 4.0 * f64::EPSILON * mean);
         assert!((moments.variance() - variance).abs() < 16.0 * f64::EPSILON * variance);
+        let third = series.iter().map(|x| (x - mean).powi(3)).sum::<f64>() / n;
+        assert!((moments.skewness() - third / variance.powf(1.5)).abs() < 32.0 * f64::EPSILON);
         assert!((moments.count() - n).abs() < 1e-12);
     }
 

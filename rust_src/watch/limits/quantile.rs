@@ -45,6 +45,8 @@ pub struct ChiSquare {
     pub mean_left: f64,
     /// What it leaves of the variance `2 h`.
     pub variance_left: f64,
+    /// What it leaves of the third central moment `8 h`.
+    pub third_left: f64,
 }
 
 impl ChiSquare {
@@ -53,7 +55,7 @@ impl ChiSquare {
     pub fn at(h: f64, tail: f64) -> Self {
         let h = if h.is_nan() { MANY } else { h.clamp(FEW, 1e12) };
         let start = wilson_hilferty(h, normal(tail)) * h;
-        Self { h, tail, value: start, mean_left: 1.0, variance_left: 1.0 }.refined(h)
+        Self { h, tail, value: start, mean_left: 1.0, variance_left: 1.0, third_left: 1.0 }.refined(h)
     }
 
     /// The same at other degrees of freedom, started from this one.
@@ -65,6 +67,7 @@ impl ChiSquare {
             // The normal limit: what winsorising at z leaves, of a mean that dwarfs the spread.
             self.mean_left = 1.0;
             self.variance_left = normal_variance_left(normal(self.tail), self.tail);
+            self.third_left = 1.0;
             return self;
         }
         let a = 0.5 * self.h;
@@ -100,8 +103,12 @@ impl ChiSquare {
         let beyond_2 = beyond_1 + term * x / (a + 1.0);
         let mean = self.h * (1.0 - beyond_1) + self.value * self.tail;
         let square = self.h * (self.h + 2.0) * (1.0 - beyond_2) + self.value * self.value * self.tail;
+        let beyond_3 = beyond_2 + term * x * x / ((a + 1.0) * (a + 2.0));
+        let cube =
+            self.h * (self.h + 2.0) * (self.h + 4.0) * (1.0 - beyond_3) + self.value.powi(3) * self.tail;
         self.mean_left = mean / self.h;
         self.variance_left = (square - mean * mean) / (2.0 * self.h);
+        self.third_left = (cube - 3.0 * mean * square + 2.0 * mean.powi(3)) / (8.0 * self.h);
         self
     }
 }
@@ -217,16 +224,19 @@ mod tests {
             let a = 0.5 * h;
             let steps = 400_000;
             let top = q.value;
-            let (mut m1, mut m2) = (top * tail, top * top * tail);
+            let (mut m1, mut m2, mut m3) = (top * tail, top * top * tail, top.powi(3) * tail);
             for i in 0..steps {
                 let x = (f64::from(i) + 0.5) / f64::from(steps) * top;
                 let density = ((a - 1.0) * (0.5 * x).ln() - 0.5 * x - ln_gamma(a)).exp() * 0.5;
                 let mass = density * top / f64::from(steps);
                 m1 += x * mass;
                 m2 += x * x * mass;
+                m3 += x.powi(3) * mass;
             }
             assert!((q.mean_left - m1 / h).abs() < 1e-6, "{h} {tail}");
             assert!((q.variance_left - (m2 - m1 * m1) / (2.0 * h)).abs() < 1e-5, "{h} {tail}");
+            let third = m3 - 3.0 * m1 * m2 + 2.0 * m1.powi(3);
+            assert!((q.third_left - third / (8.0 * h)).abs() < 1e-4, "{h} {tail}");
         }
     }
 }

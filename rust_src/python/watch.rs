@@ -1,0 +1,266 @@
+//! `perpend.Watch`.
+
+use std::sync::{Arc, Mutex, PoisonError};
+
+use numpy::PyArray1;
+use pyo3::exceptions::PyValueError;
+use pyo3::prelude::*;
+use pyo3::sync::MutexExt;
+use pyo3::types::{PyDict, PyList};
+
+use super::convert::{Stored, block, matrix, row};
+use super::errors::fenced;
+use super::reading::{PyReading, passed};
+use crate::watch::event::Event;
+use crate::watch::replay::{NUMBERS, Replay};
+use crate::watch::{Limits, Settings, Watch};
+use crate::{Error, Scalar};
+
+/// A watch in one of the stored types.
+enum Inner {
+    Float64(Watch<f64>),
+    Float32(Watch<f32>),
+}
+
+/// Does the same with a watch of either type.
+macro_rules! either {
+    ($inner:expr, $watch:ident => $body:expr) => {
+        match $inner {
+            Inner::Float64($watch) => $body,
+            Inner::Float32($watch) => $body,
+        }
+    };
+}
+
+/// The monitoring loop; see `_core.pyi` for the documentation.
+#[pyclass(frozen, module = "perpend", name = "Watch")]
+pub(super) struct PyWatch {
+    inner: Mutex<Inner>,
+    channels: usize,
+    names: Arc<Vec<String>>,
+}
+
+impl PyWatch {
+    /// Runs `call` on the watch, alone: calls from several threads take turns.
+    fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
+        let mut inner = self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
+        fenced(|| call(&mut inner))
+    }
+
+    /// Reads something that cannot fail.
+    fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&Inner) -> R) -> R {
+        call(&self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
+    }
+
+    /// Runs `call` alone, without the interpreter.
+    fn alone<R>(&self, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
+        let mut inner = self.inner.lock().unwrap_or_else(PoisonError::into_inner);
+        fenced(|| call(&mut inner))
+    }
+
+    fn event<'py>(&self, py: Python<'py>, event: &Event) -> PyResult<Bound<'py, PyDict>> {
+        let dict = PyDict::new(py);
+        dict.set_item("start", event.start)?;
+        dict.set_item("end", event.end)?;
+        dict.set_item("peak", event.peak)?;
+        dict.set_item("peak_ratio", event.peak_ratio)?;
+        dict.set_item("exceeds", passed(py, event.exceeds)?)?;
+        let named = event.suspects.iter().filter(|(_, share)| *share > 0.0);
+        let suspects: Vec<(&str, f64)> =
+            named.map(|(channel, share)| (self.names[*channel].as_str(), *share)).collect();
+        dict.set_item("suspects", suspects)?;
+        Ok(dict)
+    }
+}
+
+/// Reads the `limits` argument.
+fn limits(name: &str) -> PyResult<Limits> {
+    match name {
+        "moments" => Ok(Limits::Moments),
+        "empirical" => Ok(Limits::Empirical),
+        "spectrum" => Ok(Limits::Spectrum),
+        other => Err(PyValueError::new_err(format!(
+            "limits: expected \"moments\", \"empirical\" or \"spectrum\", got \"{other}\""
+        ))),
+    }
+}
+
+/// Names given, or made; as many as there are channels, each once.
+fn names(given: Option<Vec<String>>, channels: usize) -> PyResult<Vec<String>> {
+    let Some(names) = given else {
+        return Ok((0..channels).map(|channel| format!("channel_{channel}")).collect());
+    };
+    if names.len() != channels {
+        let got = names.len();
+        return Err(PyValueError::new_err(format!("names: expected {channels}, got {got}")));
+    }
+    let mut sorted: Vec<&String> = names.iter().collect();
+    sorted.sort();
+    match sorted.windows(2).find(|pair| pair[0] == pair[1]) {
+        Some(pair) => Err(PyValueError::new_err(format!("names: expected each once, got {} twice", pair[0]))),
+        None => Ok(names),
+    }
+}
+
+fn make<T: Scalar>(settings: Settings) -> PyResult<Watch<T>> {
+    fenced(|| Watch::new(settings))
+}
+
+/// The readings as arrays.
+fn columns(py: Python<'_>, replay: Replay, channels: usize) -> PyResult<Bound<'_, PyDict>> {
+    let ticks = replay.tick.len();
+    let dict = PyDict::new(py);
+    dict.set_item("tick", PyArray1::from_vec(py, replay.tick))?;
+    let phases = PyList::new(py, replay.phase.iter().map(|phase| phase.name()))?;
+    // The longest name has nine letters; named here so that no ticks give the same type.
+    dict.set_item("phase", py.import("numpy")?.call_method1("array", (phases, "U9"))?)?;
+    dict.set_item("alarm", PyArray1::from_vec(py, replay.alarm))?;
+    for (name, column) in NUMBERS.iter().zip(replay.numbers) {
+        dict.set_item(name, PyArray1::from_vec(py, column))?;
+    }
+    let exceeds = PyArray1::from_vec(py, replay.exceeds);
+    dict.set_item("exceeds", exceeds.call_method1("reshape", ((ticks, 4),))?)?;
+    dict.set_item("rank", PyArray1::from_vec(py, replay.rank))?;
+    dict.set_item("missing", PyArray1::from_vec(py, replay.missing))?;
+    dict.set_item("contributions", matrix(py, replay.contributions, ticks, channels)?)?;
+    Ok(dict)
+}
+
+#[pymethods]
+impl PyWatch {
+    #[new]
+    #[pyo3(signature = (
+        channels, names=None, *, rank=None, memory=Some(5000.0), settle=500, false_alarm=1e-3, confirm=3, of=5,
+        hold=300, limits="moments", dtype=Stored::Float64
+    ), text_signature = "(channels, names=None, *, rank=None, memory=5000.0, settle=500, false_alarm=0.001, \
+        confirm=3, of=5, hold=300, limits='moments', dtype='float64')")]
+    #[expect(clippy::too_many_arguments, reason = "keyword arguments, each a setting")]
+    fn new(
+        channels: usize,
+        names: Option<Vec<String>>,
+        rank: Option<usize>,
+        memory: Option<f64>,
+        settle: usize,
+        false_alarm: f64,
+        confirm: usize,
+        of: usize,
+        hold: u64,
+        limits: &str,
+        dtype: Stored,
+    ) -> PyResult<Self> {
+        let limits = self::limits(limits)?;
+        let settings = Settings { channels, rank, memory, settle, false_alarm, confirm, of, hold, limits };
+        let inner = match dtype {
+            Stored::Float64 => Inner::Float64(make(settings)?),
+            Stored::Float32 => Inner::Float32(make(settings)?),
+        };
+        let names = Arc::new(self::names(names, channels)?);
+        Ok(Self { inner: Mutex::new(inner), channels, names })
+    }
+
+    fn tick(&self, row: &Bound<'_, PyAny>) -> PyResult<PyReading> {
+        let row = self::row(row)?;
+        let entries = row.entries()?;
+        let reading = self.with(row.py(), |inner| either!(inner, watch => watch.tick(entries).cloned()))?;
+        Ok(PyReading::new(reading, Arc::clone(&self.names)))
+    }
+
+    fn replay<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<Bound<'py, PyDict>> {
+        let py = rows.py();
+        let block = block(rows)?;
+        let (entries, count) = block.of(self.channels)?;
+        self.with(py, |inner| either!(inner, watch => watch.check_rows(entries)))?;
+        let mut replay = Replay::with_room(count, self.channels);
+        for piece in block.pieces(entries) {
+            py.detach(|| self.alone(|inner| either!(inner, watch => watch.replay_into(piece, &mut replay))))?;
+            py.check_signals()?;
+        }
+        columns(py, replay, self.channels)
+    }
+
+    fn settle_on(&self, rows: &Bound<'_, PyAny>) -> PyResult<()> {
+        let block = block(rows)?;
+        let (entries, _) = block.of(self.channels)?;
+        let settle = || self.alone(|inner| either!(inner, watch => watch.settle_on(entries)));
+        rows.py().detach(settle)
+    }
+
+    fn freeze(&self, py: Python<'_>) -> PyResult<()> {
+        self.with(py, |inner| {
+            either!(inner, watch => watch.freeze());
+            Ok(())
+        })
+    }
+
+    fn resume(&self, py: Python<'_>) -> PyResult<()> {
+        self.with(py, |inner| {
+            either!(inner, watch => watch.resume());
+            Ok(())
+        })
+    }
+
+    fn accept(&self, py: Python<'_>) -> PyResult<()> {
+        self.with(py, |inner| either!(inner, watch => watch.accept()))
+    }
+
+    #[getter]
+    fn names(&self) -> Vec<String> {
+        self.names.to_vec()
+    }
+
+    #[getter]
+    fn channels(&self) -> usize {
+        self.channels
+    }
+
+    #[getter]
+    fn phase(&self, py: Python<'_>) -> &'static str {
+        self.read(py, |inner| either!(inner, watch => watch.phase().name()))
+    }
+
+    #[getter]
+    fn rank(&self, py: Python<'_>) -> usize {
+        self.read(py, |inner| either!(inner, watch => watch.rank()))
+    }
+
+    #[getter]
+    fn dropped(&self, py: Python<'_>) -> usize {
+        self.read(py, |inner| either!(inner, watch => watch.dropped()))
+    }
+
+    #[getter]
+    fn ticks(&self, py: Python<'_>) -> u64 {
+        self.read(py, |inner| either!(inner, watch => watch.ticks()))
+    }
+
+    #[getter]
+    fn frozen(&self, py: Python<'_>) -> bool {
+        self.read(py, |inner| either!(inner, watch => watch.frozen()))
+    }
+
+    #[getter]
+    fn constant(&self, py: Python<'_>) -> Vec<&str> {
+        self.read(py, |inner| {
+            either!(inner, watch => {
+                let out = (0..self.channels).filter(|channel| watch.rank() > 0 && !watch.moves(*channel));
+                out.map(|channel| self.names[channel].as_str()).collect()
+            })
+        })
+    }
+
+    #[getter]
+    fn events<'py>(&self, py: Python<'py>) -> PyResult<Vec<Bound<'py, PyDict>>> {
+        let events: Vec<Event> =
+            self.read(py, |inner| either!(inner, watch => watch.events().copied().collect()));
+        events.iter().map(|event| self.event(py, event)).collect()
+    }
+
+    fn __repr__(&self, py: Python<'_>) -> String {
+        self.read(py, |inner| {
+            either!(inner, watch => {
+                let (phase, rank, ticks) = (watch.phase().name(), watch.rank(), watch.ticks());
+                format!("Watch(channels={}, phase={phase}, rank={rank}, ticks={ticks})", self.channels)
+            })
+        })
+    }
+}

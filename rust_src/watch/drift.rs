@@ -1,0 +1,197 @@
+//! How far the healthy state has moved from the baseline that was accepted.
+//!
+//! Three figures, as a machine can drift in three ways: its channels move together otherwise (the largest principal angle
+//! between the axes then and now), the movements then known are still covered or not (the share of the baseline's
+//! energy that the present axes capture), and it runs at another point (the largest shift of a channel's mean, in
+//! spreads of that channel).
+//!
+//! The angle means nothing where the weakest axis could as well be another: two estimates of the same subspace from
+//! `n` rows differ by about the square root of `sum_ij L_i l_j / (n (L_i - l_j)^2)` over kept energies `L` and those left
+//! out `l` (Anderson, Ann. Math. Stat. 34 (1963) 122-148). Where that exceeds [`UNTOLD`] the angle is withheld.
+
+use crate::dense::Svd;
+use crate::error::Error;
+use crate::ops;
+use crate::rows::{RowStore, Rows};
+use crate::scalar::Scalar;
+
+/// Sampling angle, in radians, above which an angle says nothing.
+const UNTOLD: f64 = 0.5;
+
+/// The three figures.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub struct Drift {
+    /// Largest principal angle in radians; None where sampling alone could make it.
+    pub angle: Option<f64>,
+    /// Share of the baseline's energy that the present axes capture.
+    pub captured: Option<f64>,
+    /// Largest shift of a channel's mean, in spreads of that channel.
+    pub mean_shift: Option<f64>,
+}
+
+/// The present state, as the comparison needs it.
+#[derive(Clone, Copy)]
+pub struct Present<'a, T> {
+    /// Principal axes.
+    pub axes: Rows<'a, T>,
+    /// Energies along them, descending.
+    pub energies: &'a [f64],
+    /// Mean, in scaled units.
+    pub mean: &'a [f64],
+    /// The largest energy left out, and how many directions are left out.
+    pub left_out: (f64, usize),
+    /// Rows of equal weight the model is worth.
+    pub rows: f64,
+}
+
+/// The state that was accepted, and the workspace to compare with it.
+pub struct Baseline<T> {
+    axes: RowStore<T>,
+    energies: Vec<f64>,
+    mean: Vec<f64>,
+    scores: Vec<f64>,
+    vector: Vec<f64>,
+    residuals: RowStore<f64>,
+    gram: Vec<f64>,
+    svd: Svd,
+}
+
+impl<T: Scalar> Baseline<T> {
+    /// Of the present state.
+    #[must_use]
+    pub fn of(present: Present<'_, T>) -> Self {
+        let (rank, channels) = (present.axes.count(), present.axes.dim());
+        let mut axes = RowStore::zeros(rank, channels);
+        for (index, axis) in present.axes.iter().enumerate() {
+            axes.row_mut(index).copy_from_slice(axis);
+        }
+        Self {
+            axes,
+            energies: present.energies.to_vec(),
+            mean: present.mean.to_vec(),
+            scores: vec![0.0; rank],
+            vector: vec![0.0; channels],
+            residuals: RowStore::zeros(rank, channels),
+            gram: vec![0.0; rank * rank],
+            svd: Svd::new(rank, rank),
+        }
+    }
+
+    /// Compares with the present state: `4 rank^2 channels` flops and a decomposition of `rank` by `rank`.
+    ///
+    /// # Errors
+    /// [`Error::NoConvergence`] of the decomposition.
+    pub fn compare(&mut self, present: Present<'_, T>) -> Result<Drift, Error> {
+        let rank = self.energies.len();
+        let (mut captured, mut total) = (0.0, 0.0);
+        for index in 0..rank {
+            for (target, value) in self.vector.iter_mut().zip(self.axes.row(index)) {
+                *target = value.to_f64();
+            }
+            ops::project(present.axes, &self.vector, &mut self.scores);
+            let residual = self.residuals.row_mut(index);
+            ops::subtract(present.axes, &self.scores, &self.vector, residual);
+            captured += self.energies[index] * ops::norm_squared(&self.scores).min(1.0);
+            total += self.energies[index];
+        }
+        let angle = if told(present) { Some(self.largest_angle()?) } else { None };
+        let shifts = present.mean.iter().zip(&self.mean).map(|(now, then)| (now - then).abs());
+        Ok(Drift {
+            angle,
+            captured: (total > 0.0).then(|| captured / total),
+            mean_shift: Some(shifts.fold(0.0, f64::max)),
+        })
+    }
+
+    /// From the residuals: their largest singular value is the sine of the largest angle, to full relative accuracy
+    /// where it is small; near a right angle, where the sine says little, the arc sine loses digits nobody reads.
+    fn largest_angle(&mut self) -> Result<f64, Error> {
+        let rank = self.energies.len();
+        for row in 0..rank {
+            for column in 0..=row {
+                let product = ops::dot(self.residuals.row(row), self.residuals.row(column));
+                self.gram[row * rank + column] = product;
+                self.gram[column * rank + row] = product;
+            }
+        }
+        self.svd.decompose(&self.gram)?;
+        let sine = self.svd.values().first().copied().unwrap_or(0.0).sqrt();
+        Ok(sine.min(1.0).asin())
+    }
+}
+
+/// Whether the eigengap gives the angle a meaning.
+fn told<T: Scalar>(present: Present<'_, T>) -> bool {
+    let (next, count) = present.left_out;
+    if count == 0 || present.rows <= 0.0 {
+        return false;
+    }
+    let mut square = 0.0;
+    for &energy in present.energies {
+        let gap = energy - next;
+        if gap <= 0.0 {
+            return false;
+        }
+        square += count as f64 * energy * next / (gap * gap * present.rows);
+    }
+    square.sqrt() <= UNTOLD
+}
+
+impl<T: Scalar> Clone for Baseline<T> {
+    fn clone(&self) -> Self {
+        let rank = self.energies.len();
+        Self {
+            axes: self.axes.clone(),
+            energies: self.energies.clone(),
+            mean: self.mean.clone(),
+            scores: self.scores.clone(),
+            vector: self.vector.clone(),
+            residuals: self.residuals.clone(),
+            gram: self.gram.clone(),
+            svd: Svd::new(rank, rank),
+        }
+    }
+}
+
+#[cfg(test)]
+#[expect(clippy::unwrap_used, reason = "a test may stop where it finds a surprise")]
+mod tests {
+    use super::*;
+
+    /// Two axes in four dimensions, the second turned by `angle` towards the third direction.
+    fn plane(angle: f64) -> RowStore<f64> {
+        let mut axes = RowStore::zeros(2, 4);
+        axes.row_mut(0)[0] = 1.0;
+        axes.row_mut(1)[1] = angle.cos();
+        axes.row_mut(1)[2] = angle.sin();
+        axes
+    }
+
+    fn present<'a>(axes: &'a RowStore<f64>, mean: &'a [f64], next: f64) -> Present<'a, f64> {
+        Present { axes: axes.view(2), energies: &[3.0, 1.0], mean, left_out: (next, 2), rows: 500.0 }
+    }
+
+    #[test]
+    fn the_angle_is_accurate_from_tiny_to_right() {
+        let (then, mean) = (plane(0.0), [0.0; 4]);
+        let mut baseline = Baseline::of(present(&then, &mean, 0.1));
+        for angle in [1e-12, 1e-8, 1e-3, 0.5, 1.5] {
+            let now = plane(angle);
+            let drift = baseline.compare(present(&now, &mean, 0.1)).unwrap();
+            let got = drift.angle.unwrap();
+            // The residual carries eps of the unit vectors; the arc sine magnifies by 1 / cos.
+            assert!((got - angle).abs() < 8.0 * f64::EPSILON / angle.cos(), "{angle}: {got}");
+            let captured = (3.0 + angle.cos().powi(2)) / 4.0;
+            assert!((drift.captured.unwrap() - captured).abs() < 8.0 * f64::EPSILON);
+        }
+    }
+
+    #[test]
+    fn no_angle_is_given_where_the_eigengap_denies_it() {
+        let (then, mean) = (plane(0.0), [0.0, 0.3, -0.7, 0.0]);
+        let mut baseline = Baseline::of(present(&then, &[0.0; 4], 0.95));
+        let drift = baseline.compare(present(&plane(0.4), &mean, 0.95)).unwrap();
+        assert_eq!(drift.angle, None);
+        assert!((drift.mean_shift.unwrap() - 0.7).abs() < 1e-15);
+    }
+}

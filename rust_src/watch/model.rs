@@ -1,0 +1,139 @@
+//! The healthy model: units, tracker, and the lens rows are judged by.
+//!
+//! The lens takes new axes from the tracker when the weight learned since exceeds a hundredth of all that is learned, and
+//! not oftener than every [`LEAST_AGE`] rows: what a row is judged by lags by at most a hundredth of the memory, whose
+//! effect on the statistics is of that order, far below the sampling error of axes learned from the same rows.
+
+use crate::error::Error;
+use crate::scalar::Scalar;
+use crate::tracker::{self, Tracker};
+
+use super::lens::{Judged, Lens};
+use super::limits::spectrum::Residuals;
+use super::units::Units;
+
+/// Share of the learned weight by which the lens may lag.
+const LAG: f64 = 0.01;
+/// Rows between two renewals of the lens, at least.
+const LEAST_AGE: u32 = 16;
+/// Roundings of a scaled value that a residual may carry without meaning anything.
+const ROUNDINGS: f64 = 8.0;
+
+/// Units, tracker and lens.
+#[derive(Clone)]
+pub struct Model<T: Scalar> {
+    /// What channels usually read.
+    pub units: Units,
+    /// What the model has learned.
+    pub tracker: Tracker<T>,
+    /// What rows are judged by.
+    pub lens: Lens<T>,
+    scaled: Vec<f64>,
+    observed: usize,
+    floor: f64,
+    keep: f64,
+    learned: f64,
+    recent: f64,
+    age: u32,
+}
+
+impl<T: Scalar> Model<T> {
+    /// A model that has learned nothing; `rank` is below the number of channels that move.
+    ///
+    /// # Errors
+    /// Those of the tracker's settings.
+    pub fn new(units: Units, channels: usize, rank: usize, memory: Option<f64>) -> Result<Self, Error> {
+        let settings = tracker::Settings { channels, rank, memory, center: true, guard: None };
+        let floor = rounding_energy::<T>(&units);
+        Ok(Self {
+            tracker: Tracker::new(settings)?,
+            lens: Lens::new(channels, rank),
+            units,
+            scaled: vec![0.0; channels],
+            observed: 0,
+            floor,
+            keep: memory.map_or(1.0, |memory| 1.0 - memory.recip()),
+            learned: 0.0,
+            recent: 0.0,
+            age: 0,
+        })
+    }
+
+    /// Looks at a raw row: scales it and takes it from the mean. Returns whether it can be judged, and how.
+    pub fn judge(&mut self, row: &[f64]) -> Option<Judged> {
+        self.observed = self.units.scale(row, &mut self.scaled);
+        let centred = self.lens.deviation.iter_mut().zip(&self.scaled).zip(self.tracker.mean());
+        for ((deviation, value), mean) in centred {
+            *deviation = value - mean;
+        }
+        self.lens.judge(self.observed)
+    }
+
+    /// Learns the row looked at last.
+    ///
+    /// # Errors
+    /// None on rows that were scaled here; the tracker's own if it finds otherwise.
+    pub fn learn(&mut self, weight: f64) -> Result<(), Error> {
+        self.tracker.update(&self.scaled, weight)?;
+        self.learned = self.keep * self.learned + weight;
+        self.recent += weight;
+        self.age += 1;
+        Ok(())
+    }
+
+    /// Whether the lens has aged enough to be renewed.
+    #[must_use]
+    pub fn due(&self) -> bool {
+        self.age >= LEAST_AGE && self.recent > LAG * self.learned
+    }
+
+    /// Renews the lens from what the tracker has learned.
+    ///
+    /// # Errors
+    /// [`Error::NoConvergence`]: the lens stays as it was.
+    pub fn renew(&mut self) -> Result<(), Error> {
+        self.age = 0;
+        self.recent = 0.0;
+        self.tracker.refresh()?;
+        self.lens.take(self.tracker.axes(), self.tracker.energies(), self.units.moving(), self.floor);
+        Ok(())
+    }
+
+    /// A channel joins with these units; its floor of rounding with it.
+    pub fn join(&mut self, channel: usize, mean: f64, spread: f64) {
+        self.units.join(channel, mean, spread);
+        self.floor = rounding_energy::<T>(&self.units);
+    }
+
+    /// The largest energy that the axes leave out, and how many directions they leave out.
+    #[must_use]
+    pub fn left_out(&self) -> (f64, usize) {
+        let weakest = self.tracker.energies().last().copied().unwrap_or(0.0);
+        let count = self.units.moving().saturating_sub(self.lens.axes().count());
+        ((1.0 - self.tracker.gap()) * weakest, count)
+    }
+
+    /// Energies that the axes leave out: those of the guard directions, and what is left spread evenly.
+    #[must_use]
+    pub fn residuals(&self) -> Residuals {
+        let guard = self.tracker.guard_energies();
+        let reported = self.tracker.energies();
+        let rest = self.units.moving().saturating_sub(reported.len() + guard.len());
+        let told: f64 = reported.iter().chain(guard).sum();
+        let total = (self.tracker.total_energy() - told).max(0.0);
+        Residuals::of(guard.iter().copied()).and_equal(rest, total)
+    }
+
+    /// Energy below which a residual is rounding.
+    #[must_use]
+    pub fn floor(&self) -> f64 {
+        self.floor
+    }
+}
+
+/// Energy of rounding in a scaled row: of the axes as stored, and of rows that lie far from zero in spreads.
+fn rounding_energy<T: Scalar>(units: &Units) -> f64 {
+    let stored = ROUNDINGS * T::EPSILON;
+    let offset = ROUNDINGS * f64::EPSILON * units.offset();
+    units.moving().max(1) as f64 * (stored * stored + offset * offset)
+}
