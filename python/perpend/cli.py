@@ -127,14 +127,15 @@ def _add_demo(commands: Any) -> None:
     demo = commands.add_parser(
         "demo",
         help="an invented scenario, start to finish",
-        description="Watch an invented ice-water chiller plant through five troubles, truth beside finding.",
+        description=(
+            "Watch an invented ice-water chiller plant of a dairy through five\n"
+            "troubles, and set truth beside finding."
+        ),
         epilog=CAUTIONS,
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )
-    demo.add_argument(
-        "--seed", type=_whole("--seed", 0), default=None, metavar="N", help="another run of the same plant"
-    )
+    demo.add_argument("--seed", type=_whole(0), metavar="N", help="another run of the same plant")
     demo.add_argument(
         "--rows", metavar="FILE", help="write the rows as CSV for perpend watch, and judge nothing"
     )
@@ -169,7 +170,7 @@ def _add_watch(commands: Any) -> None:
     )
     add(
         "--settle",
-        type=_whole("--settle", 2),
+        type=_whole(2),
         metavar="ROWS",
         help="rows to learn units, rank and first limits from",
     )
@@ -181,7 +182,7 @@ def _add_watch(commands: Any) -> None:
     )
     add(
         "--rank",
-        type=_whole("--rank", 1),
+        type=_whole(1),
         metavar="N",
         help="principal axes; chosen when settling ends if not given",
     )
@@ -236,7 +237,7 @@ def _run_watch(found: argparse.Namespace) -> int:
     )
 
 
-def _whole(option: str, least: int) -> Callable[[str], int]:
+def _whole(least: int) -> Callable[[str], int]:
     def read(text: str) -> int:
         try:
             value = int(text)

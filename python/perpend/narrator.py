@@ -1,6 +1,7 @@
 """Tell a run in plain lines: alarms as they come, a summary at the end."""
 
 import math
+import textwrap
 from collections.abc import Sequence
 from typing import TextIO
 
@@ -10,6 +11,7 @@ from perpend.tally import Alarm, Moment, Tally, largest_excess
 
 CAUTION = "perpend advises; it is no protective system. Suspects are not causes."
 LABEL = 10
+WIDTH = 80
 
 
 class Narrator:
@@ -37,7 +39,7 @@ class Narrator:
         if reading.alarm:
             excess = largest_excess(reading)
             self._say(f"{where}  ALARM  {excess or ''}".rstrip())
-            self._say(f"    suspects: {named(reading.suspects(3), reading)}")
+            self._say(wrapped("    suspects: ", named(reading.suspects(3), reading)))
         else:
             self._say(f"{where}  alarm off after {counted(self._tally.alarms[-1].rows, 'row')}")
 
@@ -82,6 +84,11 @@ def summary(tally: Tally, channels: int, learned: str) -> list[str]:
 def line(label: str, text: str) -> str:
     """Set a label before a text."""
     return f"{label:<{LABEL}}{text}"
+
+
+def wrapped(label: str, text: str) -> str:
+    """Set a label before a text and fold it at 80 columns, under itself."""
+    return textwrap.fill(label + text, WIDTH, subsequent_indent=" " * len(label), break_on_hyphens=False)
 
 
 def placed(moment: Moment) -> str:
@@ -138,5 +145,5 @@ def _alarm(number: int, alarm: Alarm) -> list[str]:
     lines = [f"{number:>4}  {placed(alarm.start)} {until}, {counted(alarm.rows, 'row')}"]
     if alarm.peak is not None and alarm.peak_at is not None:
         lines.append(f"      peak {alarm.peak} at row {alarm.peak_at.number}")
-    lines.append(f"      suspects: {named(alarm.suspects())}")
+    lines.append(wrapped("      suspects: ", named(alarm.suspects())))
     return lines

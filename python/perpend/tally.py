@@ -40,6 +40,11 @@ class Excess:
         """How many times the limit it is."""
         return self.value / self.limit if self.limit > 0 else math.nan
 
+    @property
+    def brief(self) -> str:
+        """Write it without its figures."""
+        return f"{CALLED[self.statistic]} at {self.ratio:.3g} times its limit"
+
     def __str__(self) -> str:
         """Write it as the narrator does."""
         against = f"{self.value:.4g} against {self.limit:.4g}"

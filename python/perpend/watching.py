@@ -13,6 +13,7 @@ import numpy as np
 from perpend._core import Watch
 from perpend.intake import Layout, Table, arrange, open_table
 from perpend.intake.delimited import SEPARATORS, Dialect
+from perpend.intake.layout import NO_CLOCK
 from perpend.loop import Observer, judge
 from perpend.narrator import Narrator, counted, summary
 from perpend.progress import Progress
@@ -74,18 +75,18 @@ def run_watch(request: WatchRequest) -> int:
     learned, like, ignored = None, None, list(request.ignored)
     if request.learn is not None:
         learned, like, ignored = _learn(request)
-    table = open_table(request.source, request.dialect)
-    layout = arrange(table, time=request.time, ignored=ignored, like=like)
-    _say(_guesses(table) + layout.said)
-    watch = _make_watch(layout.channels, request, table)
-    settled_on = f"the first {request.settings.get('settle', SETTLE):,} rows"
-    if learned is not None:
-        settled_on = f"{request.learn} ({counted(len(learned), 'row')})"
-        try:
-            watch.settle_on(learned)
-        except ValueError as error:
-            raise InputError(str(error), str(request.learn)) from None
-    return _run(request, table, layout, watch, settled_on)
+    with open_table(request.source, request.dialect) as table:
+        layout = arrange(table, time=request.time, ignored=ignored, like=like)
+        _say(_guesses(table) + layout.said)
+        watch = _make_watch(layout.channels, request, table)
+        settled_on = f"the first {request.settings.get('settle', SETTLE):,}"
+        if learned is not None:
+            settled_on = f"{request.learn} ({counted(len(learned), 'row')})"
+            try:
+                watch.settle_on(learned)
+            except ValueError as error:
+                raise InputError(str(error), str(request.learn)) from None
+        return _run(request, table, layout, watch, settled_on)
 
 
 def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, settled_on: str) -> int:
@@ -122,16 +123,16 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
 
 def _learn(request: WatchRequest) -> tuple[np.ndarray[Any, np.dtype[np.float64]], list[str], list[str]]:
     """Read the file to settle on: its rows, its channels, and what is left to ignore in the other file."""
-    table = open_table(str(request.learn), request.dialect)
-    here = [name for name in request.ignored if name in table.columns]
-    time = request.time
-    layout = arrange(table, time=time if time is None or time in table.columns else "none", ignored=here)
-    _say(_guesses(table) + layout.said)
-    rows: list[Sequence[float]] = [row.values for row in table.rows(layout.channels, layout.clock)]
-    if not rows:
-        raise InputError("a header and no rows", table.label)
-    elsewhere = [name for name in request.ignored if name not in table.columns]
-    return np.asarray(rows, dtype=np.float64), layout.channels, elsewhere
+    with open_table(str(request.learn), request.dialect) as table:
+        here = [name for name in request.ignored if name in table.columns]
+        time = request.time if request.time is None or request.time in table.columns else NO_CLOCK
+        layout = arrange(table, time=time, ignored=here)
+        _say(_guesses(table) + layout.said)
+        rows = [row.values for row in table.rows(layout.channels, layout.clock)]
+        if not rows:
+            raise InputError("a header and no rows", table.label)
+        elsewhere = [name for name in request.ignored if name not in table.columns]
+        return np.asarray(rows, dtype=np.float64), layout.channels, elsewhere
 
 
 def _make_watch(channels: list[str], request: WatchRequest, table: Table) -> Watch:

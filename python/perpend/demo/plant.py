@@ -145,7 +145,7 @@ def respond(drivers: Drivers, wear: Wear, random: np.random.Generator) -> Series
     approach = (1.6 + 0.0052 * rejected) * approach_share * on
     condensing = water_out + approach
     lift = condensing - evaporating
-    power = cold * lift / (273.15 + evaporating) / 0.62 + 22 * on
+    power = (cold * lift / (273.15 + evaporating) / 0.62 + 22) * on
     suction = _ammonia_bar(evaporating) * on + _ammonia_bar(back) * (1 - on)
     discharge = _ammonia_bar(condensing) * on + _ammonia_bar(water_out) * (1 - on)
     oil = _lag((44 + 0.32 * lift + 0.035 * power) * on + 24 * (1 - on), hours=0.8)

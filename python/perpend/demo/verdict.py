@@ -4,7 +4,7 @@ from datetime import datetime
 
 from perpend.demo.plant import MINUTES_A_ROW, ROWS_AN_HOUR
 from perpend.demo.scenario import Scenario, Trouble, moment_of
-from perpend.narrator import counted, named, share
+from perpend.narrator import counted, named, share, wrapped
 from perpend.tally import Alarm, Tally
 
 # An alarm that begins this soon after a repair still belongs to the trouble: the metal is still cooling.
@@ -36,9 +36,9 @@ def compared(trouble: Trouble, alarms: list[Alarm]) -> list[str]:
         lines.append(f"{MARGIN}found    {'no alarm of its own' if trouble.alarming else 'no alarm, rightly'}")
         return [*lines, ""]
     late = span(alarm.start.number - 1 - trouble.start)
-    at = f" at {alarm.opening}" if alarm.opening is not None else ""
-    lines.append(f"{MARGIN}found    after {late},{at}")
-    lines.append(f"{MARGIN}suspects {named(alarm.first)}")
+    opening = f", {alarm.opening.brief}" if alarm.opening is not None else ""
+    lines.append(f"{MARGIN}found    after {late}{opening}")
+    lines.append(wrapped(f"{MARGIN}suspects ", named(alarm.first)))
     if not trouble.alarming:
         lines.append(f"{MARGIN}verdict  a false alarm")
     elif trouble.shows_in:
@@ -69,7 +69,10 @@ def false_alarms(scenario: Scenario, tally: Tally) -> list[str]:
         f" ({share(sum(each.rows for each in early), judged)} of the rows)",
         f"between troubles     {counted(len(stray) - len(early), 'alarm')} without a trouble of its own",
     ]
-    lines += [f"    {each.start.text}, {span(each.rows)}: suspects {named(each.first)}" for each in stray]
+    for each in stray:
+        lines.append(
+            wrapped(f"{MARGIN}{each.start.text}  ", f"{span(each.rows)}, suspects {named(each.first)}")
+        )
     return lines
 
 

@@ -2,6 +2,7 @@
 
 import csv
 import math
+import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from zlib import error as DamagedStream  # noqa: N812 - zlib names its exception like a variable
@@ -13,6 +14,8 @@ from perpend.refusal import InputError, shown
 
 GAPS = frozenset({"", "nan", "na", "null"})
 SEPARATORS = {",": "comma", ";": "semicolon", "\t": "tab"}
+GROUPING = str.maketrans("", "", ",._' \u00a0\u202f")
+TIME_OF_DAY = re.compile(r"\d{1,2}:\d{2}")
 LONGEST_LINE = 16 * 1024 * 1024
 
 
@@ -193,10 +196,12 @@ class DelimitedTable:
         return value
 
     def _advice(self, text: str) -> str:
-        if self.dialect.decimal == "." and _is_number_or_gap(text.replace(",", ".")):
+        if self.dialect.decimal == "." and _is_number_or_gap(text.replace(",", ".", 1)):
             return "for decimal commas give --decimal comma"
-        if self.dialect.decimal == "," and _is_number_or_gap(text.replace(".", "")):
+        if _is_number_or_gap(text.translate(GROUPING)):
             return "thousands must not be grouped"
+        if TIME_OF_DAY.match(text):
+            return "a clock is one column, such as 2026-03-01 10:00; others are left out with --ignore COLUMN"
         return "a column of text is left out with --ignore COLUMN"
 
 
@@ -211,4 +216,4 @@ def _is_number_or_gap(text: str) -> bool:
         float(text)
     except ValueError:
         return False
-    return True
+    return "_" not in text

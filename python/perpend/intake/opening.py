@@ -10,7 +10,9 @@ from typing import BinaryIO, Literal, cast
 from perpend.refusal import InputError
 
 STANDARD_INPUT = "-"
+LIVE = "standard input"
 FIRST_BYTES = 4096
+GZIP = b"\x1f\x8b"
 
 Kind = Literal["delimited", "parquet"]
 
@@ -39,6 +41,12 @@ class Opened:
     raw: BinaryIO
     size: int | None
 
+    def close(self) -> None:
+        """Close the file; standard input stays open."""
+        if self.size is not None or self.label != LIVE:
+            self.stream.close()
+            self.raw.close()
+
 
 def open_input(name: str) -> Opened:
     """Open `name`, or standard input for ``-``.
@@ -48,32 +56,38 @@ def open_input(name: str) -> Opened:
     InputError
         Where there is no such file, it cannot be read, it is empty, or it does not hold rows.
     """
-    live = name == STANDARD_INPUT
-    label = "standard input" if live else name
-    raw: BufferedReader
+    if name == STANDARD_INPUT:
+        return _recognised(cast(BufferedReader, sys.stdin.buffer), LIVE, None)
+    path = Path(name)
     try:
-        if live:
-            raw = cast(BufferedReader, sys.stdin.buffer)
-            size = None
-        else:
-            path = Path(name)
-            if path.is_dir():
-                raise InputError("expected a file, got a folder", label)
-            raw = path.open("rb")
-            size = path.stat().st_size if path.is_file() else None
-        first = raw.peek(FIRST_BYTES)[:FIRST_BYTES]
+        if path.is_dir():
+            raise InputError("expected a file, got a folder", name)
+        raw = path.open("rb")
+        size = path.stat().st_size if path.is_file() else None
     except FileNotFoundError:
-        raise InputError("there is no such file", label) from None
+        raise InputError("there is no such file", name) from None
+    except (OSError, ValueError) as error:
+        raise InputError(f"cannot be read: {getattr(error, 'strerror', None) or error}", name) from None
+    try:
+        return _recognised(raw, name, size)
+    except BaseException:
+        raw.close()
+        raise
+
+
+def _recognised(raw: BufferedReader, label: str, size: int | None) -> Opened:
+    try:
+        first = raw.peek(FIRST_BYTES)[:FIRST_BYTES]
     except OSError as error:
         raise InputError(f"cannot be read: {error.strerror or error}", label) from None
-    if first.startswith(b"\x1f\x8b"):
-        unpacked = gzip.GzipFile(fileobj=raw)
-        try:
-            first = unpacked.peek(FIRST_BYTES)[:FIRST_BYTES]
-        except (OSError, EOFError) as error:
-            raise InputError(f"the gzip file is damaged ({error})", label) from None
-        return Opened(label, _kind(first, label), cast(BinaryIO, unpacked), raw, size)
-    return Opened(label, _kind(first, label), raw, raw, size)
+    if not first.startswith(GZIP):
+        return Opened(label, _kind(first, label), raw, raw, size)
+    unpacked = gzip.GzipFile(fileobj=raw)
+    try:
+        first = unpacked.peek(FIRST_BYTES)[:FIRST_BYTES]
+    except (OSError, EOFError) as error:
+        raise InputError(f"the gzip file is damaged ({error})", label) from None
+    return Opened(label, _kind(first, label), cast(BinaryIO, unpacked), raw, size)
 
 
 def _kind(first: bytes, label: str) -> Kind:

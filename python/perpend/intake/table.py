@@ -1,6 +1,7 @@
 """What any source of rows gives, and how one is opened."""
 
 from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from typing import Protocol
 
 from perpend.intake.clock import Clock
@@ -30,7 +31,8 @@ class Table(Protocol):
         """Give the rows, channels in the order asked for."""
 
 
-def open_table(name: str, dialect: Dialect) -> DelimitedTable | ParquetTable:
+@contextmanager
+def open_table(name: str, dialect: Dialect) -> Iterator[Table]:
     """Open a file, or standard input for ``-``; what it is shows in its first bytes.
 
     Raises
@@ -39,6 +41,7 @@ def open_table(name: str, dialect: Dialect) -> DelimitedTable | ParquetTable:
         Where it cannot be read or has no usable header.
     """
     opened = open_input(name)
-    if opened.kind == "parquet":
-        return ParquetTable(opened)
-    return DelimitedTable(opened, dialect)
+    try:
+        yield ParquetTable(opened) if opened.kind == "parquet" else DelimitedTable(opened, dialect)
+    finally:
+        opened.close()
