@@ -82,9 +82,7 @@ def _complain(called: str, what: str, code: int) -> int:
 def _dispatch(arguments: list[str]) -> int:
     parser = _parser()
     if not arguments:
-        raise InputError(
-            "expected a command: try perpend demo, or perpend watch FILE; perpend --help says more"
-        )
+        raise InputError("expected a command: try perpend demo, or perpend watch FILE; perpend --help says more")
     found, unknown = parser.parse_known_args(arguments)
     if unknown:
         raise InputError(_unknown(found.command, unknown[0]))
@@ -128,17 +126,14 @@ def _add_demo(commands: Any) -> None:
         "demo",
         help="an invented scenario, start to finish",
         description=(
-            "Watch an invented ice-water chiller plant of a dairy through five\n"
-            "troubles, and set truth beside finding."
+            "Watch an invented ice-water chiller plant of a dairy through five\ntroubles, and set truth beside finding."
         ),
         epilog=CAUTIONS,
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )
     demo.add_argument("--seed", type=_whole(0), metavar="N", help="another run of the same plant")
-    demo.add_argument(
-        "--rows", metavar="FILE", help="write the rows as CSV for perpend watch, and judge nothing"
-    )
+    demo.add_argument("--rows", metavar="FILE", help="write the rows as CSV for perpend watch, and judge nothing")
     demo.set_defaults(run=_run_demo)
 
 
@@ -151,9 +146,7 @@ def _add_watch(commands: Any) -> None:
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )
-    watch.add_argument(
-        "source", metavar="FILE", help="rows to watch; - for standard input, judged as they arrive"
-    )
+    watch.add_argument("source", metavar="FILE", help="rows to watch; - for standard input, judged as they arrive")
     add = watch.add_argument
     add("--learn", metavar="FILE", help="settle on exactly this file's rows first")
     add(
@@ -263,9 +256,7 @@ def _memory(text: str) -> float:
 def _probability(text: str) -> float:
     value = _float(text)
     if not 0 < value <= 0.5:
-        raise argparse.ArgumentTypeError(
-            f"expected a share above 0 and up to 0.5, such as 1e-3, got {shown(text)}"
-        )
+        raise argparse.ArgumentTypeError(f"expected a share above 0 and up to 0.5, such as 1e-3, got {shown(text)}")
     return value
 
 

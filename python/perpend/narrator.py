@@ -71,9 +71,7 @@ def summary(tally: Tally, channels: int, learned: str) -> list[str]:
         line("healthy", f"{share(tally.healthy, tally.judged)} of {counted(tally.judged, 'judged row')}"),
     ]
     if tally.adopted:
-        lines.append(
-            line("adopted", f"{counted(tally.adopted, 'row')} learned beyond a limit, after the hold")
-        )
+        lines.append(line("adopted", f"{counted(tally.adopted, 'row')} learned beyond a limit, after the hold"))
     lines.append(line("alarms", f"{len(tally.alarms)}" if tally.alarms else "none"))
     for number, alarm in enumerate(tally.alarms, start=1):
         lines += _alarm(number, alarm)

@@ -120,7 +120,5 @@ def _flat(cell: Any) -> Any:
     if isinstance(cell, bool):
         return int(cell)
     if isinstance(cell, list):
-        return ";".join(
-            f"{each['channel']}={each['share']:.4f}" if isinstance(each, dict) else each for each in cell
-        )
+        return ";".join(f"{each['channel']}={each['share']:.4f}" if isinstance(each, dict) else each for each in cell)
     return cell

@@ -53,9 +53,7 @@ class Excess:
 
 def largest_excess(reading: Reading) -> Excess | None:
     """Return the statistic that is highest above its limit; None where none is above."""
-    found = [
-        Excess(name, getattr(reading, name), getattr(reading, f"{name}_limit")) for name in reading.exceeds
-    ]
+    found = [Excess(name, getattr(reading, name), getattr(reading, f"{name}_limit")) for name in reading.exceeds]
     return max(found, key=lambda each: each.ratio, default=None)
 
 

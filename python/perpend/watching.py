@@ -138,9 +138,7 @@ def _learn(request: WatchRequest) -> tuple[np.ndarray[Any, np.dtype[np.float64]]
 def _make_watch(channels: list[str], request: WatchRequest, table: Table) -> Watch:
     rank = request.settings.get("rank")
     if rank is not None and rank >= len(channels):
-        raise InputError(
-            f"--rank: expected 1 to {len(channels) - 1} for {len(channels)} channels, got {rank}"
-        )
+        raise InputError(f"--rank: expected 1 to {len(channels) - 1} for {len(channels)} channels, got {rank}")
     try:
         return Watch(len(channels), channels, **request.settings)
     except ValueError as error:
@@ -156,11 +154,7 @@ def _keep_input(request: WatchRequest) -> None:
 
 def _guesses(table: Table) -> list[str]:
     separator = table.guessed_separator
-    return (
-        []
-        if separator is None
-        else [f"{table.label}: cells are taken as separated by {SEPARATORS[separator]}s"]
-    )
+    return [] if separator is None else [f"{table.label}: cells are taken as separated by {SEPARATORS[separator]}s"]
 
 
 def _say(lines: Sequence[str]) -> None:

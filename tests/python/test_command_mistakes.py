@@ -173,9 +173,7 @@ def test_a_missing_file_a_folder_and_no_file_at_all_are_told_apart(tmp_path, mon
     assert "required: FILE" in complaint(capsys, "watch")
 
 
-@pytest.mark.parametrize(
-    "arguments", [[], ["wach"], ["--wach"], ["demo", "--seed", "x"], ["demo", "rows.csv"]]
-)
+@pytest.mark.parametrize("arguments", [[], ["wach"], ["--wach"], ["demo", "--seed", "x"], ["demo", "rows.csv"]])
 def test_a_command_mistyped_gets_one_line(arguments, capsys):
     assert complaint(capsys, *arguments).startswith("perpend")
 

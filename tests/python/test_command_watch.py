@@ -24,9 +24,7 @@ PERPEND = [sys.executable, "-m", "perpend"]
 def healthy(rows: int, seed: int) -> np.ndarray:
     random = np.random.default_rng(seed)
     axes = np.random.default_rng(11).standard_normal((2, len(NAMES)))
-    return (
-        random.standard_normal((rows, 2)) @ axes * 3 + 0.3 * random.standard_normal((rows, len(NAMES))) + 40
-    )
+    return random.standard_normal((rows, 2)) @ axes * 3 + 0.3 * random.standard_normal((rows, len(NAMES))) + 40
 
 
 def write(path: Path, rows: np.ndarray, start: int = 0) -> Path:
@@ -122,9 +120,7 @@ def test_each_reading_is_written_before_the_next_row_arrives(folder):
             watch.stdin.write(line.encode())
             watch.stdin.flush()
             deadline = time.monotonic() + 20
-            while time.monotonic() < deadline and not (
-                target.exists() and target.read_text().count("\n") == count + 1
-            ):
+            while time.monotonic() < deadline and not (target.exists() and target.read_text().count("\n") == count + 1):
                 time.sleep(0.01)
             assert target.read_text().count("\n") == count + 1
         watch.communicate(timeout=20)
@@ -171,9 +167,7 @@ def test_an_error_in_the_middle_keeps_the_readings_before_it(folder):
     lines = (folder / "quiet.csv").read_text().splitlines()
     lines[101] = lines[101].replace(lines[101].split(",")[4], "fault", 1)
     (folder / "broken.csv").write_text("\n".join(lines) + "\n")
-    found = run(
-        folder, "broken.csv", "--learn", "learn.csv", "--time", "minutes", "--readings", "broken.jsonl"
-    )
+    found = run(folder, "broken.csv", "--learn", "learn.csv", "--time", "minutes", "--readings", "broken.jsonl")
     assert found.returncode == 2
     assert found.stderr.startswith("perpend watch: broken.csv, line 102, column 'ch3': ")
     assert found.stderr.count("\n") == 1

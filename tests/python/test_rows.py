@@ -41,9 +41,7 @@ def same(found: list[list[float]], wanted: list[list[float | None]]) -> bool:
     )
 
 
-@given(
-    st.lists(st.lists(CELLS, min_size=3, max_size=3), min_size=1, max_size=8), SEPARATORS, GAPS, st.booleans()
-)
+@given(st.lists(st.lists(CELLS, min_size=3, max_size=3), min_size=1, max_size=8), SEPARATORS, GAPS, st.booleans())
 def test_every_finite_number_and_gap_survives_the_trip_through_text(rows, separator, gap, crlf):
     if separator == "\t" and gap == " ":
         gap = ""

@@ -91,12 +91,7 @@ def drive(rows: int, random: np.random.Generator) -> Drivers:
         Seeded.
     """
     day = np.arange(rows) / ROWS_A_DAY
-    warmth = (
-        9.0
-        + 0.06 * day
-        + _wander(rows, random, days=3.0, size=2.0)
-        + _wander(rows, random, days=0.3, size=0.4)
-    )
+    warmth = 9.0 + 0.06 * day + _wander(rows, random, days=3.0, size=2.0) + _wander(rows, random, days=0.3, size=0.4)
     sun = np.sin(2 * np.pi * (day - 0.4))
     wet_bulb = warmth + 2.2 * sun
     dry_bulb = wet_bulb + 3.0 + 1.3 * sun + _wander(rows, random, days=0.5, size=0.6)

@@ -100,9 +100,7 @@ class Chronicle:
             elif index == trouble.end:
                 self._say(index, "truth", f"{trouble.name} over")
         if self._phase == "settling" and reading.phase != "settling":
-            self._say(
-                index, "watch", f"settled on {counted(index, 'row')}, {reading.rank} axes of {len(NAMES)}"
-            )
+            self._say(index, "watch", f"settled on {counted(index, 'row')}, {reading.rank} axes of {len(NAMES)}")
         self._phase = reading.phase
         if reading.alarm != self._on:
             self._on = reading.alarm

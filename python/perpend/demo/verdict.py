@@ -59,9 +59,7 @@ def belongs(alarm: Alarm, trouble: Trouble) -> bool:
 def false_alarms(scenario: Scenario, tally: Tally) -> list[str]:
     """Write how often the watch cried for nothing, before the first trouble and after it."""
     first = scenario.troubles[0].start
-    stray = [
-        each for each in tally.alarms if not any(belongs(each, trouble) for trouble in scenario.troubles)
-    ]
+    stray = [each for each in tally.alarms if not any(belongs(each, trouble) for trouble in scenario.troubles)]
     early = [each for each in stray if each.start.number <= first]
     judged = first - tally.settling
     lines = [
@@ -70,9 +68,7 @@ def false_alarms(scenario: Scenario, tally: Tally) -> list[str]:
         f"between troubles     {counted(len(stray) - len(early), 'alarm')} without a trouble of its own",
     ]
     for each in stray:
-        lines.append(
-            wrapped(f"{MARGIN}{each.start.text}  ", f"{span(each.rows)}, suspects {named(each.first)}")
-        )
+        lines.append(wrapped(f"{MARGIN}{each.start.text}  ", f"{span(each.rows)}, suspects {named(each.first)}"))
     return lines
 
 

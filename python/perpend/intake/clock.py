@@ -26,9 +26,7 @@ NAMES = frozenset(UNITS) | {
 EPOCH_SECONDS = (1e9, 1e10)
 EPOCH_MILLISECONDS = (1e12, 1e13)
 
-Form = Literal[
-    "instant with zone", "date and time", "number", "seconds since 1970", "milliseconds since 1970"
-]
+Form = Literal["instant with zone", "date and time", "number", "seconds since 1970", "milliseconds since 1970"]
 FORMATS = ("%d.%m.%Y %H:%M:%S", "%d.%m.%Y %H:%M", "%Y/%m/%d %H:%M:%S", "%Y/%m/%d %H:%M")
 
 

@@ -142,9 +142,7 @@ class DelimitedTable:
             for other, name in SEPARATORS.items():
                 if other in self.columns[0]:
                     none = SEPARATORS[self.separator]
-                    raise InputError(
-                        f"no {none} in the header, one column only; try --separator {name}", place
-                    )
+                    raise InputError(f"no {none} in the header, one column only; try --separator {name}", place)
         where: dict[str, int] = {}
         for index, name in enumerate(self.columns, start=1):
             if not name:

@@ -82,9 +82,7 @@ def _guess(table: Table, columns: list[str], said: list[str]) -> str:
     found = guess_clock(columns, cells)
     if found is None:
         return ""
-    said.append(
-        f"{table.label}: column {shown(found)} is taken as the clock (--time COLUMN or --time {NO_CLOCK})"
-    )
+    said.append(f"{table.label}: column {shown(found)} is taken as the clock (--time COLUMN or --time {NO_CLOCK})")
     return found
 
 

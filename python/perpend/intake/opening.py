@@ -96,9 +96,7 @@ def _kind(first: bytes, label: str) -> Kind:
     if not first:
         raise InputError("the file is empty; expected a header line and rows", label)
     if first.startswith((b"PK\x03\x04", b"\xd0\xcf\x11\xe0")):
-        raise InputError(
-            "this is a workbook or an archive; save the sheet as CSV (UTF-8) and give that", label
-        )
+        raise InputError("this is a workbook or an archive; save the sheet as CSV (UTF-8) and give that", label)
     if first.startswith((b"\xff\xfe", b"\xfe\xff")):
         raise InputError("the text is UTF-16; save it as UTF-8", label)
     if b"\0" in first:

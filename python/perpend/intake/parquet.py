@@ -41,9 +41,7 @@ class ParquetTable:
             self._file: Any = pq.ParquetFile(opened.stream)
             self.columns: tuple[str, ...] = tuple(self._file.schema_arrow.names)
         except (OSError, ValueError) as error:
-            raise InputError(
-                f"the Parquet file is damaged ({str(error).splitlines()[0]})", self.label
-            ) from None
+            raise InputError(f"the Parquet file is damaged ({str(error).splitlines()[0]})", self.label) from None
         for name in self.columns:
             if self.columns.count(name) > 1:
                 raise InputError(f"two columns are named {shown(name)}; names must differ", self.label)
