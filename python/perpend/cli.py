@@ -181,6 +181,7 @@ def _add_watch(commands: Any) -> None:
     )
     add("--confirm", type=_confirm, metavar="N/M", help="N exceeding rows of the last M raise the alarm")
     add("--readings", metavar="FILE", help="write every reading, .csv or .jsonl")
+    add("--report", metavar="FILE", help="write one self-contained HTML page with plots")
     add(
         "--separator",
         choices=[*SEPARATORS.values()],
@@ -225,6 +226,7 @@ def _run_watch(found: argparse.Namespace) -> int:
             ignored=tuple(found.ignore),
             dialect=Dialect(separators.get(found.separator), "," if found.decimal == "comma" else "."),
             readings=found.readings,
+            report=found.report,
             settings=settings,
         )
     )

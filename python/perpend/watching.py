@@ -1,5 +1,6 @@
 """The command ``perpend watch``: from a file or standard input to readings, alarms and a summary."""
 
+import importlib.util
 import sys
 from collections.abc import Sequence
 from contextlib import ExitStack, closing
@@ -19,6 +20,7 @@ from perpend.narrator import Narrator, counted, summary
 from perpend.progress import Progress
 from perpend.record import ReadingsFile, format_of
 from perpend.refusal import InputError
+from perpend.report.history import History
 from perpend.tally import Tally
 
 NO_ALARM, ALARM_RAISED, INTERRUPTED = 0, 3, 130
@@ -43,6 +45,8 @@ class WatchRequest:
         How the text is written.
     readings : str or None
         File for every reading.
+    report : str or None
+        File for the report.
     settings : dict
         Arguments of `Watch` as far as they were given.
     """
@@ -53,6 +57,7 @@ class WatchRequest:
     ignored: Sequence[str] = ()
     dialect: Dialect = field(default_factory=Dialect)
     readings: str | None = None
+    report: str | None = None
     settings: dict[str, Any] = field(default_factory=dict)
 
 
@@ -71,7 +76,9 @@ def run_watch(request: WatchRequest) -> int:
     """
     if request.readings is not None:
         format_of(request.readings)
-        _keep_input(request)
+    _keep_input(request)
+    if request.report is not None:
+        _need_plots(request.report)
     learned, like, ignored = None, None, list(request.ignored)
     if request.learn is not None:
         learned, like, ignored = _learn(request)
@@ -96,6 +103,10 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
         raise InputError("a header and no rows", table.label)
     tally = Tally()
     observers: list[Observer] = [tally, Narrator(sys.stdout, tally)]
+    history = None
+    if request.report is not None:
+        history = History()
+        observers.append(history)
     interrupted = False
     with ExitStack() as stack:
         if request.readings is not None:
@@ -115,10 +126,30 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
         )
     for line in summary(tally, len(layout.channels), settled_on):
         print(line)
+    if history is not None:
+        _report(request, layout, watch, settled_on, tally, history)
     if interrupted:
         _say([f"interrupted after row {tally.rows}"])
         return INTERRUPTED
     return ALARM_RAISED if tally.alarms else NO_ALARM
+
+
+def _report(
+    request: WatchRequest, layout: Layout, watch: Watch, settled_on: str, tally: Tally, history: History
+) -> None:
+    from perpend.report.page import About, write_report
+
+    clock = layout.clock
+    about = About(
+        title="standard input" if request.source == "-" else Path(request.source).name,
+        channels=layout.channels,
+        learned=settled_on if request.learn is None else settled_on.replace(request.learn, Path(request.learn).name),
+        time_label="row" if clock is None else clock.column,
+        dated=clock is not None and clock.dated,
+        settings={name.replace("_", " "): value for name, value in request.settings.items()} | {"rank": watch.rank},
+        constant=watch.constant,
+    )
+    write_report(str(request.report), about, tally, history)
 
 
 def _learn(request: WatchRequest) -> tuple[np.ndarray[Any, np.dtype[np.float64]], list[str], list[str]]:
@@ -146,10 +177,19 @@ def _make_watch(channels: list[str], request: WatchRequest, table: Table) -> Wat
 
 
 def _keep_input(request: WatchRequest) -> None:
-    target = Path(str(request.readings))
-    for name in (request.source, request.learn):
-        if name not in (None, "-") and target.exists() and Path(name).exists() and target.samefile(name):
-            raise InputError("--readings: this would overwrite the input; give another name", str(target))
+    for option, target in (("--readings", request.readings), ("--report", request.report)):
+        for name in (request.source, request.learn):
+            if target is None or name in (None, "-"):
+                continue
+            if Path(target).exists() and Path(name).exists() and Path(target).samefile(name):
+                raise InputError(f"{option}: this would overwrite the input; give another name", target)
+
+
+def _need_plots(name: str) -> None:
+    if importlib.util.find_spec("matplotlib") is None:
+        raise InputError("--report needs the extra: pip install 'perpend[report]'")
+    if not Path(name).resolve().parent.is_dir():
+        raise InputError("--report: cannot be written: there is no such folder", name)
 
 
 def _guesses(table: Table) -> list[str]:
