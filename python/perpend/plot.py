@@ -3,6 +3,7 @@
 Each function gives a figure of matplotlib, drawn without its global state, or draws into the (sub)figure it is handed.
 """
 
+import importlib
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -12,7 +13,7 @@ from numpy.typing import ArrayLike, NDArray
 from perpend.envelope import Series, envelope, spans
 
 try:
-    from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
+    dates: Any = importlib.import_module("matplotlib.dates")  # untyped
     from matplotlib.figure import Figure, SubFigure
     from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 except ImportError as error:
@@ -196,7 +197,7 @@ def mark_alarms(axes: Any, where: NDArray[Any], alarm: ArrayLike, *, numbered: b
         axes.axvspan(left, right, facecolor="none", edgecolor=ALARM, hatch="////", linewidth=0.8, alpha=0.55)
     if not (numbered and found):
         return
-    room = LABEL_INCHES / float(axes.figure.get_figwidth()) * (where[-1] - where[0])
+    room = LABEL_INCHES / _width(axes) * (where[-1] - where[0])
     for first, last, row in _clusters([where[start] for start, _ in found], room):
         axes.annotate(
             str(first) if first == last else f"{first}-{last}",
@@ -215,9 +216,16 @@ def label_time(axes: Any, label: str, *, dated: bool) -> None:
     if not dated:
         axes.set_xlabel(plain(label))
         return
-    locator = AutoDateLocator(maxticks=max(3, int(axes.figure.get_figwidth() * 0.8)))
+    # With fewer than five ticks the locator finds no interval for some spans.
+    most: Any = max(5, int(0.8 * _width(axes)))
+    locator: Any = dates.AutoDateLocator(minticks=2, maxticks=most)
     axes.xaxis.set_major_locator(locator)
-    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))
+    axes.xaxis.set_major_formatter(dates.ConciseDateFormatter(locator))
+
+
+def _width(axes: Any) -> float:
+    """Width in inches of the figure or subfigure that axes are in."""
+    return float(axes.figure.bbox.width / axes.figure.dpi)
 
 
 def _clusters(places: list[Any], room: Any) -> list[tuple[int, int, Any]]:

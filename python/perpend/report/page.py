@@ -14,6 +14,7 @@ from perpend.report.charts import alarm_charts, drift_chart, heading, logbook_ch
 from perpend.report.history import History
 from perpend.tally import Alarm, Moment, Tally
 
+NOTHING_FROM_OUTSIDE = "default-src 'none'; style-src 'unsafe-inline'; img-src data:"
 LISTED = 1000
 NEW_LINE = "\n"
 
@@ -106,6 +107,7 @@ def make_page(about: About, tally: Tally, history: History) -> str:
             "<!DOCTYPE html>",
             '<html lang="en"><head><meta charset="utf-8">',
             '<meta name="viewport" content="width=device-width, initial-scale=1">',
+            f'<meta http-equiv="Content-Security-Policy" content="{NOTHING_FROM_OUTSIDE}">',
             f"<title>perpend: {escape(about.title)}</title>",
             '<link rel="icon" href="data:,">',
             f"<style>\n{style}</style></head><body>",
@@ -165,11 +167,15 @@ def _row(number: int, alarm: Alarm) -> str:
     }
     return (
         "<tr>"
-        + "".join(
-            f'<td data-label="{label}">{escape(text).replace(NEW_LINE, "<br>")}</td>' for label, text in cells.items()
-        )
+        + "".join(f'<td data-label="{label}">{_kept_together(text)}</td>' for label, text in cells.items())
         + "</tr>"
     )
+
+
+def _kept_together(text: str) -> str:
+    """Keep a number with its percent sign and a date with its time."""
+    lines = [line.replace(" %", "\u00a0%") for line in text.split(NEW_LINE)]
+    return "<br>".join([escape(lines[0]), *(f"<span>{escape(line)}</span>" for line in lines[1:])])
 
 
 def _where(moment: Moment) -> str:
