@@ -1,0 +1,1 @@
+"""The demo: an invented ice-water chiller plant, its troubles, and what the watch makes of them."""

@@ -1,0 +1,147 @@
+"""Tell a run in plain lines: alarms as they come, a summary at the end."""
+
+import math
+import textwrap
+from collections.abc import Sequence
+from typing import TextIO
+
+from perpend._core import Reading
+from perpend.intake import Row
+from perpend.tally import Alarm, Moment, Tally, largest_excess
+
+CAUTION = "perpend advises; it is no protective system. Suspects are not causes."
+LABEL = 10
+WIDTH = 80
+
+
+class Narrator:
+    """Prints a line when an alarm goes on or off; each is out before the next row is read.
+
+    Parameters
+    ----------
+    out : text stream
+        Where to.
+    tally : Tally
+        Has taken a row before the narrator does.
+    """
+
+    def __init__(self, out: TextIO, tally: Tally) -> None:
+        self._out = out
+        self._tally = tally
+        self._on = False
+
+    def take(self, row: Row, reading: Reading) -> None:
+        """Say what changed with this row, if anything did."""
+        if reading.alarm == self._on:
+            return
+        self._on = reading.alarm
+        where = placed(Moment.of(row))
+        if reading.alarm:
+            excess = largest_excess(reading)
+            self._say(f"{where}  ALARM  {excess or ''}".rstrip())
+            self._say(wrapped("    suspects: ", named(reading.suspects(3), reading)))
+        else:
+            self._say(f"{where}  alarm off after {counted(self._tally.alarms[-1].rows, 'row')}")
+
+    def _say(self, line: str) -> None:
+        self._out.write(line + "\n")
+        self._out.flush()
+
+
+def summary(tally: Tally, channels: int, learned: str) -> list[str]:
+    """Write the end of a run.
+
+    Parameters
+    ----------
+    tally : Tally
+        What was counted.
+    channels : int
+        Channels a row.
+    learned : str
+        What the watch settled on.
+
+    Returns
+    -------
+    list of str
+        Lines, at most 80 wide for names of usual length.
+    """
+    lines = [
+        line("rows", f"{tally.rows:,} of {channels} channels; settled on {learned}"),
+        line("gaps", _gaps(tally)),
+        line("healthy", f"{share(tally.healthy, tally.judged)} of {counted(tally.judged, 'judged row')}"),
+    ]
+    if tally.adopted:
+        lines.append(line("adopted", f"{counted(tally.adopted, 'row')} learned beyond a limit, after the hold"))
+    lines.append(line("alarms", f"{len(tally.alarms)}" if tally.alarms else "none"))
+    for number, alarm in enumerate(tally.alarms, start=1):
+        lines += _alarm(number, alarm)
+    lines += [line("drift", drift_text(tally.last)), "", CAUTION]
+    return lines
+
+
+def line(label: str, text: str) -> str:
+    """Set a label before a text."""
+    return f"{label:<{LABEL}}{text}"
+
+
+def wrapped(label: str, text: str) -> str:
+    """Set a label before a text and fold it at 80 columns, under itself."""
+    return textwrap.fill(label + text, WIDTH, subsequent_indent=" " * len(label), break_on_hyphens=False)
+
+
+def placed(moment: Moment) -> str:
+    """Write where a row stands."""
+    return f"row {moment.number}  {moment.text}".rstrip()
+
+
+def counted(count: int, noun: str) -> str:
+    """Write a count with its noun."""
+    return f"{count:,} {noun}" + ("" if count == 1 else "s")
+
+
+def share(part: int, whole: int) -> str:
+    """Write a share in percent; a dash where there is nothing to share."""
+    return f"{100 * part / whole:.2f} %" if whole else "-"
+
+
+def named(suspects: Sequence[tuple[str, float]], reading: Reading | None = None) -> str:
+    """Write suspects with their shares, and what else is known of them."""
+    stuck = set() if reading is None else set(reading.stuck)
+    vanished = set() if reading is None else set(reading.vanished)
+    texts = []
+    for name, part in suspects:
+        remark = " (stuck)" if name in stuck else " (vanished)" if name in vanished else ""
+        texts.append(f"{name}{remark} {100 * part:.0f} %")
+    return ", ".join(texts) or "none stands out"
+
+
+def drift_text(reading: Reading | None) -> str:
+    """Write how far the model has moved from the accepted baseline."""
+    if reading is None:
+        return "-"
+    texts = []
+    if reading.drift is None:
+        texts.append("no angle: the axes are too close in energy for one to mean anything")
+    else:
+        texts.append(f"{math.degrees(reading.drift):.1f} degrees from the baseline")
+    if reading.captured is not None:
+        texts.append(f"{100 * reading.captured:.1f} % of it still captured")
+    if reading.mean_shift is not None:
+        texts.append(f"mean moved {reading.mean_shift:.2g} spreads")
+    return f"\n{'':<{LABEL}}".join(texts)
+
+
+def _gaps(tally: Tally) -> str:
+    if not tally.gaps:
+        return "none"
+    text = f"{counted(tally.gaps, 'cell')} in {counted(tally.rows_with_gaps, 'row')}"
+    return text + (f"; {tally.unjudged:,} of them not judged" if tally.unjudged else "")
+
+
+def _alarm(number: int, alarm: Alarm) -> list[str]:
+    until = "still on" if alarm.end is None else f"to {placed(alarm.end)}"
+    lines = [f"{number:>4}  {placed(alarm.start)} {until}, {counted(alarm.rows, 'row')}"]
+    if alarm.peak is not None and alarm.peak_at is not None:
+        lines.append(f"      peak {alarm.peak} at row {alarm.peak_at.number}")
+    lines.append(wrapped("      suspects: ", named(alarm.suspects())))
+    return lines
