@@ -155,6 +155,9 @@ def test_plain_classical_gram_schmidt_loses_everything_on_them(name):
 
 # Regressions
 
+# Digits that the certified values are printed to.
+CERTIFIED = 15.0
+
 
 def design(case):
     """The columns of the model and the target, in binary64."""
@@ -188,20 +191,17 @@ def table():
             "add": digits(basis.solve(y)[0], exact),
             "add_rows": digits(by_rows.solve(y)[0], exact),
             "lstsq": digits(batch, exact),
-            "gate": min(case["cgs2"] - 1, case["ceiling"]),
+            "gate": min(case["cgs2"] - 1, case["ceiling"], CERTIFIED),
             "ceiling": case["ceiling"],
         }
     return lines
 
 
-def test_the_table_of_digits_is_complete(table, capsys):
-    with capsys.disabled():
-        print(f"\n{'NIST StRD':>10} {'add':>6} {'add_rows':>8} {'lstsq':>6} {'gate':>6} {'ceiling':>7}")
-        for name, line in table.items():
-            ceiling = "exact" if line["ceiling"] == 99 else f"{line['ceiling']:.2f}"
-            print(
-                f"{name:>10} {line['add']:6.2f} {line['add_rows']:8.2f} {line['lstsq']:6.2f} {line['gate']:6.2f} {ceiling:>7}"
-            )
+def test_the_table_of_digits_holds_every_set(table):
+    print(f"\n{'NIST StRD':>10} {'add':>6} {'add_rows':>8} {'lstsq':>6} {'gate':>6} {'ceiling':>7}")
+    for name, line in table.items():
+        numbers = "{add:6.2f} {add_rows:8.2f} {lstsq:6.2f} {gate:6.2f}".format(**line)
+        print(f"{name:>10} {numbers} {'exact' if line['ceiling'] == 99 else format(line['ceiling'], '.2f'):>7}")
     assert list(table) == list(REGRESSIONS)
     assert len(table) == 11
 
