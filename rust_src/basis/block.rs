@@ -19,6 +19,9 @@ pub const BLOCK_ROWS: usize = 16;
 /// Blocks already subtracted are subtracted once more at most: a vector that needs more is swept on its own.
 const MOST_BLOCK_PASSES: u32 = 2;
 
+/// Norm, in units of eps, of what rounding to the stored type changes in a vector of length one, at most.
+const ROUNDING: f64 = 0.5;
+
 /// Room for a block. Made with the first one.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Workspace {
@@ -151,7 +154,9 @@ impl<T: Scalar> Basis<T> {
         self.h.extend_from_slice(&block.h[index * older..][..older]);
         self.h.extend_from_slice(&block.inside);
         let mut extra = 0;
-        if cleaned.norm > floor && cleaned.leftover > LOSS_LIMIT * T::EPSILON * cleaned.norm {
+        // What storing the block's own vectors rounded is not in their leftovers, and comes back times `inside`.
+        let suspected = cleaned.leftover.hypot(ROUNDING * T::EPSILON * norm_of(&block.inside));
+        if cleaned.norm > floor && suspected > LOSS_LIMIT * T::EPSILON * cleaned.norm {
             let q = self.q.view(rank);
             for buffer in [&mut self.s, &mut self.correction] {
                 buffer.resize(rank, 0.0);
@@ -160,7 +165,7 @@ impl<T: Scalar> Basis<T> {
             let measured = Measured { squares, s: &mut self.s, correction: &mut self.correction };
             cleaned = clean(q, w, measured, &mut self.h, floor);
             extra = cleaned.passes;
-            here.fill(0.0);
+            here.copy_from_slice(&self.s[..older]);
         }
         let reason = self.reason(norm, cleaned.norm, floor, cleaned.loss());
         if reason.is_none() {

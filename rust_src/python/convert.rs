@@ -112,9 +112,9 @@ fn as_float64<'py>(object: &Bound<'py, PyAny>) -> PyResult<Bound<'py, PyAny>> {
         let dtype = array.getattr("dtype")?.str()?;
         return Err(PyTypeError::new_err(format!("expected real numbers, got an array of {dtype}")));
     }
-    let array = array.call_method1("astype", ("float64",))?;
-    let array = if array.hasattr("mask")? { array.call_method1("filled", (f64::NAN,))? } else { array };
-    numpy.call_method1("ascontiguousarray", (array,))
+    // A single number keeps its no dimensions here, which `ascontiguousarray` would make one.
+    let array = array.call_method1("astype", ("float64", "C"))?;
+    if array.hasattr("mask")? { array.call_method1("filled", (f64::NAN,)) } else { Ok(array) }
 }
 
 /// Rows as a new array of their own type.

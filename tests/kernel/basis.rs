@@ -228,6 +228,35 @@ fn a_window_that_slides_stays_orthonormal_and_keeps_its_factor() {
     assert_holds(&basis, window.make_contiguous(), width);
 }
 
+/// Rows of a block that lie close together, off the basis before it: what storing the first of them rounded must
+/// not come back in the others, magnified.
+fn add_close_rows<T: Scalar>(spread: f64) {
+    let (dim, older, close) = (200, 30, 9);
+    let mut noise = Noise(17);
+    let mut basis = Basis::<T>::new(dim, None, None).unwrap();
+    let mut steps = Vec::new();
+    let first: Vec<f64> = (0..older).flat_map(|_| noise.vector(dim)).collect();
+    basis.add_rows(&first, &mut steps).unwrap();
+    let centre = noise.vector(dim);
+    let rows: Vec<f64> =
+        (0..close).flat_map(|_| centre.iter().map(|x| x + spread * noise.next()).collect::<Vec<_>>()).collect();
+    basis.add_rows(&rows, &mut steps).unwrap();
+    assert_eq!(basis.rank(), older + close);
+    let error = basis.orthogonality_error().unwrap();
+    assert!(error <= bound::<T>(older + close), "spread {spread:e}: {error:e}");
+}
+
+#[test]
+fn rows_close_together_in_one_block_come_out_orthonormal() {
+    for spread in [1.0, 1e-1, 1e-2, 1e-3] {
+        add_close_rows::<f64>(spread);
+        add_close_rows::<f32>(spread);
+    }
+    for spread in [1e-5, 1e-8, 1e-11] {
+        add_close_rows::<f64>(spread);
+    }
+}
+
 #[test]
 fn a_full_basis_says_so_and_still_measures() {
     let mut basis = Basis::<f64>::new(6, Some(2), None).unwrap();

@@ -1,0 +1,309 @@
+"""The basis against what a user would pick instead, on this machine: a table of ratios.
+
+Every answer is asserted before it is timed. Contenders run on one thread each and take turns, so that a busy machine
+slows both; what counts is the ratio of their medians in the same run.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import importlib
+import math
+import time
+from collections.abc import Callable, Iterable, Iterator
+from contextlib import AbstractContextManager
+from dataclasses import dataclass
+from types import ModuleType
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from perpend._core import Basis, kernel_path
+
+__all__ = ["SHORT", "Comparison", "compare", "conditions", "lines"]
+
+Matrix = NDArray[np.float64]
+Work = Callable[[], object]
+
+#: Shapes (entries a vector, vectors) that take a few seconds in all.
+SHORT = ((16, 4), (1000, 64), (10_000, 64))
+
+#: Seconds in one timing at least: far above the resolution of the clock.
+_SHORTEST = 2e-3
+#: Seconds spent on a comparison, about.
+_BUDGET = 2.0
+#: Timings a contender, at least and at most.
+_REPEATS = (5, 51)
+#: Shortest streams that say something about batch work: under it a call costs more than its arithmetic.
+_STREAM = 1000
+#: Rounding allowed to two contenders' answers, in units of eps times the square root of the entries of a vector;
+#: the vectors compared are random, of a condition below 100.
+_ROUNDING = 500.0
+#: Shape to which `compare` cuts down the cases it only checks.
+_CHECKED = (200, 16)
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """One line of the table.
+
+    Attributes
+    ----------
+    what, against : str
+        The contenders.
+    dim, rank : int
+        Entries a vector, and how many vectors.
+    seconds, other_seconds : float
+        Medians of the time one took; not a number where nothing was timed.
+    goal : float or None
+        The ratio to stay below; None for a line that is only there for scale.
+    """
+
+    what: str
+    against: str
+    dim: int
+    rank: int
+    seconds: float
+    other_seconds: float
+    goal: float | None
+
+    @property
+    def ratio(self) -> float:
+        """Share of the other's time."""
+        return self.seconds / self.other_seconds
+
+
+def _optional(name: str) -> ModuleType | None:
+    try:
+        return importlib.import_module(name)
+    except ImportError:
+        return None
+
+
+def _one_thread() -> AbstractContextManager[Any]:
+    threadpoolctl = _optional("threadpoolctl")
+    if threadpoolctl is None:
+        return contextlib.nullcontext()
+    limits: AbstractContextManager[Any] = threadpoolctl.threadpool_limits(limits=1)
+    return limits
+
+
+def conditions() -> Iterator[str]:
+    """Say under which conditions `compare` measures here: kernel path, and what is left out or in doubt.
+
+    Yields
+    ------
+    str
+        One line each.
+    """
+    yield f"kernel path {kernel_path()}, numpy {np.__version__}; medians of turns taken, one thread each"
+    if _optional("scipy.linalg") is None:
+        yield "scipy is not installed: nothing is compared with its qr_insert"
+    if _optional("threadpoolctl") is None:
+        yield "threadpoolctl is not installed: numpy may use more than one thread; set OMP_NUM_THREADS=1 beforehand"
+
+
+def _turns(ours: Work, theirs: Work) -> tuple[float, float]:
+    """Medians of the seconds each takes, timed in turns."""
+
+    def seconds(work: Work, calls: int) -> float:
+        start = time.perf_counter()
+        for _ in range(calls):
+            work()
+        return (time.perf_counter() - start) / calls
+
+    calls = [max(1, math.ceil(_SHORTEST / max(seconds(work, 3), 1e-9))) for work in (ours, theirs)]
+    # Warm, and long enough to plan by.
+    first = [seconds(work, count) for work, count in zip((ours, theirs), calls, strict=True)]
+    round_seconds = sum(count * each for count, each in zip(calls, first, strict=True))
+    repeats = min(max(_REPEATS[0], round(_BUDGET / round_seconds)), _REPEATS[1])
+    turns = [(seconds(ours, calls[0]), seconds(theirs, calls[1])) for _ in range(repeats)]
+    one, other = np.median(turns, axis=0)
+    return float(one), float(other)
+
+
+def _assert_alike(vectors: Matrix, triangular: Matrix, q: Matrix, r: Matrix) -> None:
+    """Two factorizations are one up to signs: rows of Q in `vectors`, columns in `q`."""
+    signs = np.where(np.diag(r) < 0, -1.0, 1.0)
+    slack = _ROUNDING * float(np.finfo(float).eps) * math.sqrt(vectors.shape[1])
+    np.testing.assert_allclose(vectors, (q * signs).T, rtol=0, atol=slack)
+    np.testing.assert_allclose(triangular, signs[:, None] * r, rtol=0, atol=slack * float(np.abs(r).max()))
+
+
+def _by_add(vectors: Matrix) -> Basis:
+    basis = Basis(vectors.shape[1], len(vectors))
+    for vector in vectors:
+        basis.add(vector)
+    return basis
+
+
+def _by_rows(vectors: Matrix) -> Basis:
+    basis = Basis(vectors.shape[1], len(vectors))
+    basis.add_rows(vectors)
+    return basis
+
+
+def _four_calls(q: Matrix, v: Matrix) -> tuple[Matrix, Matrix]:
+    """Gram-Schmidt twice, written by hand: coefficients and the new basis vector."""
+    h = q @ v
+    w = v - h @ q
+    s = q @ w
+    w -= s @ q
+    return h + s, w / np.linalg.norm(w)
+
+
+@dataclass(frozen=True)
+class _Contest:
+    """Two ways to do the same work, once their answers have been found alike."""
+
+    what: str
+    against: str
+    dim: int
+    rank: int
+    goal: float | None
+    ours: Work
+    theirs: Work
+
+    def timed(self, check: bool) -> Comparison:
+        if check:
+            self.ours()
+            self.theirs()
+        one, other = (math.nan, math.nan) if check else _turns(self.ours, self.theirs)
+        return Comparison(self.what, self.against, self.dim, self.rank, one, other, self.goal)
+
+
+def _streams(vectors: Matrix) -> Iterator[_Contest]:
+    """Whole streams against one batch factorization."""
+    rank, dim = vectors.shape
+    # The order of storage that batch QR works in: it has nothing to transpose.
+    columns = np.asfortranarray(vectors.T)
+    q, r = np.linalg.qr(columns)
+    for what, stream, goal in (("stream by add", _by_add, 0.6), ("stream by add_rows", _by_rows, 0.35)):
+        basis = stream(vectors)
+        _assert_alike(np.asarray(basis.vectors, float), basis.triangular, q, r)
+
+        def ours(stream: Callable[[Matrix], Basis] = stream) -> object:
+            return stream(vectors)
+
+        yield _Contest(what, "numpy.linalg.qr", dim, rank, goal, ours, lambda: np.linalg.qr(columns))
+
+
+def _one_more(vectors: Matrix, v: Matrix) -> Iterator[_Contest]:
+    """One vector more at full rank, and forgotten again, which costs nothing for the last."""
+    rank, dim = vectors.shape
+    basis = Basis(dim, rank + 1)
+    basis.add_rows(vectors)
+
+    def ours() -> None:
+        basis.add(v)
+        basis.drop(rank)
+
+    grown = basis.copy()
+    assert grown.add(v).accepted
+    rows, triangular = np.asarray(grown.vectors, float), grown.triangular
+    held, factor = rows[:rank].copy(), triangular[:rank, :rank].copy()
+
+    linalg = _optional("scipy.linalg")
+    if linalg is not None:
+        insert = linalg.qr_insert
+        q = np.asfortranarray(held.T)
+
+        def inserted() -> Any:
+            return insert(q, factor, v, rank, which="col", check_finite=False)
+
+        _assert_alike(rows, triangular, *inserted())
+        yield _Contest("one add", "scipy.linalg.qr_insert", dim, rank, 1 / 8, ours, inserted)
+
+    h, unit = _four_calls(held, v)
+    slack = _ROUNDING * float(np.finfo(float).eps) * math.sqrt(dim)
+    np.testing.assert_allclose(unit, rows[rank], rtol=0, atol=slack)
+    np.testing.assert_allclose(h, triangular[:rank, rank], rtol=0, atol=slack * float(np.abs(h).max()))
+    yield _Contest("one add", "Gram-Schmidt twice in numpy", dim, rank, None, ours, lambda: _four_calls(held, v))
+
+
+def _smallest(rng: np.random.Generator) -> _Contest:
+    """Compare what a call costs where there is next to nothing to do."""
+    dim, rank = 8, 2
+    vectors, v = rng.standard_normal((rank, dim)), rng.standard_normal(dim)
+    basis = _by_add(vectors)
+    expected = np.linalg.lstsq(vectors.T, v, rcond=None)[1][0]
+    np.testing.assert_allclose(basis.residual_norm(v) ** 2, expected, rtol=_ROUNDING * float(np.finfo(float).eps))
+    pair = np.array([0.75, -1.25])
+    return _Contest(
+        "residual_norm", "numpy.vdot of 2", dim, rank, 1.0, lambda: basis.residual_norm(v), lambda: np.vdot(pair, pair)
+    )
+
+
+def compare(cases: Iterable[tuple[int, int]] = SHORT, *, check: bool = False) -> Iterator[Comparison]:
+    """Compare on every case, the smallest call last.
+
+    Parameters
+    ----------
+    cases : iterable of (int, int)
+        Entries a vector, and how many vectors. Whole streams are compared from 1000 entries on.
+    check : bool
+        Assert every answer on cases cut down to a small size, and time nothing.
+
+    Yields
+    ------
+    Comparison
+        As soon as it has been made: a couple of seconds each, more where one call takes that long.
+
+    Raises
+    ------
+    AssertionError
+        Where two contenders disagree on an answer.
+    """
+    rng = np.random.default_rng(20261201)
+    with _one_thread():
+        for dim, rank in cases:
+            streams = dim >= _STREAM
+            size = (min(dim, _CHECKED[0]), min(rank, _CHECKED[1])) if check else (dim, rank)
+            vectors, v = rng.standard_normal(size[::-1]), rng.standard_normal(size[0])
+            contests = [*(_streams(vectors) if streams else ()), *_one_more(vectors, v)]
+            for contest in contests:
+                yield contest.timed(check)
+        yield _smallest(rng).timed(check)
+
+
+def _duration(seconds: float) -> str:
+    if math.isnan(seconds):
+        return "-"
+    for unit, size in (("s", 1.0), ("ms", 1e-3), ("us", 1e-6)):
+        if seconds >= size:
+            return f"{seconds / size:.3g} {unit}"
+    return f"{seconds / 1e-9:.3g} ns"
+
+
+def lines(comparisons: Iterable[Comparison]) -> Iterator[str]:
+    """Write comparisons as a table, a line as each arrives.
+
+    Parameters
+    ----------
+    comparisons : iterable of Comparison
+        From `compare`.
+
+    Yields
+    ------
+    str
+        A heading, then a line a comparison; ``ratio`` is the share of the other's time.
+    """
+    form = "{:<18}  {:<27}  {:>12}  {:>9}  {:>9}  {:>6}  {:>6}  {}"
+    yield form.format("what", "against", "shape", "median", "other", "ratio", "goal", "").rstrip()
+    for line in comparisons:
+        ratio = "-" if math.isnan(line.ratio) else f"{line.ratio:.3f}"
+        goal = "-" if line.goal is None else f"{line.goal:.3f}"
+        verdict = ""
+        if line.goal is not None and not math.isnan(line.ratio):
+            verdict = "reached" if line.ratio <= line.goal else "missed"
+        yield form.format(
+            line.what,
+            line.against,
+            f"{line.dim} x {line.rank}",
+            _duration(line.seconds),
+            _duration(line.other_seconds),
+            ratio,
+            goal,
+            verdict,
+        ).rstrip()
