@@ -26,7 +26,7 @@ impl<T: Scalar> Tracker<T> {
     /// As [`Tracker::refresh`].
     pub fn certificate(&mut self) -> Result<Certificate, Error> {
         self.refresh()?;
-        let lost = self.lost * self.per_weight();
+        let lost = self.lost_energy();
         let weakest = self.energies().last().copied().unwrap_or(0.0);
         let gap = weakest - self.guard_energies().first().copied().unwrap_or(0.0);
         let sine = (gap > lost).then(|| lost / (gap - lost)).filter(|&sine| sine <= 1.0);

@@ -78,6 +78,16 @@ impl Factor {
         }
     }
 
+    /// `R^T x`.
+    pub(super) fn apply_transposed(&self, x: &[f64], image: &mut [f64]) {
+        image[..self.size].fill(0.0);
+        for (index, &factor) in x[..self.size].iter().enumerate() {
+            for (out, entry) in image[index..].iter_mut().zip(self.tail(index)) {
+                *out += factor * entry;
+            }
+        }
+    }
+
     /// Columns reflected by `I - 2 u u^T`, the last of them cut off, rows rotated back to triangular form.
     ///
     /// The reflected matrix is `R - 2 (R u) u^T`: one sweep of rotations from below turns `R u` into a multiple of the

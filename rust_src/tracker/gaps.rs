@@ -1,184 +1,215 @@
-//! Rows with gaps.
+//! Missing channels: what the model says they would have been.
 //!
-//! With `A` the reported axes, `P = A^T A` projects on them. The values `x` in the gaps that the axes themselves would give,
-//! once their coefficients are fitted to the observed channels by least squares, solve `(I - P_gg) x = P_go d_o`: a
-//! system as large as there are gaps. Where there are more gaps than axes, the coefficients themselves are the smaller
-//! system, `(I - A_g A_g^T) c = A_o d_o`.
+//! The sums over the observed channels are those over all, which are known, less those over the gaps, or are
+//! taken directly, whichever is shorter: the work grows with the number of gaps, not with the channels.
 
-use super::Tracker;
-use crate::error::Error;
-use crate::ops;
+use super::normal::{decompose, substitute};
+use super::subspace::Subspace;
 use crate::rows::Rows;
 use crate::scalar::Scalar;
 
-/// A pivot of the system below this means that the observed channels hardly tell the axes apart: the least squares
-/// would enlarge the noise of the observed channels by its reciprocal.
-const LEAST_PIVOT: f64 = 1e-4;
+/// Share of a coefficient's direction that the observed channels must hold for the coefficient to be determined:
+/// below it more than half of the digits are gone.
+const DETERMINED: f64 = 1e-8;
+/// Ridge relative to each diagonal entry: the square root of eps, halfway between what rounding makes of a direction
+/// that is not observed and what the ridge takes from one that is. A second pass takes the latter back.
+const RIDGE: f64 = 1.5e-8;
 
-/// A row split against the reported axes.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub struct Split {
-    /// Square of the residual over the observed channels, times channels / observed.
-    pub residual_norm_squared: f64,
-    /// Channels the row lacks.
-    pub missing: usize,
-    /// Whether the observed channels tell the axes apart.
-    pub determined: bool,
-}
-
-/// Room for rows with gaps.
+/// Workspace for rows with gaps.
 #[derive(Clone, Debug)]
 pub(super) struct Gaps {
-    places: Vec<usize>,
-    matrix: Vec<f64>,
-    right: Vec<f64>,
-    coefficients: Vec<f64>,
+    channels: usize,
+    /// Missing channels of the last row, ascending.
+    missing: Vec<usize>,
+    square: Vec<f64>,
+    column: Vec<f64>,
+    image: Vec<f64>,
+    total: Vec<f64>,
+    fitted: Vec<f64>,
 }
 
 impl Gaps {
-    pub fn with_room(channels: usize, rank: usize) -> Self {
+    /// Workspace for at most `limit` directions.
+    pub(super) fn new(channels: usize, limit: usize) -> Self {
         Self {
-            places: Vec::with_capacity(channels),
-            matrix: Vec::with_capacity(rank * rank),
-            right: Vec::with_capacity(rank),
-            coefficients: vec![0.0; rank],
+            channels,
+            missing: Vec::with_capacity(channels),
+            square: vec![0.0; limit * limit],
+            column: vec![0.0; limit],
+            image: vec![0.0; limit],
+            total: vec![0.0; limit],
+            fitted: vec![0.0; limit],
         }
     }
 
-    /// Replaces NaN in `d`, a row less the mean, by what the axes give from the rest. False where they cannot be told
-    /// from it; `d` then has zeros there. `O(gaps (gaps + rank)^2)` and one sweep.
-    pub fn fill<T: Scalar>(&mut self, d: &mut [f64], axes: Rows<'_, T>) -> bool {
-        self.places.clear();
-        for (index, value) in d.iter_mut().enumerate() {
+    pub(super) fn missing(&self) -> &[usize] {
+        &self.missing
+    }
+
+    /// No gaps.
+    pub(super) fn clear(&mut self) {
+        self.missing.clear();
+    }
+
+    /// Notes the gaps of `row`; its index where an entry is infinite.
+    pub(super) fn find(&mut self, row: &[f64]) -> Result<(), usize> {
+        self.missing.clear();
+        for (channel, value) in row.iter().enumerate() {
             if value.is_nan() {
-                self.places.push(index);
-                *value = 0.0;
+                self.missing.push(channel);
+            } else if value.is_infinite() {
+                return Err(channel);
             }
         }
-        // b = A_o d_o, the gaps being zero.
-        ops::project(axes, d, &mut self.coefficients);
-        let order = self.places.len().min(axes.count());
-        self.matrix.resize(order * order, 0.0);
-        self.right.resize(order, 0.0);
-        if order < axes.count() { self.fill_gaps(d, axes) } else { self.fill_coefficients(d, axes) }
-    }
-
-    /// The system in the values of the gaps.
-    fn fill_gaps<T: Scalar>(&mut self, d: &mut [f64], axes: Rows<'_, T>) -> bool {
-        let order = self.places.len();
-        for (i, &row) in self.places.iter().enumerate() {
-            for (j, &column) in self.places.iter().enumerate().take(i + 1) {
-                let p: f64 = axes.iter().map(|axis| axis[row].to_f64() * axis[column].to_f64()).sum();
-                self.matrix[i * order + j] = f64::from(u8::from(i == j)) - p;
-            }
-            self.right[i] = axes.iter().zip(&self.coefficients).map(|(axis, c)| axis[row].to_f64() * c).sum();
-        }
-        let determined = solve(&mut self.matrix, order, &mut self.right);
-        if determined {
-            self.places.iter().zip(&self.right).for_each(|(&place, &value)| d[place] = value);
-        }
-        determined
-    }
-
-    /// The system in the coefficients.
-    fn fill_coefficients<T: Scalar>(&mut self, d: &mut [f64], axes: Rows<'_, T>) -> bool {
-        let order = axes.count();
-        for i in 0..order {
-            for j in 0..=i {
-                let (a, b) = (axes.row(i), axes.row(j));
-                let p: f64 = self.places.iter().map(|&gap| a[gap].to_f64() * b[gap].to_f64()).sum();
-                self.matrix[i * order + j] = f64::from(u8::from(i == j)) - p;
-            }
-        }
-        self.right.copy_from_slice(&self.coefficients);
-        let determined = solve(&mut self.matrix, order, &mut self.right);
-        if determined {
-            for &place in &self.places {
-                d[place] = axes.iter().zip(&self.right).map(|(axis, c)| axis[place].to_f64() * c).sum();
-            }
-        }
-        determined
-    }
-}
-
-/// Solves the symmetric positive definite system whose lower triangle is given, in place, by Cholesky. False where a pivot
-/// is too small.
-fn solve(matrix: &mut [f64], order: usize, x: &mut [f64]) -> bool {
-    for i in 0..order {
-        for j in 0..=i {
-            let product: f64 = (0..j).map(|k| matrix[i * order + k] * matrix[j * order + k]).sum();
-            let rest = matrix[i * order + j] - product;
-            if i > j {
-                matrix[i * order + j] = rest / matrix[j * order + j];
-            } else if rest < LEAST_PIVOT {
-                return false;
-            } else {
-                matrix[i * order + i] = rest.sqrt();
-            }
-        }
-        let sum: f64 = (0..i).map(|k| matrix[i * order + k] * x[k]).sum();
-        x[i] = (x[i] - sum) / matrix[i * order + i];
-    }
-    for i in (0..order).rev() {
-        let sum: f64 = (i + 1..order).map(|k| matrix[k * order + i] * x[k]).sum();
-        x[i] = (x[i] - sum) / matrix[i * order + i];
-    }
-    true
-}
-
-impl<T: Scalar> Tracker<T> {
-    /// Splits a row against the mean and the reported axes as they stand, refreshed where stale, without learning. NaN is
-    /// a gap: the coefficients are fitted to the observed channels, and the residual is zero in a gap.
-    ///
-    /// # Errors
-    /// [`Error::Length`], [`Error::NonFinite`] for an infinity.
-    pub fn split_into(
-        &mut self,
-        row: &[f64],
-        coefficients: &mut [f64],
-        residual: &mut [f64],
-    ) -> Result<Split, Error> {
-        let missing = self.check(row)?;
-        self.refresh()?;
-        let d = &mut self.room.d;
-        for ((d, mean), value) in d.iter_mut().zip(&self.mean).zip(row) {
-            *d = value - mean;
-        }
-        let axes = self.principal.axes();
-        let determined = missing == 0 || self.gaps.fill(d, axes);
-        ops::project(axes, d, coefficients);
-        ops::subtract(axes, coefficients, d, residual);
-        if missing > 0 {
-            row.iter()
-                .zip(residual.iter_mut())
-                .filter(|(value, _)| value.is_nan())
-                .for_each(|(_, out)| *out = 0.0);
-        }
-        let observed = (self.settings.channels - missing).max(1) as f64;
-        let scale = self.settings.channels as f64 / observed;
-        let residual_norm_squared = scale * ops::norm_squared(residual);
-        Ok(Split { residual_norm_squared, missing, determined })
-    }
-
-    /// The model's own value of a row: the mean, and what the reported axes give of the rest; gaps are filled.
-    ///
-    /// # Errors
-    /// As [`Tracker::split_into`].
-    pub fn reconstruct_into(&mut self, row: &[f64], value: &mut [f64]) -> Result<(), Error> {
-        self.check(row)?;
-        self.refresh()?;
-        let d = &mut self.room.d;
-        for ((d, mean), entry) in d.iter_mut().zip(&self.mean).zip(row) {
-            *d = entry - mean;
-        }
-        let axes = self.principal.axes();
-        self.gaps.fill(d, axes);
-        let coefficients = &mut self.gaps.coefficients;
-        ops::project(axes, d, coefficients);
-        for c in &mut *coefficients {
-            *c = -*c;
-        }
-        ops::subtract(axes, coefficients, &self.mean, value);
         Ok(())
+    }
+
+    /// Turns the coefficients `c = A d`, taken with zeros in the gaps, into those of the least-squares fit to the
+    /// observed channels. Coefficients that these do not determine are 0; false where there are such.
+    pub(super) fn fit<T: Scalar>(&mut self, axes: Rows<'_, T>, c: &mut [f64]) -> bool {
+        let rank = axes.count();
+        let gaps = self.missing.len();
+        if gaps == self.channels {
+            c.fill(0.0);
+            return rank == 0;
+        }
+        if gaps < rank {
+            // (I - A_m^T A_m) y = A_m^T c for the gaps themselves, then c += A_m y.
+            let (square, y) = (&mut self.square[..gaps * gaps], &mut self.image[..gaps]);
+            square.fill(0.0);
+            y.fill(0.0);
+            for (axis, &coefficient) in axes.iter().zip(&*c) {
+                for (index, &channel) in self.missing.iter().enumerate() {
+                    let entry = axis[channel].to_f64();
+                    y[index] += entry * coefficient;
+                    for (out, &other) in square[index * gaps..].iter_mut().zip(&self.missing[..=index]) {
+                        *out -= entry * axis[other].to_f64();
+                    }
+                }
+            }
+            square.iter_mut().step_by(gaps + 1).for_each(|entry| *entry += 1.0);
+            let determined = decompose(square, gaps, DETERMINED);
+            substitute(square, y);
+            for (axis, out) in axes.iter().zip(c) {
+                *out += self.missing.iter().zip(&*y).map(|(&m, y)| axis[m].to_f64() * y).sum::<f64>();
+            }
+            return determined;
+        }
+        // A_o A_o^T c = A d.
+        let Self { missing, square, column, .. } = self;
+        let (square, column) = (&mut square[..rank * rank], &mut column[..rank]);
+        square.fill(0.0);
+        let direct = gather(missing, self.channels, |channel, sign| {
+            for (out, axis) in column.iter_mut().zip(axes.iter()) {
+                *out = axis[channel].to_f64();
+            }
+            add_outer(square, column, sign);
+        });
+        if !direct {
+            square.iter_mut().step_by(rank + 1).for_each(|entry| *entry += 1.0);
+        }
+        let determined = decompose(square, rank, DETERMINED);
+        substitute(square, c);
+        determined
+    }
+
+    /// Fills the gaps of `delta`, which holds zeros there, with the model's values, given `h = Q delta`.
+    ///
+    /// The fit uses all tracked directions and is held to their energies: of two ways to explain the observed
+    /// channels the likelier is taken, so weak guard directions, which few channels cannot tell apart, stay small.
+    /// (The conditional mean under the tracked covariance with `noise` a channel, times the total weight, beside it.)
+    pub(super) fn fill<T: Scalar>(
+        &mut self,
+        model: &Subspace<T>,
+        noise: f64,
+        h: &mut [f64],
+        delta: &mut [f64],
+    ) {
+        let (q, factor) = (model.basis(), model.factor());
+        let size = q.count();
+        let Self { missing, square, column, image, .. } = self;
+        let (square, column, image) = (&mut square[..size * size], &mut column[..size], &mut image[..size]);
+        square.fill(0.0);
+        // R G R^T over the observed channels, in coordinates in which every direction has energy 1.
+        let direct = gather(missing, self.channels, |channel, sign| {
+            for (out, row) in column.iter_mut().zip(q.iter()) {
+                *out = row[channel].to_f64();
+            }
+            factor.apply(column, image);
+            add_outer(square, image, sign);
+        });
+        if !direct {
+            for row in 0..size {
+                for other in 0..=row {
+                    let (long, short) = (factor.tail(other), factor.tail(row));
+                    let sum: f64 = long[row - other..].iter().zip(short).map(|(a, b)| a * b).sum();
+                    square[row * size + other] += sum;
+                }
+            }
+        }
+        for (row, entry) in square.iter_mut().step_by(size + 1).enumerate() {
+            let scale: f64 = factor.tail(row).iter().map(|entry| entry * entry).sum();
+            *entry += RIDGE * scale + noise;
+        }
+        decompose(square, size, 0.0);
+        // t = 0, then twice t += A^-1 (R (h - G R^T t) - noise t), the observed part of the basis being G.
+        let Self { missing, column, image, total, fitted, .. } = self;
+        let (total, fitted) = (&mut total[..size], &mut fitted[..size]);
+        total.fill(0.0);
+        fitted.fill(0.0);
+        for _ in 0..2 {
+            let column = &mut column[..size];
+            column.copy_from_slice(fitted);
+            for &channel in &*missing {
+                let product: f64 = q.iter().zip(&*fitted).map(|(row, h)| row[channel].to_f64() * h).sum();
+                for (out, row) in column.iter_mut().zip(q.iter()) {
+                    *out -= product * row[channel].to_f64();
+                }
+            }
+            for (out, target) in column.iter_mut().zip(&*h) {
+                *out = target - *out;
+            }
+            let image = &mut image[..size];
+            factor.apply(column, image);
+            for (out, t) in image.iter_mut().zip(&*total) {
+                *out -= noise * t;
+            }
+            substitute(square, image);
+            for (sum, more) in total.iter_mut().zip(&*image) {
+                *sum += more;
+            }
+            factor.apply_transposed(total, fitted);
+        }
+        h.copy_from_slice(fitted);
+        for &channel in &*missing {
+            delta[channel] = q.iter().zip(&*h).map(|(row, h)| row[channel].to_f64() * h).sum();
+        }
+    }
+}
+
+/// Visits the gaps with sign -1, or the observed channels with sign 1, whichever are fewer; true for the latter.
+fn gather(missing: &[usize], channels: usize, mut visit: impl FnMut(usize, f64)) -> bool {
+    let direct = missing.len() * 2 > channels;
+    if direct {
+        let mut gaps = missing.iter().copied().peekable();
+        for channel in 0..channels {
+            if gaps.next_if_eq(&channel).is_none() {
+                visit(channel, 1.0);
+            }
+        }
+    } else {
+        for &channel in missing {
+            visit(channel, -1.0);
+        }
+    }
+    direct
+}
+
+/// Adds `sign x x^T` to the lower triangle.
+fn add_outer(square: &mut [f64], x: &[f64], sign: f64) {
+    for (row, &factor) in x.iter().enumerate() {
+        for (out, entry) in square[row * x.len()..].iter_mut().zip(&x[..=row]) {
+            *out += sign * factor * entry;
+        }
     }
 }

@@ -5,59 +5,58 @@ use crate::error::Error;
 use crate::scalar::Scalar;
 
 impl<T: Scalar> Tracker<T> {
-    /// Takes in all that `other` has learned, both decayed to the later of the two clocks. Exact where neither has given up
-    /// anything and none is given up here; otherwise within the certificate. `O(k^2 channels)` flops.
+    /// Takes in all that `other` has learned, as if its rows had been learned here too, the one that is behind in
+    /// time ([`Tracker::clock`]) forgotten down to the later clock. Exact where nothing is truncated; what truncation
+    /// gives up on either side, and here, is in the certificate. `O(channels (rank + guard)^2)`.
     ///
     /// # Errors
-    /// [`Error::Unlike`] where channels, memory or centring differ.
+    /// [`Error::Unlike`] where channels, rank, memory or centring differ; [`Error::Overflow`]. The tracker is then
+    /// as it was.
     pub fn merge(&mut self, other: &Self) -> Result<(), Error> {
         self.check_like(other)?;
-        let clock = self.clock.max(other.clock);
-        self.decay(clock - self.clock);
-        // Rounding of the difference apart, the clock is the later one.
-        self.clock = clock;
-        let kept = self.settings.kept(clock - other.clock);
-        let (here, there) = (self.weight, other.weight * kept);
-        if there == 0.0 {
-            return Ok(());
+        let behind = self.clock - other.clock;
+        let kept = self.settings.kept(behind.abs());
+        let mut theirs = other.mean.clone();
+        let mut other_kept = 1.0;
+        let energy = self.subspace.factor().energy() + other.subspace.factor().energy();
+        let mut mean = self.mean.clone();
+        if behind > 0.0 {
+            theirs.decay(kept);
+            other_kept = kept;
+        } else if behind < 0.0 {
+            mean.decay(kept);
         }
-        self.weight = here + there;
-        let mut row = vec![0.0; other.factor.size()];
-        for index in 0..other.factor.size() {
-            row.fill(0.0);
-            row[index..].copy_from_slice(other.factor.tail(index));
-            self.room.d.fill(0.0);
-            for (axis, value) in other.directions().iter().zip(&row) {
-                let weight = value * kept.sqrt();
-                self.room.d.iter_mut().zip(axis).for_each(|(d, q)| *d += weight * q.to_f64());
+        mean.merge(&theirs, &mut self.scaled);
+        if !(energy + crate::ops::norm_squared(&self.scaled)).is_finite() {
+            return Err(Error::Overflow { what: "squared distance of the means" });
+        }
+        self.mean = mean;
+        if behind < 0.0 {
+            self.subspace.decay(kept);
+        }
+        let rounding = 2.0 * f64::EPSILON * self.mean_norm();
+        self.subspace.absorb(&self.scaled, rounding);
+        // The rows of R Q, one by one: together they are the other's scatter.
+        let (q, factor) = (other.subspace.basis(), other.subspace.factor());
+        let root = other_kept.sqrt();
+        for row in 0..factor.size() {
+            self.scaled.fill(0.0);
+            for (direction, &entry) in factor.tail(row).iter().enumerate() {
+                for (out, value) in self.scaled.iter_mut().zip(q.row(row + direction)) {
+                    *out += root * entry * value.to_f64();
+                }
             }
-            self.absorb();
+            self.subspace.absorb(&self.scaled, 0.0);
         }
-        if self.settings.center {
-            // Between the two means lies the scatter here there / (here + there) delta delta^T.
-            let scale = (here * (there / self.weight)).sqrt();
-            for index in 0..self.mean.len() {
-                let delta = match (self.seen[index], other.seen[index]) {
-                    (true, true) => other.mean[index] - self.mean[index],
-                    (false, true) => {
-                        self.mean[index] = other.mean[index];
-                        self.seen[index] = true;
-                        0.0
-                    }
-                    _ => 0.0,
-                };
-                self.room.d[index] = scale * delta;
-                self.mean[index] += there / self.weight * delta;
-            }
-            self.absorb();
-        }
-        self.lost += other.lost * kept;
+        self.subspace.add_lost(other_kept * other.subspace.lost());
+        self.clock = self.clock.max(other.clock);
         self.samples += other.samples;
         self.skipped += other.skipped;
-        self.principal.learned(there);
+        self.principal.outdate();
         Ok(())
     }
 
+    /// Refuses a model of another kind.
     fn check_like(&self, other: &Self) -> Result<(), Error> {
         let (mine, theirs) = (&self.settings, &other.settings);
         let pairs = [
@@ -72,5 +71,9 @@ impl<T: Scalar> Tracker<T> {
             }
         }
         Ok(())
+    }
+
+    fn mean_norm(&self) -> f64 {
+        crate::ops::norm_squared(self.mean.values()).sqrt()
     }
 }

@@ -1,103 +1,97 @@
 //! The drifting subspace.
 //!
-//! What has been learned is the weighted mean and the weighted scatter `C = sum_i w_i (x_i - mean)(x_i - mean)^T` of all rows,
-//! each weight worth `lambda = 1 - 1/memory` less a tick. `C` is kept as `Q^T R^T R Q`, with `Q` orthonormal, `k` rows of
-//! `channels`, and `R` a small upper triangle: a factor, never a covariance, so that a small energy beside a large one
-//! keeps its digits.
+//! The scatter of the rows about their weighted mean, forgotten at a constant rate,
 //!
-//! A tick decays `R` and borders it by the new row: the coefficients of the row on `Q`, and the norm of what `Q` does not
-//! explain, whose direction becomes one more row of `Q`. One direction too many is then given up, the one that loses the
-//! least: the right singular vector `z` of the bordered factor that belongs to its smallest singular value. A reflection
-//! that sends `z` to the last unit vector is one rank-one change of `Q`, and one of `R`, which rotations bring back to a
-//! triangle. So a tick costs `O(channels k)`, whatever happens; the reported principal axes are found from `R` when they
-//! are asked for.
+//! ```text
+//! C <- lambda C + (lambda w omega / (lambda w + omega)) d d^T,    w <- lambda w + omega,
+//! ```
 //!
-//! A tick makes five passes over `Q`: project, subtract with measurement (one read from memory, one from cache), reflect
-//! (read and write), and one row measured against the others: `12 k channels` flops, and `O(k^2)` for the factor.
+//! (`d` the row less the old mean, `omega` its weight, `w` the total weight) is kept as `C = (R Q)^T (R Q)`: `k` = rank +
+//! guard orthonormal rows `Q` and a triangular `R` of that size, never squared. A row borders `R` by one; the weakest
+//! of the `k + 1` directions is given up, by one Householder reflection of the basis and a QR update of `R`. The cost of
+//! a tick is constant: `12 k channels` flops in four sweeps, `O(k^2)` beside them. (It gives the subspace of the
+//! classical rotate-and-cut update: Levy & Lindenbaum, IEEE Trans. Image Process. 9 (2000) 1371-1374; the mean as in
+//! Ross, Lim, Lin, Yang, Int. J. Comput. Vision 77 (2008) 125-141.)
 //!
-//! The scatter given up is known: with `d` the singular value given up at a tick, `lost <- lambda lost + d^2` is the trace
-//! of what the tracked factor lacks, and no energy is further off than that (`certificate`).
+//! Energies are variances, `C / w`. Principal axes are made from `R` when asked for. Rows whose deviations square out of
+//! the range of numbers are refused; deviations below `1e-150` count as zero.
 
 mod certificate;
 mod factor;
 mod gaps;
+mod mean;
 mod merge;
+mod normal;
 mod principal;
 mod settings;
 mod smallest;
+mod split;
+mod subspace;
 mod tridiagonal;
 mod update;
 
 pub use certificate::Certificate;
-pub use gaps::Split;
 pub use settings::Settings;
+pub use split::Split;
 pub use update::{Skipped, Update};
 
+use crate::angles::principal_angles;
 use crate::error::Error;
 use crate::memory::check_room;
-use crate::orthonormal::{Mender, orthogonality_error};
-use crate::rows::{RowStore, Rows};
+use crate::orthonormal::orthogonality_error;
+use crate::rows::Rows;
 use crate::scalar::Scalar;
-use factor::Factor;
 use gaps::Gaps;
+use mean::Mean;
 use principal::Principal;
-use smallest::Smallest;
-use update::Room;
+use subspace::Subspace;
 
-/// A subspace that follows a stream of rows.
-#[derive(Clone)]
+/// Mean, principal axes and energies of a stream of rows, learned a row at a time, the past forgotten at a constant rate.
+#[derive(Clone, Debug)]
 pub struct Tracker<T: Scalar> {
     settings: Settings,
-    /// The tracked directions; as many as the factor has rows count.
-    q: RowStore<T>,
-    factor: Factor,
-    smallest: Smallest,
-    mender: Mender,
-    mean: Vec<f64>,
-    /// Channels that have been observed.
-    seen: Vec<bool>,
-    /// Sum of the weights of the rows learned, each decayed.
-    weight: f64,
-    /// Trace of the scatter given up.
-    lost: f64,
-    /// Ticks passed.
-    clock: f64,
-    samples: u64,
-    skipped: u64,
+    mean: Mean,
+    subspace: Subspace<T>,
     principal: Principal<T>,
     gaps: Gaps,
-    room: Room,
+    samples: u64,
+    skipped: u64,
+    clock: f64,
+    /// The row less the mean, and what the scatter gains by it.
+    delta: Vec<f64>,
+    scaled: Vec<f64>,
+    /// Workspace: coefficients on the basis, and on the axes.
+    coefficients: Vec<f64>,
+    scores: Vec<f64>,
 }
 
 impl<T: Scalar> Tracker<T> {
-    /// A tracker that has learned nothing.
+    /// A tracker that has learned nothing. Holds `2 rank + guard` rows of `channels` in the stored type and a few in
+    /// `f64`; from here on a row allocates nothing.
     ///
     /// # Errors
-    /// [`Error::Parameter`] naming the setting that is out of its range; [`Error::Memory`].
+    /// [`Error::Parameter`] where rank, guard or memory is out of its range; [`Error::Memory`].
     pub fn new(settings: Settings) -> Result<Self, Error> {
         settings.check()?;
         let (channels, limit) = (settings.channels, settings.directions());
         // Directions, axes and workspace; the factor and what searches it.
         check_room(
-            channels.saturating_add(4 * limit),
-            limit.saturating_add(settings.rank).saturating_add(8),
+            channels.saturating_add(6 * limit),
+            limit.saturating_add(2 * settings.rank).saturating_add(12),
         )?;
         Ok(Self {
             settings,
-            q: RowStore::zeros(limit, channels),
-            factor: Factor::with_room(limit + 1),
-            smallest: Smallest::with_room(limit + 1),
-            mender: Mender::with_room(limit, channels),
-            mean: vec![0.0; channels],
-            seen: vec![false; channels],
-            weight: 0.0,
-            lost: 0.0,
-            clock: 0.0,
+            mean: Mean::new(channels, settings.center),
+            subspace: Subspace::new(channels, limit),
+            principal: Principal::new(channels, settings.rank, limit),
+            gaps: Gaps::new(channels, limit),
             samples: 0,
             skipped: 0,
-            principal: Principal::new(channels, settings.rank, limit),
-            gaps: Gaps::with_room(channels, settings.rank),
-            room: Room::new(channels, limit),
+            clock: 0.0,
+            delta: vec![0.0; channels],
+            scaled: vec![0.0; channels],
+            coefficients: vec![0.0; limit],
+            scores: vec![0.0; settings.rank],
         })
     }
 
@@ -107,10 +101,10 @@ impl<T: Scalar> Tracker<T> {
         &self.settings
     }
 
-    /// The weighted mean of the rows learned; zero where `center` is off, and in channels not yet observed.
+    /// The weighted mean, a number a channel, in the unit of the rows; zeros where none is taken off.
     #[must_use]
     pub fn mean(&self) -> &[f64] {
-        &self.mean
+        self.mean.values()
     }
 
     /// Rows learned.
@@ -119,29 +113,46 @@ impl<T: Scalar> Tracker<T> {
         self.samples
     }
 
-    /// Rows skipped because too few of their channels were observed.
+    /// Rows skipped because fewer channels were observed than `rank`.
     #[must_use]
     pub fn skipped(&self) -> u64 {
         self.skipped
     }
 
-    /// Sum of the weights of the rows learned, each decayed to now.
+    /// Ticks passed: the sum of `elapsed` over the rows learned.
+    #[must_use]
+    pub fn clock(&self) -> f64 {
+        self.clock
+    }
+
+    /// Sum of the weights of the rows learned, as far as they are remembered; `memory` in the long run.
     #[must_use]
     pub fn total_weight(&self) -> f64 {
-        self.weight
+        self.mean.total()
     }
 
-    /// The tracked directions, reported and guard, in no particular order.
-    #[must_use]
-    pub fn directions(&self) -> Rows<'_, T> {
-        self.q.view(self.factor.size())
+    /// Principal angles between the two models' axes in radians, ascending, after a refresh of both.
+    ///
+    /// # Errors
+    /// [`Error::Length`] where the channels differ in number.
+    pub fn angles<U: Scalar>(&mut self, other: &mut Tracker<U>) -> Result<Vec<f64>, Error> {
+        self.refresh()?;
+        other.refresh()?;
+        principal_angles(self.principal.found(), other.principal.found())
     }
 
-    /// Spectral norm of `I - Q Q^T` of the tracked directions, computed now.
+    /// Spectral norm of `I - Q Q^T` for the tracked basis, computed now: the figure on which the others rest.
+    /// `2 (rank + guard)^2 channels` flops.
     ///
     /// # Errors
     /// [`Error::NoConvergence`], never seen.
     pub fn orthogonality_error(&self) -> Result<f64, Error> {
         orthogonality_error(self.directions())
+    }
+
+    /// The tracked directions, reported and guard, in no particular order.
+    #[must_use]
+    pub fn directions(&self) -> Rows<'_, T> {
+        self.subspace.basis()
     }
 }

@@ -1,182 +1,205 @@
-//! Principal axes and energies, found from the factor when they are asked for.
+//! Principal axes and energies, from the small factor when they are asked for.
 
 use super::Tracker;
-use crate::angles::principal_angles;
+use super::subspace::Subspace;
 use crate::dense::Svd;
 use crate::error::Error;
 use crate::ops;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
 
-/// The axes of the last refresh.
+/// Axes and energies as of the last refresh.
+#[derive(Clone, Debug)]
 pub(super) struct Principal<T> {
     axes: RowStore<T>,
-    rank: usize,
-    /// Variances along all directions, reported and guard, descending.
+    fresh: RowStore<T>,
+    count: usize,
+    stale: bool,
+    /// Energies of all directions tracked.
     energies: Vec<f64>,
-    svd: Svd,
+    /// Energy of all channels.
+    total: f64,
+    /// Energy given up by truncation.
+    lost: f64,
+    svd: Workspace,
     matrix: Vec<f64>,
-    coefficients: Vec<f64>,
-    sum: Vec<f64>,
-    zero: Vec<f64>,
-    /// Weight learned since.
-    since: f64,
+    weights: Vec<f64>,
+    overlap: Vec<f64>,
+    zeros: Vec<f64>,
+    axis: Vec<f64>,
 }
 
-impl<T: Scalar> Clone for Principal<T> {
+/// Room for the decomposition, and the size it was made for; a copy makes its own when it needs it.
+#[derive(Default)]
+struct Workspace(Option<(usize, Svd)>);
+
+impl Clone for Workspace {
     fn clone(&self) -> Self {
-        let limit = self.energies.len();
-        let mut clone = Self::new(self.axes.dim(), self.rank, limit);
-        clone.axes = self.axes.clone();
-        clone.energies.copy_from_slice(&self.energies);
-        clone.since = self.since;
-        clone
+        Self(None)
+    }
+}
+
+impl std::fmt::Debug for Workspace {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        f.write_str("Workspace")
     }
 }
 
 impl<T: Scalar> Principal<T> {
-    pub fn new(channels: usize, rank: usize, limit: usize) -> Self {
+    pub(super) fn new(channels: usize, rank: usize, limit: usize) -> Self {
         Self {
             axes: RowStore::zeros(rank, channels),
-            rank,
+            fresh: RowStore::zeros(rank, channels),
+            count: 0,
+            stale: false,
             energies: vec![0.0; limit],
-            svd: Svd::new(limit, limit),
+            total: 0.0,
+            lost: 0.0,
+            svd: Workspace::default(),
             matrix: vec![0.0; limit * limit],
-            coefficients: vec![0.0; limit],
-            sum: vec![0.0; channels],
-            zero: vec![0.0; channels],
-            since: 0.0,
+            weights: vec![0.0; limit],
+            overlap: vec![0.0; rank],
+            zeros: vec![0.0; channels],
+            axis: vec![0.0; channels],
         }
     }
 
-    /// Notes that a row of that weight was learned.
-    pub fn learned(&mut self, weight: f64) {
-        self.since += weight;
+    /// The factor has changed.
+    pub(super) fn outdate(&mut self) {
+        self.stale = true;
     }
 
-    /// The reported axes.
-    pub fn axes(&self) -> Rows<'_, T> {
-        self.axes.view(self.rank)
+    /// The axes found: fewer than the rank while fewer directions have been seen.
+    pub(super) fn found(&self) -> Rows<'_, T> {
+        self.axes.view(self.count)
+    }
+
+    fn refresh(&mut self, subspace: &Subspace<T>, weight: f64) -> Result<(), Error> {
+        let size = subspace.count();
+        let factor = subspace.factor();
+        let matrix = &mut self.matrix[..size * size];
+        matrix.fill(0.0);
+        for row in 0..size {
+            matrix[row * size + row..(row + 1) * size].copy_from_slice(factor.tail(row));
+        }
+        let svd = match &mut self.svd.0 {
+            Some((made_for, svd)) if *made_for == size => svd,
+            slot => &mut slot.insert((size, Svd::new(size, size))).1,
+        };
+        svd.decompose(matrix)?;
+        for (target, value) in self.energies.iter_mut().zip(svd.values()) {
+            *target = energy(value * value / weight);
+        }
+        self.lost = energy(subspace.lost() / weight);
+        self.total = self.energies.iter().sum::<f64>() + self.lost;
+        let before = self.count;
+        let count = size.min(self.axes.rows());
+        for index in 0..count {
+            let direction = svd.right(index);
+            for (out, entry) in self.weights.iter_mut().zip(direction) {
+                *out = -entry;
+            }
+            ops::subtract(subspace.basis(), &self.weights[..size], &self.zeros, &mut self.axis);
+            let sign = if before == 0 {
+                largest(direction)
+            } else {
+                ops::project(self.axes.view(before), &self.axis, &mut self.overlap[..before]);
+                largest(&self.overlap[..before])
+            };
+            ops::scale_into(1.0_f64.copysign(sign), &self.axis, self.fresh.row_mut(index));
+        }
+        std::mem::swap(&mut self.axes, &mut self.fresh);
+        self.count = count;
+        self.stale = false;
+        Ok(())
     }
 }
 
-impl<T: Scalar> Tracker<T> {
-    /// Whether anything was learned since the axes were found.
-    #[must_use]
-    pub fn is_stale(&self) -> bool {
-        self.principal.since > 0.0
-    }
+/// An energy, zero where it would be subnormal.
+fn energy(value: f64) -> f64 {
+    if value < f64::MIN_POSITIVE { 0.0 } else { value }
+}
 
-    /// Finds the principal axes and energies anew where something was learned since: a decomposition of the factor,
-    /// some `10 k^3` flops, and `2 rank k channels` for the axes. Each axis keeps the sign that points along the axis
-    /// it follows.
+/// The entry of largest magnitude.
+fn largest(values: &[f64]) -> f64 {
+    values.iter().copied().fold(0.0, |best, value| if value.abs() > f64::abs(best) { value } else { best })
+}
+
+impl<T: Scalar> Tracker<T> {
+    /// Brings axes and energies up to date with the rows learned; nothing to do where they are.
+    ///
+    /// One small decomposition, about `10 (rank + guard)^3` flops, and `rank` sweeps. Each axis keeps the sign of
+    /// the one before that it overlaps most. Allocates only where the number of directions has grown.
     ///
     /// # Errors
-    /// [`Error::NoConvergence`], never seen; the axes stay as they were.
+    /// [`Error::NoConvergence`], a defect of the decomposition; never seen.
     pub fn refresh(&mut self) -> Result<(), Error> {
-        if !self.is_stale() {
-            return Ok(());
+        if self.principal.stale {
+            self.principal.refresh(&self.subspace, self.mean.total())?;
         }
-        let size = self.factor.size();
-        let principal = &mut self.principal;
-        let limit = principal.energies.len();
-        principal.matrix.fill(0.0);
-        for row in 0..size {
-            principal.matrix[row * limit + row..][..size - row].copy_from_slice(self.factor.tail(row));
-        }
-        principal.svd.decompose(&principal.matrix)?;
-        let per_weight = if self.weight > 0.0 { self.weight.recip() } else { 0.0 };
-        for (energy, value) in principal.energies.iter_mut().zip(principal.svd.values()) {
-            *energy = value * value * per_weight;
-        }
-        for index in 0..principal.rank {
-            let axis = principal.axes.row_mut(index);
-            if index >= size {
-                axis.fill(T::default());
-                continue;
-            }
-            let coefficients = &mut principal.coefficients[..size];
-            for (target, value) in coefficients.iter_mut().zip(principal.svd.right(index)) {
-                *target = -value;
-            }
-            ops::subtract(self.q.view(size), coefficients, &principal.zero, &mut principal.sum);
-            let along: f64 = axis.iter().zip(&principal.sum).map(|(old, new)| old.to_f64() * new).sum();
-            ops::scale_into(if along < 0.0 { -1.0 } else { 1.0 }, &principal.sum, axis);
-        }
-        principal.since = 0.0;
         Ok(())
     }
 
-    /// Whether the axes lag so far behind that gaps should not be filled by them.
-    pub(super) fn gaps_need_axes(&self) -> bool {
-        self.principal.since > GAP_LAG * self.weight
+    /// Whether rows were learned since the last refresh.
+    #[must_use]
+    pub fn is_stale(&self) -> bool {
+        self.principal.stale
     }
 
-    /// The reported axes of the last refresh, `rank` by `channels`, orthonormal; zero rows while fewer directions than
+    /// Principal axes as of the last refresh, `rank` unit rows, the strongest first; zero rows while fewer directions than
     /// that have been seen.
     #[must_use]
     pub fn axes(&self) -> Rows<'_, T> {
-        self.principal.axes()
+        self.principal.axes.view(self.settings.rank)
     }
 
-    /// Weighted variances along the axes as of the last refresh, descending, `rank` of them.
+    /// Variances along the axes, descending, squared unit of the rows, as of the last refresh: sums of squares
+    /// divided by the total weight.
     #[must_use]
     pub fn energies(&self) -> &[f64] {
         &self.principal.energies[..self.settings.rank]
     }
 
-    /// Weighted variances along the guard directions, which are tracked and not reported, as of the last refresh.
+    /// Variances along the guard directions, which are tracked and not reported, as of the last refresh.
     #[must_use]
     pub fn guard_energies(&self) -> &[f64] {
         &self.principal.energies[self.settings.rank..]
     }
 
-    /// What turns scatter into variance.
-    pub(super) fn per_weight(&self) -> f64 {
-        if self.weight > 0.0 { self.weight.recip() } else { 0.0 }
-    }
-
-    /// Weighted variance in all channels together: what is tracked, and what was given up.
+    /// Variance of all channels together, as of the last refresh. Exact: what truncation gave up is counted.
     #[must_use]
     pub fn total_energy(&self) -> f64 {
-        (self.factor.energy() + self.lost) * self.per_weight()
+        self.principal.total
     }
 
-    /// Weighted variance outside the reported axes, in all channels together.
+    /// Variance outside the reported axes, in all channels together, as of the last refresh.
     #[must_use]
     pub fn noise_energy(&self) -> f64 {
-        let guard: f64 = self.guard_energies().iter().sum();
-        guard + self.lost * self.per_weight()
+        self.guard_energies().iter().sum::<f64>() + self.principal.lost
     }
 
-    /// Share of the variance along the reported axes; 1 where nothing varies.
+    /// Share of the total variance that the axes explain, 0 to 1, as of the last refresh; 1 where nothing varies.
     #[must_use]
     pub fn explained(&self) -> f64 {
-        let reported: f64 = self.energies().iter().sum();
-        let total = reported + self.noise_energy();
-        if total > 0.0 { reported / total } else { 1.0 }
+        if self.principal.total > 0.0 {
+            self.energies().iter().sum::<f64>() / self.principal.total
+        } else {
+            1.0
+        }
     }
 
-    /// Relative eigengap below the last reported axis, `1 - energy_below / energy`: near 0 the subspace, and so any
-    /// angle to it, means nothing. 0 where nothing varies.
+    /// Relative gap `(e_rank - e_next) / e_rank` after the last axis, 0 to 1, as of the last refresh. Near 0 the
+    /// weakest axis and the strongest guard direction are interchangeable, and an angle says nothing. 0 where nothing
+    /// varies.
     #[must_use]
     pub fn gap(&self) -> f64 {
-        let last = self.energies().last().copied().unwrap_or(0.0);
-        let next = self.guard_energies().first().copied().unwrap_or(0.0);
-        if last > 0.0 { 1.0 - next / last } else { 0.0 }
+        let Some(&last) = self.energies().last().filter(|energy| **energy > 0.0) else { return 0.0 };
+        let next = self.guard_energies().first().copied().unwrap_or(self.principal.lost);
+        ((last - next) / last).max(0.0)
     }
 
-    /// Principal angles, in radians and ascending, between the reported axes of both, each refreshed.
-    ///
-    /// # Errors
-    /// [`Error::Length`] where the channels differ in number.
-    pub fn angles<U: Scalar>(&mut self, other: &mut Tracker<U>) -> Result<Vec<f64>, Error> {
-        self.refresh()?;
-        other.refresh()?;
-        principal_angles(self.axes(), other.axes())
+    /// Energy given up by truncation, as of the last refresh, in the unit of the energies.
+    pub(super) fn lost_energy(&self) -> f64 {
+        self.principal.lost
     }
 }
-
-/// Share of the learned weight by which axes that fill gaps may lag: it moves what is filled in by as much, far less
-/// than the noise of the channel.
-const GAP_LAG: f64 = 0.01;

@@ -1,28 +1,31 @@
-//! Learning a row.
+//! Learning one row.
 
 use super::Tracker;
+use super::mean::Gain;
 use super::settings::check_amount;
-use crate::basis::{Measured, clean};
 use crate::error::Error;
 use crate::ops;
 use crate::scalar::Scalar;
 
-/// What became of a row.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub struct Update {
-    /// Why it was not learned; None: it was.
-    pub skipped: Option<Skipped>,
-    /// Channels it lacks.
-    pub missing: usize,
-}
+/// Rounding of a row and its projection, in units of eps, that a direction may consist of.
+const ROUNDING: f64 = 4.0;
 
 /// Why a row was not learned.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Skipped {
-    /// Fewer channels observed than the rank, or too few to tell the directions apart.
-    Gaps,
     /// Its weight is zero.
     Weight,
+    /// Fewer channels were observed than axes are reported.
+    Gaps,
+}
+
+/// What became of a row.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Update {
+    /// Why it was not learned; None where it was.
+    pub skipped: Option<Skipped>,
+    /// Channels that were missing.
+    pub missing: usize,
 }
 
 impl Update {
@@ -33,91 +36,75 @@ impl Update {
     }
 }
 
-/// Room for a tick.
-#[derive(Clone, Debug)]
-pub(super) struct Room {
-    /// The row less the mean, scaled by its weight.
-    pub d: Vec<f64>,
-    /// What the tracked directions do not explain of it.
-    w: Vec<f64>,
-    /// The direction of that.
-    fresh: Vec<f64>,
-    h: Vec<f64>,
-    s: Vec<f64>,
-    correction: Vec<f64>,
-    reflector: Vec<f64>,
-}
-
-impl Room {
-    pub fn new(channels: usize, limit: usize) -> Self {
-        Self {
-            d: vec![0.0; channels],
-            w: vec![0.0; channels],
-            fresh: vec![0.0; channels],
-            h: Vec::with_capacity(limit + 1),
-            s: Vec::with_capacity(limit + 1),
-            correction: Vec::with_capacity(limit + 1),
-            reflector: Vec::with_capacity(limit + 1),
-        }
-    }
-}
-
 impl<T: Scalar> Tracker<T> {
-    /// Learns one row, one tick after the last; NaN is a gap. `12 k channels` flops and no allocation, `k` being the
-    /// tracked directions. A weight of zero learns nothing and forgets nothing.
+    /// Learns `row` with `weight`, one tick after the row before. NaN is a gap and is filled with the model's
+    /// value. A weight of 0, or too few observed channels, learns nothing and forgets nothing.
+    ///
+    /// `12 channels (rank + guard)` flops in four sweeps and `O((rank + guard)^2)` on the small factor; gaps
+    /// add one sweep and `O((rank + guard)^2 (rank + guard + gaps))`. Nothing is allocated.
     ///
     /// # Errors
-    /// [`Error::Length`], [`Error::NonFinite`] for an infinity, [`Error::Parameter`] for a weight that is negative or not
-    /// finite.
+    /// [`Error::Length`], [`Error::NonFinite`] for an infinite entry, [`Error::Overflow`] where the squares of the row
+    /// exceed the largest number, [`Error::Parameter`] for the weight. The tracker is then as it was.
     pub fn update(&mut self, row: &[f64], weight: f64) -> Result<Update, Error> {
         self.update_after(row, weight, 1.0)
     }
 
-    /// Learns one row, `elapsed` ticks after the last: what was learned before decays by that many.
+    /// As [`Self::update`], `elapsed` ticks after the row before: 200 forget as 200 ticks do.
     ///
     /// # Errors
-    /// As [`Tracker::update`]; [`Error::Parameter`] for `elapsed` negative or not finite.
+    /// As [`Self::update`], and [`Error::Parameter`] for `elapsed`.
     pub fn update_after(&mut self, row: &[f64], weight: f64, elapsed: f64) -> Result<Update, Error> {
         check_amount("weight", weight)?;
         check_amount("elapsed", elapsed)?;
-        let missing = self.check(row)?;
-        if weight == 0.0 {
-            return Ok(Update { skipped: Some(Skipped::Weight), missing });
-        }
-        if !self.take_deviation(row, missing)? {
+        self.subtract_mean(row)?;
+        let missing = self.gaps.missing().len();
+        let skipped = if weight == 0.0 {
+            Some(Skipped::Weight)
+        } else if row.len() - missing < self.settings.rank {
             self.skipped += 1;
-            return Ok(Update { skipped: Some(Skipped::Gaps), missing });
+            Some(Skipped::Gaps)
+        } else {
+            None
+        };
+        if skipped.is_some() {
+            return Ok(Update { skipped, missing });
         }
-        self.decay(elapsed);
-        let before = self.weight;
-        self.weight = before + weight;
-        // The scatter about the new mean gains lambda w weight / (lambda w + weight) d d^T; without a mean, weight d d^T.
-        let share = if self.settings.center { before * (weight / self.weight) } else { weight };
-        if self.settings.center {
-            let step = weight / self.weight;
-            self.mean.iter_mut().zip(&self.room.d).for_each(|(mean, d)| *mean += step * d);
+        if missing > 0 {
+            self.fill_gaps(self.row_norm(row));
         }
-        let scale = share.sqrt();
-        self.room.d.iter_mut().for_each(|d| *d *= scale);
-        self.absorb();
+        let kept = self.settings.kept(elapsed);
+        let gain = Gain::new(kept, weight);
+        self.mean.scale(gain, &self.delta, &mut self.scaled);
+        let squares = ops::norm_squared(&self.scaled);
+        if !(squares + self.subspace.factor().energy()).is_finite() {
+            return Err(Error::Overflow { what: "squared row" });
+        }
+        self.mean.advance(gain, &self.delta, self.gaps.missing());
+        self.subspace.decay(kept);
+        // An entry is known to half an eps of itself; a direction made of that is none.
+        let rounding = f64::EPSILON * weight.sqrt() * self.row_norm(row);
+        self.subspace.absorb(&self.scaled, rounding);
         self.samples += 1;
-        self.principal.learned(weight);
+        self.clock += elapsed;
+        self.principal.outdate();
         Ok(Update { skipped: None, missing })
     }
 
     /// Learns rows, one after another in `rows`, one tick each.
     ///
     /// # Errors
-    /// As [`Tracker::update`], naming the row, before anything is learned.
+    /// As [`Self::update`], naming the row. An infinity is found before anything is learned, a row whose squares overflow
+    /// when it is reached.
     pub fn update_rows(&mut self, rows: &[f64]) -> Result<(), Error> {
         self.check_rows(rows)?;
-        for row in rows.chunks_exact(self.settings.channels) {
-            self.update(row, 1.0)?;
+        for (index, row) in rows.chunks_exact(self.settings.channels).enumerate() {
+            self.update(row, 1.0).map_err(|error| error.in_row(index))?;
         }
         Ok(())
     }
 
-    /// Checks rows, one after another in `rows`, as [`Tracker::update`] would check each.
+    /// Checks rows, one after another in `rows`, for a wrong length or an infinity.
     ///
     /// # Errors
     /// Of the first row that would be refused, naming it.
@@ -126,118 +113,49 @@ impl<T: Scalar> Tracker<T> {
         if !rows.len().is_multiple_of(channels) {
             return Err(Error::Length { what: "row", expected: channels, got: rows.len() });
         }
-        for (index, row) in rows.chunks_exact(channels).enumerate() {
-            self.check(row).map_err(|error| error.in_row(index))?;
-        }
-        Ok(())
+        let Some(place) = rows.iter().position(|value| value.is_infinite()) else { return Ok(()) };
+        let error = Error::NonFinite { what: "row", index: place % channels, value: rows[place] };
+        Err(error.in_row(place / channels))
     }
 
-    /// Refuses a row of the wrong length or with an infinity; counts its gaps.
-    pub(super) fn check(&self, row: &[f64]) -> Result<usize, Error> {
+    /// Leaves `row - mean` in `delta`, zeros in its gaps, and the gaps noted.
+    pub(super) fn subtract_mean(&mut self, row: &[f64]) -> Result<(), Error> {
         if row.len() != self.settings.channels {
             return Err(Error::Length { what: "row", expected: self.settings.channels, got: row.len() });
         }
-        let mut missing = 0;
-        for (index, &value) in row.iter().enumerate() {
-            if value.is_infinite() {
-                return Err(Error::NonFinite { what: "row", index, value });
-            }
-            missing += usize::from(value.is_nan());
+        self.mean.delta(row, &mut self.delta);
+        self.gaps.clear();
+        // A sum of products with zero is zero unless an entry is no finite number.
+        if self.delta.iter().map(|entry| entry * 0.0).sum::<f64>() == 0.0 {
+            return Ok(());
         }
-        Ok(missing)
+        self.gaps.find(row).map_err(|index| Error::NonFinite { what: "row", index, value: row[index] })?;
+        for &channel in self.gaps.missing() {
+            self.delta[channel] = 0.0;
+        }
+        if self.delta.iter().all(|entry| entry.is_finite()) {
+            return Ok(());
+        }
+        Err(Error::Overflow { what: "row less the mean" })
     }
 
-    /// Leaves the row less the mean in the room, the model's own value in its gaps. A channel seen for the first time
-    /// sets its own mean: it starts without a jump. False where too little is observed.
-    fn take_deviation(&mut self, row: &[f64], missing: usize) -> Result<bool, Error> {
-        let observed = self.settings.channels - missing;
-        if observed < self.settings.rank {
-            return Ok(false);
-        }
-        if missing > 0 && self.gaps_need_axes() {
-            self.refresh()?;
-        }
-        if self.settings.center && self.samples_unseen(row) {
-            for ((mean, seen), &value) in self.mean.iter_mut().zip(&mut self.seen).zip(row) {
-                if !*seen && !value.is_nan() {
-                    *mean = value;
-                    *seen = true;
-                }
-            }
-        }
-        for ((d, mean), value) in self.room.d.iter_mut().zip(&self.mean).zip(row) {
-            *d = value - mean;
-        }
-        Ok(missing == 0 || self.gaps.fill(&mut self.room.d, self.principal.axes()))
+    /// Fills the gaps of `delta` with the model's values; `size` is the norm of the row.
+    fn fill_gaps(&mut self, size: f64) {
+        let count = self.subspace.count();
+        let spare = self.settings.channels - count;
+        let h = &mut self.coefficients[..count];
+        let squares = ops::project(self.subspace.basis(), &self.delta, h);
+        // Noise a direction: what truncation gave up, and the rounding that made directions of its own.
+        let given_up = if spare == 0 { 0.0 } else { self.subspace.lost() / spare as f64 };
+        let rounding = (ROUNDING * f64::EPSILON * size).powi(2) + (ROUNDING * T::EPSILON).powi(2) * squares;
+        self.gaps.fill(&self.subspace, given_up + self.mean.total() * rounding, h, &mut self.delta);
     }
 
-    /// Whether a channel of the row is observed for the first time.
-    fn samples_unseen(&self, row: &[f64]) -> bool {
-        self.seen.iter().zip(row).any(|(seen, value)| !seen && !value.is_nan())
-    }
-
-    /// Lets `elapsed` ticks pass.
-    pub(super) fn decay(&mut self, elapsed: f64) {
-        let kept = self.settings.kept(elapsed);
-        self.clock += elapsed;
-        if kept < 1.0 {
-            self.weight *= kept;
-            self.lost *= kept;
-            self.factor.decay(kept.sqrt());
+    /// Norm of the observed part of `row`.
+    fn row_norm(&self, row: &[f64]) -> f64 {
+        if self.gaps.missing().is_empty() {
+            return ops::norm_squared(row).sqrt();
         }
-    }
-
-    /// Adds the square of the scaled row in the room to the scatter.
-    pub(super) fn absorb(&mut self) {
-        let size = self.factor.size();
-        let room = &mut self.room;
-        for buffer in [&mut room.h, &mut room.s, &mut room.correction] {
-            buffer.resize(size, 0.0);
-        }
-        let q = self.q.view(size);
-        let squares = ops::project(q, &room.d, &mut room.h);
-        if squares == 0.0 {
-            return;
-        }
-        let floor = self.settings.channels as f64 * T::EPSILON * squares.sqrt();
-        let squares = ops::subtract_measured(q, &room.h, &room.d, &mut room.w, &mut room.s);
-        let measured = Measured { squares, s: &mut room.s, correction: &mut room.correction };
-        let cleaned = clean(q, &mut room.w, measured, &mut room.h, floor);
-        let norm = cleaned.norm;
-        if norm <= floor || size == self.settings.channels {
-            self.factor.append(&mut room.h);
-            return;
-        }
-        room.h.push(norm);
-        self.factor.border(&mut room.h);
-        if size < self.q.rows() {
-            ops::normalize_into(norm, &room.w, self.q.row_mut(size));
-        } else {
-            ops::normalize_into(norm, &room.w, &mut room.fresh);
-            self.give_up();
-        }
-        self.mender.take_turn(&mut self.q, self.factor.size());
-    }
-
-    /// Gives up the direction that loses the least of the bordered factor.
-    fn give_up(&mut self) {
-        let size = self.factor.size();
-        self.smallest.find(&self.factor);
-        let z = self.smallest.direction(size);
-        let room = &mut self.room;
-        // |R z|^2 is what the scatter loses; s is free now.
-        room.s.resize(size, 0.0);
-        self.factor.apply(z, &mut room.s);
-        self.lost += room.s.iter().map(|x| x * x).sum::<f64>();
-        // H = I - 2 u u^T sends z to the last unit vector, up to sign; the sign that cancels nothing.
-        room.reflector.clear();
-        room.reflector.extend_from_slice(z);
-        let last = &mut room.reflector[size - 1];
-        *last += 1f64.copysign(*last);
-        let norm = room.reflector.iter().map(|u| u * u).sum::<f64>().sqrt();
-        room.reflector.iter_mut().for_each(|u| *u /= norm);
-        let (rows, stride) = self.q.parts_mut();
-        ops::reflect(rows, stride, size - 1, &room.reflector, &room.fresh);
-        self.factor.cut(&room.reflector);
+        row.iter().filter(|value| !value.is_nan()).map(|value| value * value).sum::<f64>().sqrt()
     }
 }

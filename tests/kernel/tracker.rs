@@ -1,256 +1,535 @@
-//! The drifting subspace against batch decompositions of the weighted rows.
+//! The tracker against the decomposition of all rows at once.
 
-use faer::Mat;
+use perpend::dense::Svd;
 use perpend::tracker::{Settings, Skipped, Tracker};
-use perpend::{Error, principal_angles};
+use perpend::{Error, Rows, Scalar};
 
 const EPS: f64 = f64::EPSILON;
 
+/// Numbers like those of a sensor, from a seed: uniform in -1..1 (xorshift64*, Marsaglia 2003, Vigna 2016).
 struct Noise(u64);
 
 impl Noise {
     fn next(&mut self) -> f64 {
-        self.0 = self.0.wrapping_mul(2_862_933_555_777_941_757).wrapping_add(3_037_000_493);
-        (self.0 >> 11) as f64 / (1u64 << 52) as f64 - 1.0
+        self.0 ^= self.0 >> 12;
+        self.0 ^= self.0 << 25;
+        self.0 ^= self.0 >> 27;
+        (self.0.wrapping_mul(0x2545_F491_4F6C_DD1D) >> 11) as f64 / 2f64.powi(52) - 1.0
     }
 }
 
-/// Rows of a few strong directions on noise, far from zero, slowly turning.
-fn rows(count: usize, channels: usize, seed: u64) -> Vec<Vec<f64>> {
-    let mut noise = Noise(seed);
-    let patterns: Vec<Vec<f64>> = (0..3).map(|_| (0..channels).map(|_| noise.next()).collect()).collect();
-    (0..count)
-        .map(|tick| {
-            let turn = tick as f64 / count as f64;
-            let scores = [9.0 * noise.next(), 4.0 * noise.next(), 2.0 * noise.next()];
-            (0..channels)
-                .map(|channel| {
-                    let signal: f64 = (0..3)
-                        .map(|k| scores[k] * (patterns[k][channel] + turn * patterns[(k + 1) % 3][channel]))
-                        .sum();
-                    40.0 + signal + 0.1 * noise.next()
-                })
-                .collect()
-        })
-        .collect()
-}
-
-/// Weighted mean, energies and axes of the rows, by a full decomposition.
-fn batch(rows: &[Vec<f64>], weights: &[f64], center: bool) -> (Vec<f64>, Vec<f64>, Vec<Vec<f64>>) {
-    let channels = rows[0].len();
-    let total: f64 = weights.iter().sum();
-    let mean: Vec<f64> =
+/// Rows of a few sources of falling strength, mixed into `channels`, with `noise` beside them.
+fn plant(seed: u64, rows: usize, channels: usize, sources: usize, noise: f64) -> Vec<Vec<f64>> {
+    let mut next = Noise(seed | 1);
+    let mixing: Vec<f64> = (0..sources * channels).map(|_| next.next()).collect();
+    let mut row = || {
+        let states: Vec<f64> =
+            (0..sources).map(|source| next.next() * 10.0 * 0.5_f64.powf(source as f64)).collect();
         (0..channels)
-            .map(|c| {
-                if center {
-                    rows.iter().zip(weights).map(|(r, w)| r[c] * w).sum::<f64>() / total
-                } else {
-                    0.0
-                }
+            .map(|channel| {
+                let mixed: f64 = (0..sources).map(|s| states[s] * mixing[s * channels + channel]).sum();
+                20.0 + channel as f64 + mixed + noise * next.next()
             })
+            .collect()
+    };
+    (0..rows).map(|_| row()).collect()
+}
+
+/// The exact answer: mean, energies and axes of the weighted rows.
+struct Batch {
+    mean: Vec<f64>,
+    energies: Vec<f64>,
+    svd: Svd,
+}
+
+impl Batch {
+    fn of(rows: &[Vec<f64>], weights: &[f64], center: bool) -> Self {
+        let (total, channels) = (weights.iter().sum::<f64>(), rows[0].len());
+        let mut mean = vec![0.0; channels];
+        if center {
+            for (row, weight) in rows.iter().zip(weights) {
+                mean.iter_mut().zip(row).for_each(|(mean, x)| *mean += weight * x / total);
+            }
+        }
+        let matrix: Vec<f64> = rows
+            .iter()
+            .zip(weights)
+            .flat_map(|(row, weight)| row.iter().zip(&mean).map(move |(x, mean)| weight.sqrt() * (x - mean)))
             .collect();
-    let matrix =
-        Mat::from_fn(rows.len(), channels, |i, j| (weights[i] / total).sqrt() * (rows[i][j] - mean[j]));
-    let svd = matrix.thin_svd().unwrap();
-    let size = rows.len().min(channels);
-    let energies = (0..size).map(|i| svd.S()[i].powi(2)).collect();
-    let axes = (0..size).map(|i| (0..channels).map(|j| svd.V()[(j, i)]).collect()).collect();
-    (mean, energies, axes)
+        let mut svd = Svd::new(rows.len(), channels);
+        svd.decompose(&matrix).unwrap();
+        let energies = svd.values().iter().map(|value| value * value / total).collect();
+        Self { mean, energies, svd }
+    }
+
+    /// The leading `rank` axes, row-major.
+    fn axes(&self, rank: usize) -> Vec<f64> {
+        (0..rank).flat_map(|index| self.svd.right(index).to_vec()).collect()
+    }
 }
 
-fn decayed(count: usize, memory: Option<f64>) -> Vec<f64> {
-    let lambda = memory.map_or(1.0, |m| 1.0 - 1.0 / m);
-    (0..count).map(|i| lambda.powi(i32::try_from(count - 1 - i).unwrap())).collect()
+fn forgotten(rows: usize, memory: Option<f64>) -> Vec<f64> {
+    let kept = memory.map_or(1.0, |memory| 1.0 - 1.0 / memory);
+    (0..rows).map(|row| kept.powf((rows - 1 - row) as f64)).collect()
 }
 
-fn assert_equals_batch(rows: &[Vec<f64>], settings: Settings) {
-    let channels = settings.channels;
-    let mut tracker = Tracker::<f64>::new(settings).unwrap();
+fn largest_angle<T: Scalar>(tracker: &Tracker<T>, exact: &[f64]) -> f64 {
+    let channels = tracker.settings().channels;
+    let exact = Rows::new(exact, channels, exact.len() / channels, channels).unwrap();
+    *perpend::principal_angles(tracker.axes(), exact).unwrap().last().unwrap()
+}
+
+/// Means, energies and axes agree to `slack` relative to the largest.
+fn assert_equals<T: Scalar>(tracker: &mut Tracker<T>, batch: &Batch, slack: f64) {
+    tracker.refresh().unwrap();
+    let scale = batch.energies[0];
+    for (got, expected) in tracker.mean().iter().zip(&batch.mean) {
+        assert!(
+            (got - expected).abs() <= slack * expected.abs().max(scale.sqrt()),
+            "{got} against {expected}"
+        );
+    }
+    for (got, expected) in tracker.energies().iter().zip(&batch.energies) {
+        assert!((got - expected).abs() <= slack * scale, "energy {got:e} against {expected:e}");
+    }
+    let rank = tracker.energies().len();
+    let angle = largest_angle(tracker, &batch.axes(rank));
+    let gap = batch.energies[rank - 1].sqrt() - batch.energies.get(rank).map_or(0.0, |next| next.sqrt());
+    assert!(angle <= slack * scale.sqrt() / gap, "angle {angle:e}, relative gap {:e}", gap / scale.sqrt());
+}
+
+/// Rounding of `rows` updates of `channels` entries: each leaves a few eps of the largest singular value.
+fn rounding(rows: usize, channels: usize) -> f64 {
+    16.0 * EPS * (rows as f64).sqrt() * channels as f64
+}
+
+fn learn<T: Scalar>(settings: Settings, rows: &[Vec<f64>]) -> Tracker<T> {
+    let mut tracker = Tracker::new(settings).unwrap();
+    learn_more(&mut tracker, rows);
+    tracker
+}
+
+fn learn_more<T: Scalar>(tracker: &mut Tracker<T>, rows: &[Vec<f64>]) {
     for row in rows {
         assert!(tracker.update(row, 1.0).unwrap().learned());
     }
-    tracker.refresh().unwrap();
-    let (mean, energies, axes) = batch(rows, &decayed(rows.len(), settings.memory), settings.center);
-    let slack = 64.0 * EPS * (rows.len() as f64).sqrt() * channels as f64;
-    for (got, expected) in tracker.mean().iter().zip(&mean) {
-        assert!((got - expected).abs() <= slack * expected.abs(), "mean {got} against {expected}");
-    }
-    for (index, (got, expected)) in tracker.energies().iter().zip(&energies).enumerate() {
-        assert!((got - expected).abs() <= slack * energies[0], "energy {index}: {got} against {expected}");
-        let next = energies.get(index + 1).copied().unwrap_or(0.0);
-        let above = if index == 0 { f64::INFINITY } else { energies[index - 1] };
-        let gap = (expected - next).min(above - expected);
-        let cosine: f64 = tracker.axes().row(index).iter().zip(&axes[index]).map(|(a, b)| a * b).sum();
-        assert!(1.0 - cosine.abs() <= slack * energies[0] / gap, "axis {index}: cosine {cosine}");
-    }
-    assert!(tracker.certificate().unwrap().lost.abs() <= 0.0, "nothing was given up");
-    assert!(tracker.orthogonality_error().unwrap() <= 10.0 * EPS * (channels as f64).sqrt());
 }
 
 #[test]
-fn nothing_forgotten_and_nothing_given_up_equals_the_batch_answer() {
-    for (count, channels) in [(3, 7), (40, 7), (500, 12)] {
-        let settings = Settings { guard: Some(channels - 3), ..Settings::new(channels, 3) };
-        assert_equals_batch(&rows(count, channels, 5), settings);
-        assert_equals_batch(&rows(count, channels, 5), Settings { center: false, ..settings });
+fn nothing_forgotten_and_nothing_truncated_equals_the_batch() {
+    for (channels, rank, count) in [(5, 2, 3), (9, 4, 9), (12, 4, 400), (12, 12, 57), (1, 1, 20)] {
+        let rows = plant(7, count, channels, channels, 0.1);
+        let settings = Settings { guard: Some(channels - rank), ..Settings::new(channels, rank) };
+        let mut tracker = learn::<f64>(settings, &rows);
+        let batch = Batch::of(&rows, &forgotten(count, None), true);
+        assert_equals(&mut tracker, &batch, rounding(count, channels));
+        assert_eq!(tracker.samples(), count as u64);
     }
 }
 
 #[test]
-fn with_forgetting_it_equals_the_batch_answer_of_the_weighted_rows() {
-    for memory in [2.5, 30.0, 1e4] {
-        let settings = Settings { guard: Some(7), memory: Some(memory), ..Settings::new(10, 3) };
-        assert_equals_batch(&rows(400, 10, 9), settings);
+fn with_forgetting_it_equals_the_batch_of_weighted_rows() {
+    for center in [true, false] {
+        let rows = plant(11, 300, 10, 10, 0.1);
+        let memory = Some(40.0);
+        let settings = Settings { guard: Some(6), memory, center, ..Settings::new(10, 4) };
+        let mut tracker = learn::<f64>(settings, &rows);
+        let batch = Batch::of(&rows, &forgotten(300, memory), center);
+        assert_equals(&mut tracker, &batch, rounding(300, 10));
     }
 }
 
 #[test]
-fn the_exact_answer_lies_within_the_certificate() {
-    let (count, channels) = (600, 20);
-    let rows = rows(count, channels, 3);
-    for (guard, memory) in [(0, 40.0), (3, 40.0), (8, 100.0)] {
-        let settings = Settings { guard: Some(guard), memory: Some(memory), ..Settings::new(channels, 3) };
-        let mut tracker = Tracker::<f64>::new(settings).unwrap();
-        for row in &rows {
-            tracker.update(row, 1.0).unwrap();
-        }
-        let certificate = tracker.certificate().unwrap();
-        let (_, energies, axes) = batch(&rows, &decayed(count, Some(memory)), true);
-        let slack = 1e3 * EPS * energies[0];
-        for (got, exact) in tracker.energies().iter().zip(&energies) {
-            assert!(*got <= exact + slack && *exact <= got + certificate.lost + slack);
-        }
-        // The trace of what is lacking is what was given up.
-        let held = tracker.total_energy() - certificate.lost;
-        let lacking = energies.iter().sum::<f64>() - held;
-        assert!((lacking - certificate.lost).abs() <= 1e-9 * lacking.max(energies[0]));
-        if let Some(sine) = certificate.sine {
-            let mut exact = perpend::RowStore::<f64>::zeros(3, channels);
-            (0..3).for_each(|i| exact.row_mut(i).copy_from_slice(&axes[i]));
-            let angle = principal_angles(tracker.axes(), exact.view(3)).unwrap()[2];
-            assert!(angle.sin() <= sine + 1e3 * EPS, "{} against {sine}", angle.sin());
-        }
-    }
-}
-
-#[test]
-fn a_hundred_thousand_rows_cost_no_orthonormality() {
-    let rows = rows(1000, 16, 8);
-    let mut wide = Tracker::<f64>::new(Settings { memory: Some(200.0), ..Settings::new(16, 3) }).unwrap();
-    let mut narrow = Tracker::<f32>::new(Settings { memory: Some(200.0), ..Settings::new(16, 3) }).unwrap();
-    for tick in 0..100_000 {
-        wide.update(&rows[tick % 1000], 1.0).unwrap();
-        narrow.update(&rows[tick % 1000], 1.0).unwrap();
-    }
-    assert!(wide.orthogonality_error().unwrap() <= 10.0 * EPS * 11f64.sqrt());
-    assert!(narrow.orthogonality_error().unwrap() <= 10.0 * f64::from(f32::EPSILON) * 11f64.sqrt());
-}
-
-#[test]
-fn gaps_are_filled_by_least_squares_on_the_observed_channels() {
-    let (channels, rank) = (12, 3);
-    let training = rows(300, channels, 21);
-    let mut tracker = Tracker::<f64>::new(Settings::new(channels, rank)).unwrap();
-    for row in &training {
-        tracker.update(row, 1.0).unwrap();
-    }
-    tracker.refresh().unwrap();
-    for gaps in [vec![4], vec![0, 5], vec![1, 2, 3, 7, 8, 9]] {
-        let mut row = training[299].clone();
-        for &gap in &gaps {
-            row[gap] = f64::NAN;
-        }
-        let (mut c, mut residual) = (vec![0.0; rank], vec![0.0; channels]);
-        let split = tracker.split_into(&row, &mut c, &mut residual).unwrap();
-        assert!(split.determined && split.missing == gaps.len());
-        let observed: Vec<usize> = (0..channels).filter(|i| !gaps.contains(i)).collect();
-        let a = Mat::from_fn(observed.len(), rank, |i, j| tracker.axes().row(j)[observed[i]]);
-        let b = Mat::from_fn(observed.len(), 1, |i, _| row[observed[i]] - tracker.mean()[observed[i]]);
-        let fitted = least_squares(&a, &b);
-        for j in 0..rank {
-            assert!((c[j] - fitted[(j, 0)]).abs() <= 1e4 * EPS * 50.0, "{} against {}", c[j], fitted[(j, 0)]);
-        }
-        assert!(gaps.iter().all(|&gap| residual[gap] == 0.0));
-    }
-}
-
-/// Through the thin decomposition of `a`.
-fn least_squares(a: &Mat<f64>, b: &Mat<f64>) -> Mat<f64> {
-    let svd = a.thin_svd().unwrap();
-    let mut scores = svd.U().transpose() * b;
-    for i in 0..a.ncols() {
-        scores[(i, 0)] /= svd.S()[i];
-    }
-    svd.V() * scores
-}
-
-#[test]
-fn two_histories_merge_into_that_of_all_rows() {
-    let channels = 9;
-    let all = rows(120, channels, 13);
-    let settings = Settings { guard: Some(6), ..Settings::new(channels, 3) };
-    let mut whole = Tracker::<f64>::new(settings).unwrap();
-    let mut first = Tracker::<f64>::new(settings).unwrap();
-    let mut second = Tracker::<f64>::new(settings).unwrap();
-    for (index, row) in all.iter().enumerate() {
-        whole.update(row, 1.0).unwrap();
-        if index < 50 { first.update(row, 1.0) } else { second.update(row, 1.0) }.unwrap();
-    }
-    first.merge(&second).unwrap();
-    assert_eq!(first.samples(), 120);
-    whole.refresh().unwrap();
-    first.refresh().unwrap();
-    for (got, expected) in first.energies().iter().zip(whole.energies()) {
-        assert!((got - expected).abs() <= 1e3 * EPS * whole.energies()[0]);
-    }
-    let angle = first.angles(&mut whole).unwrap()[2];
-    assert!(angle <= 1e5 * EPS, "{angle:e}");
-    let other = Tracker::<f64>::new(Settings::new(channels, 2)).unwrap();
-    assert!(matches!(first.merge(&other), Err(Error::Unlike { what: "rank", .. })));
-}
-
-#[test]
-fn a_bad_row_is_refused_with_its_place_and_changes_nothing() {
-    let mut tracker = Tracker::<f64>::new(Settings::new(4, 2)).unwrap();
-    let good = rows(20, 4, 2);
-    for row in &good {
-        tracker.update(row, 1.0).unwrap();
-    }
-    let mut twin = tracker.clone();
-    assert!(matches!(tracker.update(&[1.0; 3], 1.0), Err(Error::Length { expected: 4, got: 3, .. })));
-    assert!(matches!(
-        tracker.update(&[1.0, 2.0, f64::NEG_INFINITY, 0.0], 1.0),
-        Err(Error::NonFinite { index: 2, .. })
-    ));
-    assert!(matches!(tracker.update(&[1.0; 4], -1.0), Err(Error::Parameter { name: "weight", .. })));
-    let skipped = tracker.update(&[f64::NAN, f64::NAN, f64::NAN, 1.0], 1.0).unwrap();
-    assert_eq!(skipped.skipped, Some(Skipped::Gaps));
-    assert_eq!(tracker.skipped(), 1);
-    tracker.update(&good[0], 1.0).unwrap();
-    twin.update(&good[0], 1.0).unwrap();
-    tracker.refresh().unwrap();
-    twin.refresh().unwrap();
-    assert_eq!(tracker.energies(), twin.energies());
-    assert_eq!(tracker.mean(), twin.mean());
-}
-
-#[test]
-fn silence_and_return_leave_everything_finite() {
-    let settings = Settings { memory: Some(20.0), ..Settings::new(6, 2) };
+fn weights_and_elapsed_ticks_equal_the_batch_of_weighted_rows() {
+    let rows = plant(13, 80, 8, 8, 0.1);
+    let settings = Settings { guard: Some(4), memory: Some(30.0), ..Settings::new(8, 4) };
     let mut tracker = Tracker::<f64>::new(settings).unwrap();
-    let moving = rows(100, 6, 4);
-    for row in &moving {
-        tracker.update(row, 1.0).unwrap();
+    let mut weights = Vec::new();
+    for (index, row) in rows.iter().enumerate() {
+        let (weight, elapsed) = ((index % 4) as f64 * 0.5, if index % 7 == 3 { 20.0 } else { 1.0 });
+        let update = tracker.update_after(row, weight, elapsed).unwrap();
+        assert_eq!(update.skipped, (weight == 0.0).then_some(Skipped::Weight));
+        if weight > 0.0 {
+            for old in &mut weights {
+                *old *= (1.0 - 1.0 / 30.0_f64).powf(elapsed);
+            }
+        }
+        weights.push(weight);
     }
-    for _ in 0..50_000 {
-        tracker.update(&moving[0], 1.0).unwrap();
+    let batch = Batch::of(&rows, &weights, true);
+    assert_equals(&mut tracker, &batch, rounding(80, 8));
+    assert!(
+        (tracker.total_weight() - weights.iter().sum::<f64>()).abs() < 80.0 * EPS * tracker.total_weight()
+    );
+}
+
+#[test]
+fn exact_rank_below_the_directions_tracked_is_found_and_adds_none() {
+    let rows = plant(17, 500, 30, 3, 0.0);
+    let mut tracker = learn::<f64>(Settings { memory: Some(50.0), ..Settings::new(30, 4) }, &rows);
+    tracker.refresh().unwrap();
+    let batch = Batch::of(&rows, &forgotten(500, Some(50.0)), true);
+    for (got, expected) in tracker.energies().iter().zip(&batch.energies) {
+        assert!((got - expected).abs() <= rounding(500, 30) * batch.energies[0]);
     }
-    for row in &moving {
-        tracker.update(row, 1.0).unwrap();
+    assert!(largest_angle(&tracker, &batch.axes(3)) < 1e-7);
+}
+
+#[test]
+fn truncation_gives_the_subspace_of_rotate_and_cut() {
+    // The oracle decomposes the bordered factor in full at every row and cuts.
+    let (channels, rank, guard, memory) = (14, 3, 2, 200.0);
+    let rows = plant(19, 600, channels, 8, 0.5);
+    let settings =
+        Settings { guard: Some(guard), memory: Some(memory), center: false, ..Settings::new(channels, rank) };
+    let mut tracker = learn::<f64>(settings, &rows);
+    let keep = rank + guard;
+    let mut held = vec![0.0; keep * channels];
+    let mut lost = 0.0;
+    for row in &rows {
+        let root = (1.0 - 1.0 / memory).sqrt();
+        let mut matrix: Vec<f64> = held.iter().map(|x| root * x).collect();
+        matrix.extend(row);
+        let mut svd = Svd::new(keep + 1, channels);
+        svd.decompose(&matrix).unwrap();
+        for index in 0..keep {
+            let value = svd.values()[index];
+            held[index * channels..][..channels]
+                .iter_mut()
+                .zip(svd.right(index))
+                .for_each(|(out, x)| *out = value * x);
+        }
+        lost = (1.0 - 1.0 / memory) * lost + svd.values()[keep].powi(2);
     }
     tracker.refresh().unwrap();
-    let (_, energies, _) = batch(&moving, &decayed(100, Some(20.0)), true);
-    assert!(tracker.energies().iter().all(|energy| energy.is_finite()));
-    assert!((tracker.energies()[0] / energies[0] - 1.0).abs() < 0.5);
-    assert!(tracker.orthogonality_error().unwrap() <= 10.0 * EPS * 6f64.sqrt());
+    let exact: Vec<f64> = (0..rank)
+        .flat_map(|index| {
+            let row = &held[index * channels..][..channels];
+            let norm = row.iter().map(|x| x * x).sum::<f64>().sqrt();
+            row.iter().map(move |x| x / norm)
+        })
+        .collect();
+    let angle = largest_angle(&tracker, &exact);
+    assert!(angle < 600.0 * channels as f64 * EPS * 10.0, "angle {angle:e}");
+    let got = tracker.certificate().unwrap().lost * tracker.total_weight();
+    assert!((got - lost).abs() < 1e-11 * lost, "lost {got:e} against {lost:e}");
+}
+
+#[test]
+fn certificate_holds_the_exact_answer_and_its_trace_is_exact() {
+    for (seed, guard) in [(23, 0), (29, 3), (31, 6)] {
+        let mut rows = plant(seed, 400, 16, 5, 1.0);
+        rows.extend(plant(seed + 100, 200, 16, 5, 1.0));
+        let memory = Some(60.0);
+        let settings = Settings { guard: Some(guard), memory, ..Settings::new(16, 3) };
+        let mut tracker = learn::<f64>(settings, &rows);
+        let certificate = tracker.certificate().unwrap();
+        let batch = Batch::of(&rows, &forgotten(600, memory), true);
+        let slack = rounding(600, 16) * batch.energies[0];
+        for (index, exact) in batch.energies[..3].iter().enumerate() {
+            assert!(
+                tracker.energies()[index] <= exact + slack
+                    && *exact <= tracker.energies()[index] + certificate.lost + slack
+            );
+        }
+        let trace: f64 = batch.energies.iter().sum();
+        assert!((tracker.total_energy() - trace).abs() < 1e-12 * trace);
+        if let Some(sine) = certificate.sine {
+            assert!(largest_angle(&tracker, &batch.axes(3)).sin() <= sine + slack);
+        }
+    }
+}
+
+#[test]
+fn orthonormality_and_trace_hold_after_1e5_updates() {
+    let rows = plant(37, 100_000, 20, 6, 1.0);
+    let mut tracker = learn::<f64>(Settings { memory: Some(500.0), ..Settings::new(20, 4) }, &rows);
+    let error = tracker.orthogonality_error().unwrap();
+    assert!(error <= 1e-14, "orthogonality {error:e}");
+    tracker.refresh().unwrap();
+    let batch = Batch::of(&rows[80_000..], &forgotten(20_000, Some(500.0)), true);
+    let trace: f64 = batch.energies.iter().sum();
+    assert!((tracker.total_energy() - trace).abs() < 1e-11 * trace);
+}
+
+#[test]
+fn float32_rows_stay_orthonormal_to_their_type() {
+    let rows = plant(41, 20_000, 20, 6, 1.0);
+    let mut tracker = learn::<f32>(Settings { memory: Some(500.0), ..Settings::new(20, 4) }, &rows);
+    assert!(tracker.orthogonality_error().unwrap() <= 10.0 * f64::from(f32::EPSILON) * 12f64.sqrt());
+    let exact = learn::<f64>(Settings { memory: Some(500.0), ..Settings::new(20, 4) }, &rows);
+    let mut exact = exact;
+    tracker.refresh().unwrap();
+    exact.refresh().unwrap();
+    for (got, expected) in tracker.energies().iter().zip(exact.energies()) {
+        assert!((got - expected).abs() < 1e-4 * exact.energies()[0]);
+    }
+}
+
+#[test]
+fn gaps_are_fitted_by_least_squares_on_what_is_observed() {
+    let rows = plant(43, 300, 12, 3, 0.0);
+    let mut tracker = learn::<f64>(Settings::new(12, 3), &rows);
+    let mut row = plant(43, 301, 12, 3, 0.0).pop().unwrap();
+    row[5] += 0.25;
+    let (mut c, mut residual) = ([0.0; 3], [0.0; 12]);
+    for gaps in [vec![2], vec![0, 7], vec![1, 3, 4, 8, 11], vec![0, 1, 2, 3, 4, 6, 7, 8]] {
+        let mut gapped = row.clone();
+        for &gap in &gaps {
+            gapped[gap] = f64::NAN;
+        }
+        let split = tracker.split_into(&gapped, &mut c, &mut residual).unwrap();
+        assert_eq!(split.missing, gaps.len());
+        // Normal equations of the least-squares fit: the residual is orthogonal to the axes over the observed channels.
+        let norm = residual.iter().map(|x| x * x).sum::<f64>().sqrt();
+        for axis in tracker.axes().iter() {
+            let product: f64 = axis.iter().zip(&residual).map(|(a, b)| a * b).sum();
+            assert!(product.abs() < 1e-12, "{product:e} of {norm:e} with gaps {gaps:?}");
+        }
+        for &gap in &gaps {
+            assert!(residual[gap] == 0.0);
+        }
+        for channel in (0..12).filter(|channel| !gaps.contains(channel)) {
+            let model: f64 = tracker.axes().iter().zip(&c).map(|(axis, c)| axis[channel] * c).sum::<f64>()
+                + tracker.mean()[channel];
+            assert!((gapped[channel] - model - residual[channel]).abs() < 1e-12);
+        }
+        let scaled = norm * norm * 12.0 / (12 - gaps.len()) as f64;
+        assert!((split.residual_norm_squared - scaled).abs() < 1e-13 * scaled);
+    }
+}
+
+#[test]
+fn a_row_learned_with_gaps_is_learned_as_the_model_completes_it() {
+    let rows = plant(47, 400, 12, 3, 0.0);
+    let settings = Settings { memory: Some(100.0), ..Settings::new(12, 3) };
+    let (mut whole, mut gapped) = (learn::<f64>(settings, &rows[..50]), learn::<f64>(settings, &rows[..50]));
+    for (index, row) in rows[50..].iter().enumerate() {
+        whole.update(row, 1.0).unwrap();
+        let mut row = row.clone();
+        row[index % 12] = f64::NAN;
+        row[(index * 5 + 1) % 12] = f64::NAN;
+        assert!(gapped.update(&row, 1.0).unwrap().missing >= 1);
+    }
+    // Of exact rank, a row is completed to what it was.
+    whole.refresh().unwrap();
+    gapped.refresh().unwrap();
+    for (got, expected) in gapped.energies().iter().zip(whole.energies()) {
+        assert!((got - expected).abs() < 1e-8 * whole.energies()[0], "{got} against {expected}");
+    }
+}
+
+#[test]
+fn a_channel_that_arrives_late_brings_no_jump() {
+    let mut rows = plant(53, 4000, 12, 3, 0.1);
+    for (index, row) in rows.iter_mut().enumerate() {
+        row[4] = if index < 1000 { f64::NAN } else { row[4] + 1e9 };
+    }
+    let settings = Settings { memory: Some(300.0), ..Settings::new(12, 3) };
+    let mut tracker = learn::<f64>(settings, &rows[..1000]);
+    tracker.refresh().unwrap();
+    let before = tracker.total_energy();
+    for row in &rows[1000..] {
+        tracker.update(row, 1.0).unwrap();
+        tracker.refresh().unwrap();
+        assert!(tracker.total_energy() < 3.0 * before, "{} after {before}", tracker.total_energy());
+    }
+    let batch = Batch::of(&rows[1000..], &forgotten(3000, Some(300.0)), true);
+    assert!((tracker.energies()[0] - batch.energies[0]).abs() < 0.01 * batch.energies[0]);
+    assert!((tracker.mean()[4] - batch.mean[4]).abs() < 0.1);
+}
+
+#[test]
+fn too_few_observed_channels_are_counted_and_skipped() {
+    let rows = plant(59, 40, 6, 3, 0.1);
+    let mut tracker = learn::<f64>(Settings::new(6, 3), &rows);
+    let row = [1.0, f64::NAN, f64::NAN, 2.0, f64::NAN, f64::NAN];
+    let update = tracker.update(&row, 1.0).unwrap();
+    assert_eq!((update.skipped, update.missing), (Some(Skipped::Gaps), 4));
+    assert_eq!((tracker.samples(), tracker.skipped()), (40, 1));
+    let split = tracker.split_into(&[f64::NAN; 6], &mut [0.0; 3], &mut [0.0; 6]).unwrap();
+    assert_eq!((split.residual_norm_squared, split.missing), (0.0, 6));
+}
+
+/// All that a tracker answers, as bits.
+fn answers(tracker: &Tracker<f64>) -> Vec<u64> {
+    let mut copy = tracker.clone();
+    copy.refresh().unwrap();
+    let axes: Vec<f64> = copy.axes().iter().flatten().copied().collect();
+    let mut all = vec![copy.total_energy(), copy.total_weight(), copy.clock(), copy.samples() as f64];
+    all.extend(copy.mean().iter().chain(copy.energies()).chain(copy.guard_energies()).chain(&axes));
+    all.into_iter().map(f64::to_bits).collect()
+}
+
+#[test]
+fn errors_and_rows_without_weight_leave_the_tracker_as_it_was() {
+    let rows = plant(61, 50, 6, 3, 0.1);
+    let mut tracker = learn::<f64>(Settings { memory: Some(20.0), ..Settings::new(6, 2) }, &rows);
+    let before = answers(&tracker);
+    let mut bad = rows[0].clone();
+    bad[4] = f64::NEG_INFINITY;
+    bad[1] = f64::NAN;
+    assert_eq!(
+        tracker.update(&bad, 1.0),
+        Err(Error::NonFinite { what: "row", index: 4, value: f64::NEG_INFINITY })
+    );
+    assert!(matches!(tracker.update(&rows[0][1..], 1.0), Err(Error::Length { expected: 6, got: 5, .. })));
+    assert!(matches!(tracker.update(&rows[0], -1.0), Err(Error::Parameter { name: "weight", .. })));
+    assert!(matches!(tracker.update(&rows[0], f64::NAN), Err(Error::Parameter { name: "weight", .. })));
+    assert!(matches!(
+        tracker.update_after(&rows[0], 1.0, f64::INFINITY),
+        Err(Error::Parameter { name: "elapsed", .. })
+    ));
+    assert!(matches!(tracker.update(&[1e300; 6], 1.0), Err(Error::Overflow { .. })));
+    assert!(matches!(tracker.update(&[f64::MAX; 6], 1.0), Err(Error::Overflow { .. })));
+    assert_eq!(tracker.update(&rows[1], 0.0).unwrap().skipped, Some(Skipped::Weight));
+    assert_eq!(answers(&tracker), before);
+    tracker.update(&rows[1], 1.0).unwrap();
+    assert_ne!(answers(&tracker), before);
+}
+
+#[test]
+fn settings_out_of_range_are_refused_by_name() {
+    let base = Settings::new(6, 2);
+    for (settings, name) in [
+        (Settings { rank: 0, ..base }, "rank"),
+        (Settings { rank: 7, ..base }, "rank"),
+        (Settings { guard: Some(5), ..base }, "guard"),
+        (Settings { memory: Some(1.0), ..base }, "memory"),
+        (Settings { memory: Some(f64::NAN), ..base }, "memory"),
+    ] {
+        let error = Tracker::<f64>::new(settings).err().unwrap();
+        assert!(matches!(error, Error::Parameter { name: found, .. } if found == name), "{error}");
+    }
+}
+
+#[test]
+fn a_constant_input_is_harmless_for_1e6_ticks_and_back() {
+    let rows = plant(67, 400, 10, 4, 0.1);
+    let settings = Settings { memory: Some(100.0), ..Settings::new(10, 3) };
+    for constant in [vec![0.0; 10], rows[7].clone(), vec![3e8; 10]] {
+        let mut tracker = learn::<f64>(settings, &rows);
+        for _ in 0..1_000_000 {
+            tracker.update(&constant, 1.0).unwrap();
+        }
+        tracker.refresh().unwrap();
+        assert!(tracker.energies().iter().all(|energy| *energy == 0.0 || energy.is_normal()));
+        assert!(tracker.energies()[0] < 1e-20 * constant[0].abs().max(1.0).powi(2));
+        // The step back from 3e8 is an energy of 1e15, forgotten by e^-80 after 8000 rows.
+        for _ in 0..20 {
+            learn_more(&mut tracker, &rows);
+        }
+        let all: Vec<Vec<f64>> = std::iter::repeat_n(&rows, 6).flatten().cloned().collect();
+        let batch = Batch::of(&all, &forgotten(2400, Some(100.0)), true);
+        tracker.refresh().unwrap();
+        for (got, expected) in tracker.energies().iter().zip(&batch.energies) {
+            assert!((got - expected).abs() <= 0.02 * expected, "{got} against {expected}");
+        }
+        assert!(tracker.orthogonality_error().unwrap() <= 1e-14);
+    }
+}
+
+#[test]
+fn an_offset_of_1e9_costs_no_digits_beyond_those_of_the_rows() {
+    let plain = plant(71, 3000, 8, 3, 0.1);
+    let settings = Settings { memory: Some(400.0), ..Settings::new(8, 3) };
+    let (mut low, mut high) = (learn::<f64>(settings, &plain), Tracker::<f64>::new(settings).unwrap());
+    for row in &plain {
+        let lifted: Vec<f64> = row.iter().map(|x| x + 1e9).collect();
+        high.update(&lifted, 1.0).unwrap();
+    }
+    low.refresh().unwrap();
+    high.refresh().unwrap();
+    // The rows themselves are rounded to 1.2e-7.
+    for (got, expected) in high.energies().iter().zip(low.energies()) {
+        assert!((got - expected).abs() < 4.0 * 1e9 * EPS * expected.sqrt(), "{got} against {expected}");
+    }
+    for (got, expected) in high.mean().iter().zip(low.mean()) {
+        assert!((got - 1e9 - expected).abs() < 2.0 * 1e9 * EPS, "{got} against {expected}");
+    }
+}
+
+#[test]
+fn a_row_a_million_times_the_usual_breaks_nothing() {
+    let rows = plant(73, 3000, 10, 4, 0.1);
+    let mut tracker = learn::<f64>(Settings { memory: Some(100.0), ..Settings::new(10, 3) }, &rows[..500]);
+    let glitch: Vec<f64> = rows[0].iter().map(|x| -1e6 * x).collect();
+    tracker.update(&glitch, 1.0).unwrap();
+    assert!(tracker.orthogonality_error().unwrap() <= 1e-14);
+    for _ in 0..3 {
+        learn_more(&mut tracker, &rows);
+    }
+    let batch = Batch::of(&rows, &forgotten(3000, Some(100.0)), true);
+    tracker.refresh().unwrap();
+    for (got, expected) in tracker.energies().iter().zip(&batch.energies) {
+        assert!((got - expected).abs() <= 0.02 * expected, "{got} against {expected}");
+    }
+}
+
+#[test]
+fn a_small_energy_beside_a_large_one_keeps_its_digits() {
+    // Strengths 1 and 1e-6, energies 1 and 1e-12: in a covariance the small one would keep four digits.
+    let mut next = Noise(79);
+    let rows: Vec<Vec<f64>> = (0..200)
+        .map(|_| {
+            let (large, small) = (next.next(), 1e-6 * next.next());
+            vec![large + small, large - small, 2.0 * large + 3.0 * small, -large]
+        })
+        .collect();
+    let mut tracker = learn::<f64>(Settings { guard: Some(2), ..Settings::new(4, 2) }, &rows);
+    let batch = Batch::of(&rows, &forgotten(200, None), true);
+    tracker.refresh().unwrap();
+    let (got, expected) = (tracker.energies()[1], batch.energies[1]);
+    assert!((got / expected - 1.0).abs() < 1e-8, "{got:e} against {expected:e}");
+}
+
+#[test]
+fn axes_keep_their_sign_from_refresh_to_refresh() {
+    let rows = plant(83, 2000, 10, 4, 0.1);
+    let mut tracker = learn::<f64>(Settings { memory: Some(300.0), ..Settings::new(10, 3) }, &rows[..200]);
+    tracker.refresh().unwrap();
+    for row in &rows[200..] {
+        let before: Vec<Vec<f64>> = tracker.axes().iter().map(<[f64]>::to_vec).collect();
+        tracker.update(row, 1.0).unwrap();
+        assert!(tracker.is_stale());
+        tracker.refresh().unwrap();
+        for (axis, before) in tracker.axes().iter().zip(&before) {
+            assert!(axis.iter().zip(before).map(|(a, b)| a * b).sum::<f64>() > 0.9);
+        }
+    }
+}
+
+#[test]
+fn merging_two_histories_equals_learning_both_where_nothing_is_truncated() {
+    let rows = plant(89, 260, 8, 8, 0.1);
+    for memory in [None, Some(70.0)] {
+        let settings = Settings { guard: Some(5), memory, ..Settings::new(8, 3) };
+        let mut first = learn::<f64>(settings, &rows[..100]);
+        let mut second = Tracker::<f64>::new(settings).unwrap();
+        for (index, row) in rows[100..].iter().enumerate() {
+            second.update_after(row, 1.0, if index == 0 { 101.0 } else { 1.0 }).unwrap();
+        }
+        let batch = Batch::of(&rows, &forgotten(260, memory), true);
+        let mut other_way = second.clone();
+        first.merge(&second).unwrap();
+        assert_equals(&mut first, &batch, rounding(260, 8));
+        other_way.merge(&learn::<f64>(settings, &rows[..100])).unwrap();
+        assert_equals(&mut other_way, &batch, rounding(260, 8));
+        assert_eq!((first.samples(), first.clock()), (260, 260.0));
+    }
+}
+
+#[test]
+fn merging_unlike_models_is_refused() {
+    let settings = Settings { memory: Some(50.0), ..Settings::new(8, 3) };
+    let mut tracker = Tracker::<f64>::new(settings).unwrap();
+    for other in [
+        Settings { channels: 9, ..settings },
+        Settings { rank: 2, ..settings },
+        Settings { memory: None, ..settings },
+        Settings { center: false, ..settings },
+    ] {
+        let other = Tracker::<f64>::new(other).unwrap();
+        assert!(matches!(tracker.merge(&other), Err(Error::Unlike { .. })));
+    }
 }
