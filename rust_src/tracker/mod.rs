@@ -137,6 +137,12 @@ impl<T: Scalar> Tracker<T> {
         self.q.view(self.factor.size())
     }
 
+    /// Row `index` of the triangular factor from the diagonal on: `R Q` are the rows whose square is the scatter.
+    #[must_use]
+    pub fn factor_row(&self, index: usize) -> &[f64] {
+        self.factor.tail(index)
+    }
+
     /// Spectral norm of `I - Q Q^T` of the tracked directions, computed now.
     ///
     /// # Errors
