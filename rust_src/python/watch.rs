@@ -1,20 +1,20 @@
 //! `perpend.Watch`.
 
-use std::sync::{Arc, Mutex, PoisonError};
+use std::sync::Arc;
 
 use numpy::PyArray1;
 use pyo3::exceptions::PyValueError;
 use pyo3::prelude::*;
-use pyo3::sync::MutexExt;
 use pyo3::types::{PyDict, PyList};
 
-use super::convert::{Stored, block, matrix, row};
+use super::convert::{Count, Stored, block, matrix, row};
 use super::errors::fenced;
+use super::guarded::Guarded;
 use super::reading::{PyReading, passed};
+use crate::Scalar;
 use crate::watch::event::Event;
 use crate::watch::replay::{NUMBERS, Replay};
 use crate::watch::{Limits, Settings, Watch};
-use crate::{Error, Scalar};
 
 /// A watch in one of the stored types.
 enum Inner {
@@ -35,29 +35,12 @@ macro_rules! either {
 /// The monitoring loop; see `_core.pyi` for the documentation.
 #[pyclass(frozen, module = "perpend", name = "Watch")]
 pub(super) struct PyWatch {
-    inner: Mutex<Inner>,
+    inner: Guarded<Inner>,
     channels: usize,
     names: Arc<Vec<String>>,
 }
 
 impl PyWatch {
-    /// Runs `call` on the watch, alone: calls from several threads take turns.
-    fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
-        let mut inner = self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
-        fenced(|| call(&mut inner))
-    }
-
-    /// Reads something that cannot fail.
-    fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&Inner) -> R) -> R {
-        call(&self.inner.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
-    }
-
-    /// Runs `call` alone, without the interpreter.
-    fn alone<R>(&self, call: impl FnOnce(&mut Inner) -> Result<R, Error>) -> PyResult<R> {
-        let mut inner = self.inner.lock().unwrap_or_else(PoisonError::into_inner);
-        fenced(|| call(&mut inner))
-    }
-
     fn event<'py>(&self, py: Python<'py>, event: &Event) -> PyResult<Bound<'py, PyDict>> {
         let dict = PyDict::new(py);
         dict.set_item("start", event.start)?;
@@ -130,38 +113,50 @@ fn columns(py: Python<'_>, replay: Replay, channels: usize) -> PyResult<Bound<'_
 impl PyWatch {
     #[new]
     #[pyo3(signature = (
-        channels, names=None, *, rank=None, memory=Some(5000.0), settle=500, false_alarm=1e-3, confirm=3, of=5,
-        hold=300, limits="moments", dtype=Stored::Float64
+        channels, names=None, *, rank=None, memory=Some(5000.0), settle=Count(500), false_alarm=1e-3,
+        confirm=Count(3), of=Count(5), hold=Count(300), limits="moments", dtype=Stored::Float64
     ), text_signature = "(channels, names=None, *, rank=None, memory=5000.0, settle=500, false_alarm=0.001, \
         confirm=3, of=5, hold=300, limits='moments', dtype='float64')")]
     #[expect(clippy::too_many_arguments, reason = "keyword arguments, each a setting")]
     fn new(
-        channels: usize,
+        channels: Count,
         names: Option<Vec<String>>,
-        rank: Option<usize>,
+        rank: Option<Count>,
         memory: Option<f64>,
-        settle: usize,
+        settle: Count,
         false_alarm: f64,
-        confirm: usize,
-        of: usize,
-        hold: u64,
+        confirm: Count,
+        of: Count,
+        hold: Count,
         limits: &str,
         dtype: Stored,
     ) -> PyResult<Self> {
         let limits = self::limits(limits)?;
-        let settings = Settings { channels, rank, memory, settle, false_alarm, confirm, of, hold, limits };
+        let settings = Settings {
+            channels: channels.0,
+            rank: rank.map(|rank| rank.0),
+            memory,
+            settle: settle.0,
+            false_alarm,
+            confirm: confirm.0,
+            of: of.0,
+            hold: hold.0 as u64,
+            limits,
+        };
+        let channels = channels.0;
         let inner = match dtype {
             Stored::Float64 => Inner::Float64(make(settings)?),
             Stored::Float32 => Inner::Float32(make(settings)?),
         };
         let names = Arc::new(self::names(names, channels)?);
-        Ok(Self { inner: Mutex::new(inner), channels, names })
+        Ok(Self { inner: Guarded::new(inner), channels, names })
     }
 
     fn tick(&self, row: &Bound<'_, PyAny>) -> PyResult<PyReading> {
         let row = self::row(row)?;
         let entries = row.entries()?;
-        let reading = self.with(row.py(), |inner| either!(inner, watch => watch.tick(entries).cloned()))?;
+        let reading =
+            self.inner.with(row.py(), |inner| either!(inner, watch => watch.tick(entries).cloned()))?;
         Ok(PyReading::new(reading, Arc::clone(&self.names)))
     }
 
@@ -169,10 +164,12 @@ impl PyWatch {
         let py = rows.py();
         let block = block(rows)?;
         let (entries, count) = block.of(self.channels)?;
-        self.with(py, |inner| either!(inner, watch => watch.check_rows(entries)))?;
+        self.inner.with(py, |inner| either!(inner, watch => watch.check_rows(entries)))?;
         let mut replay = Replay::with_room(count, self.channels);
         for piece in block.pieces(entries) {
-            py.detach(|| self.alone(|inner| either!(inner, watch => watch.replay_into(piece, &mut replay))))?;
+            py.detach(|| {
+                self.inner.alone(|inner| either!(inner, watch => watch.replay_into(piece, &mut replay)))
+            })?;
             py.check_signals()?;
         }
         columns(py, replay, self.channels)
@@ -181,26 +178,29 @@ impl PyWatch {
     fn settle_on(&self, rows: &Bound<'_, PyAny>) -> PyResult<()> {
         let block = block(rows)?;
         let (entries, _) = block.of(self.channels)?;
-        let settle = || self.alone(|inner| either!(inner, watch => watch.settle_on(entries)));
+        let settle = || self.inner.alone(|inner| either!(inner, watch => watch.settle_on(entries)));
         rows.py().detach(settle)
     }
 
     fn freeze(&self, py: Python<'_>) -> PyResult<()> {
-        self.with(py, |inner| {
+        self.inner.with(py, |inner| {
             either!(inner, watch => watch.freeze());
             Ok(())
         })
     }
 
     fn resume(&self, py: Python<'_>) -> PyResult<()> {
-        self.with(py, |inner| {
+        self.inner.with(py, |inner| {
             either!(inner, watch => watch.resume());
             Ok(())
         })
     }
 
     fn accept(&self, py: Python<'_>) -> PyResult<()> {
-        self.with(py, |inner| either!(inner, watch => watch.accept()))
+        self.inner.with(py, |inner| {
+            either!(inner, watch => watch.accept());
+            Ok(())
+        })
     }
 
     #[getter]
@@ -215,32 +215,32 @@ impl PyWatch {
 
     #[getter]
     fn phase(&self, py: Python<'_>) -> &'static str {
-        self.read(py, |inner| either!(inner, watch => watch.phase().name()))
+        self.inner.read(py, |inner| either!(inner, watch => watch.phase().name()))
     }
 
     #[getter]
     fn rank(&self, py: Python<'_>) -> usize {
-        self.read(py, |inner| either!(inner, watch => watch.rank()))
+        self.inner.read(py, |inner| either!(inner, watch => watch.rank()))
     }
 
     #[getter]
     fn dropped(&self, py: Python<'_>) -> usize {
-        self.read(py, |inner| either!(inner, watch => watch.dropped()))
+        self.inner.read(py, |inner| either!(inner, watch => watch.dropped()))
     }
 
     #[getter]
     fn ticks(&self, py: Python<'_>) -> u64 {
-        self.read(py, |inner| either!(inner, watch => watch.ticks()))
+        self.inner.read(py, |inner| either!(inner, watch => watch.ticks()))
     }
 
     #[getter]
     fn frozen(&self, py: Python<'_>) -> bool {
-        self.read(py, |inner| either!(inner, watch => watch.frozen()))
+        self.inner.read(py, |inner| either!(inner, watch => watch.frozen()))
     }
 
     #[getter]
     fn constant(&self, py: Python<'_>) -> Vec<&str> {
-        self.read(py, |inner| {
+        self.inner.read(py, |inner| {
             either!(inner, watch => {
                 let out = (0..self.channels).filter(|channel| watch.rank() > 0 && !watch.moves(*channel));
                 out.map(|channel| self.names[channel].as_str()).collect()
@@ -251,12 +251,12 @@ impl PyWatch {
     #[getter]
     fn events<'py>(&self, py: Python<'py>) -> PyResult<Vec<Bound<'py, PyDict>>> {
         let events: Vec<Event> =
-            self.read(py, |inner| either!(inner, watch => watch.events().copied().collect()));
+            self.inner.read(py, |inner| either!(inner, watch => watch.events().copied().collect()));
         events.iter().map(|event| self.event(py, event)).collect()
     }
 
     fn __repr__(&self, py: Python<'_>) -> String {
-        self.read(py, |inner| {
+        self.inner.read(py, |inner| {
             either!(inner, watch => {
                 let (phase, rank, ticks) = (watch.phase().name(), watch.rank(), watch.ticks());
                 format!("Watch(channels={}, phase={phase}, rank={rank}, ticks={ticks})", self.channels)

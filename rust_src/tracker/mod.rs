@@ -150,6 +150,12 @@ impl<T: Scalar> Tracker<T> {
         orthogonality_error(self.directions())
     }
 
+    /// Row `index` of the triangular factor from the diagonal on: `R Q` are the rows whose square is the scatter.
+    #[must_use]
+    pub fn factor_row(&self, index: usize) -> &[f64] {
+        self.subspace.factor().tail(index)
+    }
+
     /// The tracked directions, reported and guard, in no particular order.
     #[must_use]
     pub fn directions(&self) -> Rows<'_, T> {

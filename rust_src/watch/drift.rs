@@ -8,12 +8,14 @@
 //! The angle means nothing where the weakest axis could as well be another: two estimates of the same subspace from
 //! `n` rows differ by about the square root of `sum_ij L_i l_j / (n (L_i - l_j)^2)` over kept energies `L` and those left
 //! out `l` (Anderson, Ann. Math. Stat. 34 (1963) 122-148). Where that exceeds [`UNTOLD`] the angle is withheld.
+//!
+//! The comparison is made once for each renewal of the axes, an axis or a few rotations a tick.
 
-use crate::dense::Svd;
-use crate::error::Error;
 use crate::ops;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
+
+use super::turning::Turning;
 
 /// Sampling angle, in radians, above which an angle says nothing.
 const UNTOLD: f64 = 0.5;
@@ -44,16 +46,27 @@ pub struct Present<'a, T> {
     pub rows: f64,
 }
 
+/// Where a comparison stands.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Stage {
+    Idle,
+    /// The baseline's axis to be compared next.
+    Axis(usize),
+    Turning,
+}
+
 /// The state that was accepted, and the workspace to compare with it.
+#[derive(Clone, Debug)]
 pub struct Baseline<T> {
     axes: RowStore<T>,
     energies: Vec<f64>,
     mean: Vec<f64>,
+    stage: Stage,
+    captured: f64,
+    /// What the present axes leave of the baseline's.
+    residuals: Turning,
     scores: Vec<f64>,
     vector: Vec<f64>,
-    residuals: RowStore<f64>,
-    gram: Vec<f64>,
-    svd: Svd,
 }
 
 impl<T: Scalar> Baseline<T> {
@@ -69,54 +82,80 @@ impl<T: Scalar> Baseline<T> {
             axes,
             energies: present.energies.to_vec(),
             mean: present.mean.to_vec(),
+            stage: Stage::Idle,
+            captured: 0.0,
+            residuals: Turning::with_room(rank, channels),
             scores: vec![0.0; rank],
             vector: vec![0.0; channels],
-            residuals: RowStore::zeros(rank, channels),
-            gram: vec![0.0; rank * rank],
-            svd: Svd::new(rank, rank),
         }
     }
 
-    /// Compares with the present state: `4 rank^2 channels` flops and a decomposition of `rank` by `rank`.
-    ///
-    /// # Errors
-    /// [`Error::NoConvergence`] of the decomposition.
-    pub fn compare(&mut self, present: Present<'_, T>) -> Result<Drift, Error> {
+    /// Whether no comparison is under way.
+    #[must_use]
+    pub fn idle(&self) -> bool {
+        self.stage == Stage::Idle
+    }
+
+    /// Begins a comparison.
+    pub fn begin(&mut self) {
+        self.stage = Stage::Axis(0);
+        self.captured = 0.0;
+    }
+
+    /// A tick's worth of the comparison; the figures when it ends. The present axes are the same from beginning to end.
+    /// `4 rank channels` flops at most.
+    pub fn advance(&mut self, present: Present<'_, T>) -> Option<Drift> {
         let rank = self.energies.len();
-        let (mut captured, mut total) = (0.0, 0.0);
-        for index in 0..rank {
-            for (target, value) in self.vector.iter_mut().zip(self.axes.row(index)) {
-                *target = value.to_f64();
+        match self.stage {
+            Stage::Idle => None,
+            Stage::Axis(index) => {
+                self.compare_axis(index, present.axes);
+                self.stage = if index + 1 < rank { Stage::Axis(index + 1) } else { Stage::Turning };
+                if self.stage == Stage::Turning {
+                    self.residuals.begin(rank);
+                }
+                None
             }
-            ops::project(present.axes, &self.vector, &mut self.scores);
-            let residual = self.residuals.row_mut(index);
-            ops::subtract(present.axes, &self.scores, &self.vector, residual);
-            captured += self.energies[index] * ops::norm_squared(&self.scores).min(1.0);
-            total += self.energies[index];
+            Stage::Turning => {
+                if !self.residuals.advance(rank.div_ceil(4)) {
+                    return None;
+                }
+                self.stage = Stage::Idle;
+                Some(self.figures(present))
+            }
         }
-        let angle = if told(present) { Some(self.largest_angle()?) } else { None };
+    }
+
+    /// A whole comparison.
+    pub fn compare(&mut self, present: Present<'_, T>) -> Drift {
+        self.begin();
+        loop {
+            if let Some(drift) = self.advance(present) {
+                return drift;
+            }
+        }
+    }
+
+    fn compare_axis(&mut self, index: usize, axes: Rows<'_, T>) {
+        for (target, value) in self.vector.iter_mut().zip(self.axes.row(index)) {
+            *target = value.to_f64();
+        }
+        ops::project(axes, &self.vector, &mut self.scores);
+        ops::subtract(axes, &self.scores, &self.vector, self.residuals.rows.row_mut(index));
+        self.captured += self.energies[index] * ops::norm_squared(&self.scores).min(1.0);
+    }
+
+    /// The largest singular value of the residuals is the sine of the largest angle, to full relative accuracy where
+    /// it is small; near a right angle, where the sine says little, the arc sine loses digits nobody reads.
+    fn figures(&self, present: Present<'_, T>) -> Drift {
+        let total: f64 = self.energies.iter().sum();
+        let sine = self.residuals.squares().iter().copied().fold(0.0, f64::max).sqrt();
         let shifts = present.mean.iter().zip(&self.mean).map(|(now, then)| (now - then).abs());
-        Ok(Drift {
-            angle,
-            captured: (total > 0.0).then(|| captured / total),
+        Drift {
+            angle: told(present).then(|| sine.min(1.0).asin()),
+            captured: (total > 0.0).then(|| self.captured / total),
             mean_shift: Some(shifts.fold(0.0, f64::max)),
-        })
-    }
-
-    /// From the residuals: their largest singular value is the sine of the largest angle, to full relative accuracy
-    /// where it is small; near a right angle, where the sine says little, the arc sine loses digits nobody reads.
-    fn largest_angle(&mut self) -> Result<f64, Error> {
-        let rank = self.energies.len();
-        for row in 0..rank {
-            for column in 0..=row {
-                let product = ops::dot(self.residuals.row(row), self.residuals.row(column));
-                self.gram[row * rank + column] = product;
-                self.gram[column * rank + row] = product;
-            }
         }
-        self.svd.decompose(&self.gram)?;
-        let sine = self.svd.values().first().copied().unwrap_or(0.0).sqrt();
-        Ok(sine.min(1.0).asin())
     }
 }
 
@@ -135,22 +174,6 @@ fn told<T: Scalar>(present: Present<'_, T>) -> bool {
         square += count as f64 * energy * next / (gap * gap * present.rows);
     }
     square.sqrt() <= UNTOLD
-}
-
-impl<T: Scalar> Clone for Baseline<T> {
-    fn clone(&self) -> Self {
-        let rank = self.energies.len();
-        Self {
-            axes: self.axes.clone(),
-            energies: self.energies.clone(),
-            mean: self.mean.clone(),
-            scores: self.scores.clone(),
-            vector: self.vector.clone(),
-            residuals: self.residuals.clone(),
-            gram: self.gram.clone(),
-            svd: Svd::new(rank, rank),
-        }
-    }
 }
 
 #[cfg(test)]
@@ -177,7 +200,7 @@ mod tests {
         let mut baseline = Baseline::of(present(&then, &mean, 0.1));
         for angle in [1e-12, 1e-8, 1e-3, 0.5, 1.5] {
             let now = plane(angle);
-            let drift = baseline.compare(present(&now, &mean, 0.1)).unwrap();
+            let drift = baseline.compare(present(&now, &mean, 0.1));
             let got = drift.angle.unwrap();
             // The residual carries eps of the unit vectors; the arc sine magnifies by 1 / cos.
             assert!((got - angle).abs() < 8.0 * f64::EPSILON / angle.cos(), "{angle}: {got}");
@@ -190,7 +213,7 @@ mod tests {
     fn no_angle_is_given_where_the_eigengap_denies_it() {
         let (then, mean) = (plane(0.0), [0.0, 0.3, -0.7, 0.0]);
         let mut baseline = Baseline::of(present(&then, &[0.0; 4], 0.95));
-        let drift = baseline.compare(present(&plane(0.4), &mean, 0.95)).unwrap();
+        let drift = baseline.compare(present(&plane(0.4), &mean, 0.95));
         assert_eq!(drift.angle, None);
         assert!((drift.mean_shift.unwrap() - 0.7).abs() < 1e-15);
     }

@@ -21,8 +21,6 @@ use super::units::Newcomer;
 /// Learned rows between two renewals of the same limit. In as many rows the moments move by 3 % of what 500 rows have
 /// taught; the four limits take turns, so that no tick pays for two.
 const TURN: u64 = 16;
-/// Learned rows between two comparisons with the baseline.
-const COMPARED: u64 = 64;
 /// Share of the degrees of freedom that a row must show for the limits to learn from it: the statistics of
 /// sparser rows spread too widely.
 const SHOWN: f64 = 0.5;
@@ -46,7 +44,7 @@ pub(super) struct Judging<T: Scalar> {
 
 impl<T: Scalar> Judging<T> {
     /// Starts from what settling found.
-    pub(super) fn new(settings: &Settings, settled: Settled<T>) -> Result<Self, Error> {
+    pub(super) fn new(settings: &Settings, settled: Settled<T>) -> Self {
         let Settled { model, statistics, dropped } = settled;
         let (tail, keep) = (settings.tail(), settings.keep());
         let charts = [(0, model.floor()), (1, f64::MIN_POSITIVE)]
@@ -65,9 +63,9 @@ impl<T: Scalar> Judging<T> {
             model,
             charts,
         };
-        judging.renew()?;
-        judging.compare()?;
-        Ok(judging)
+        judging.renew();
+        judging.compare();
+        judging
     }
 
     pub(super) fn rank(&self) -> usize {
@@ -162,7 +160,7 @@ impl<T: Scalar> Judging<T> {
             let keep = if self.gate.hasty() { self.settings.hasty_keep() } else { self.settings.keep() };
             self.charts[0].learn(judged.spe, verdicts[0].limit, keep);
             self.charts[1].learn(judged.t2, verdicts[1].limit, keep);
-            self.take_turn()?;
+            self.take_turn();
         }
         if reading.weight > 0.0 {
             self.model.learn(reading.weight)?;
@@ -172,23 +170,28 @@ impl<T: Scalar> Judging<T> {
     }
 
     /// Work that need not be done at each tick, a piece at a time.
-    fn take_turn(&mut self) -> Result<(), Error> {
+    fn take_turn(&mut self) {
         self.learned += 1;
         match self.learned % TURN {
             0 => self.charts[0].refresh_limit(),
             4 => self.charts[1].refresh_limit(),
             8 => self.charts[0].refresh_smooth(),
             12 => self.charts[1].refresh_smooth(),
-            2 if self.learned % COMPARED == 2 => self.compare()?,
-            _ if self.model.due() => self.renew()?,
+            _ if !self.baseline.idle() => {
+                if let Some(drift) = self.baseline.advance(present(&self.model, &self.charts)) {
+                    self.drift = drift;
+                }
+            }
+            _ if self.model.work_on_lens() => {
+                self.follow_lens();
+                self.baseline.begin();
+            }
             _ => {}
         }
-        Ok(())
     }
 
-    /// New axes to judge by, and what depends on them.
-    fn renew(&mut self) -> Result<(), Error> {
-        self.model.renew()?;
+    /// What depends on the axes and energies of the lens.
+    fn follow_lens(&mut self) {
         let floor = self.model.floor();
         self.model.lens.set_noise(self.charts[0].mean(), floor);
         if self.settings.limits == Limits::Spectrum {
@@ -197,12 +200,16 @@ impl<T: Scalar> Judging<T> {
             self.charts[0].set_limit(residuals.jackson_mudholkar(tail));
             self.charts[1].set_limit(hotelling::after_learned(self.rank(), self.charts[1].count(), tail));
         }
-        Ok(())
     }
 
-    fn compare(&mut self) -> Result<(), Error> {
-        self.drift = self.baseline.compare(present(&self.model, &self.charts))?;
-        Ok(())
+    /// New axes to judge by, at once.
+    fn renew(&mut self) {
+        self.model.renew();
+        self.follow_lens();
+    }
+
+    fn compare(&mut self) {
+        self.drift = self.baseline.compare(present(&self.model, &self.charts));
     }
 
     /// Watches the channels that take no part, and lets in those that have begun to move. A channel that joins is
@@ -225,10 +232,10 @@ impl<T: Scalar> Judging<T> {
 
     /// The present state becomes the baseline; alarm and counters start afresh. Said during an alarm, it also opens the
     /// gate: what is seen now is healthy, and is adopted from the next row on.
-    pub(super) fn accept(&mut self, tick: u64, events: &mut Events) -> Result<(), Error> {
-        self.renew()?;
+    pub(super) fn accept(&mut self, tick: u64, events: &mut Events) {
+        self.renew();
         self.baseline = Baseline::of(present(&self.model, &self.charts));
-        self.compare()?;
+        self.compare();
         self.gate.reset();
         if self.alarm.on() {
             events.close(tick);
@@ -236,7 +243,6 @@ impl<T: Scalar> Judging<T> {
         }
         self.alarm.reset();
         self.charts.iter_mut().for_each(Chart::restart_smooth);
-        Ok(())
     }
 
     pub(super) fn phase(&self) -> Phase {

@@ -122,6 +122,12 @@ impl<T: Scalar> Lens<T> {
         &self.residual
     }
 
+    /// What the scores of the row judged last say of `channel`'s deviation.
+    #[must_use]
+    pub fn told_of(&self, channel: usize) -> f64 {
+        self.scores.iter().enumerate().map(|(k, score)| score * self.axes.row(k)[channel].to_f64()).sum()
+    }
+
     /// Residual degrees of freedom.
     #[must_use]
     pub fn freedom(&self) -> f64 {

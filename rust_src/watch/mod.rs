@@ -30,15 +30,18 @@ pub mod limits;
 mod model;
 pub mod rank;
 mod reading;
+mod renewal;
 pub mod replay;
 pub mod runs;
 mod settings;
 mod settle;
 pub mod smooth;
 pub mod suspects;
+mod turning;
 pub mod units;
 
 use crate::error::Error;
+use crate::memory::check_room;
 use crate::scalar::Scalar;
 
 use event::{Event, Events};
@@ -71,13 +74,16 @@ pub struct Watch<T: Scalar> {
 }
 
 impl<T: Scalar> Watch<T> {
-    /// A watch that has seen nothing. Memory for `settle` rows is kept until they have come.
+    /// A watch that has seen nothing. Room for `settle` rows is taken as they come and given back when settling ends.
     ///
     /// # Errors
-    /// [`Error::Parameter`] where a setting is out of its range.
+    /// [`Error::Parameter`] where a setting is out of its range; [`Error::Memory`] where the rows to settle on, or the
+    /// window of the alarm, cannot be held.
     pub fn new(settings: Settings) -> Result<Self, Error> {
         settings.check()?;
         let channels = settings.channels;
+        check_room(channels, settings.settle)?;
+        check_room(settings.of, 1)?;
         Ok(Self {
             stage: Stage::Settling(Vec::new()),
             runs: Runs::new(channels),
@@ -157,7 +163,7 @@ impl<T: Scalar> Watch<T> {
                 got: format!("{} rows", rows.len() / self.settings.channels),
             });
         };
-        let judging = Judging::new(&self.settings, settled)?;
+        let judging = Judging::new(&self.settings, settled);
         self.runs = Runs::new(self.settings.channels);
         for row in rows.chunks_exact(self.settings.channels) {
             self.runs.take(row, true);
@@ -175,7 +181,7 @@ impl<T: Scalar> Watch<T> {
             return Ok(());
         }
         if let Some(settled) = settle::settle(rows, &self.settings)? {
-            self.stage = Stage::Judging(Box::new(Judging::new(&self.settings, settled)?));
+            self.stage = Stage::Judging(Box::new(Judging::new(&self.settings, settled)));
         } else {
             rows.drain(..self.settings.settle.div_ceil(4) * self.settings.channels);
         }
@@ -200,13 +206,9 @@ impl<T: Scalar> Watch<T> {
 
     /// Takes the present state as the new baseline; the alarm and its counters start afresh. Said during an alarm, it
     /// also means that what is seen now is healthy: rows beyond a limit are adopted from the next one on.
-    ///
-    /// # Errors
-    /// [`Error::NoConvergence`], never seen on finite rows.
-    pub fn accept(&mut self) -> Result<(), Error> {
-        match &mut self.stage {
-            Stage::Settling(_) => Ok(()),
-            Stage::Judging(judging) => judging.accept(self.ticks, &mut self.events),
+    pub fn accept(&mut self) {
+        if let Stage::Judging(judging) = &mut self.stage {
+            judging.accept(self.ticks, &mut self.events);
         }
     }
 

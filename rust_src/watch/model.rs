@@ -1,8 +1,11 @@
 //! The healthy model: units, tracker, and the lens rows are judged by.
 //!
-//! The lens takes new axes from the tracker when the weight learned since exceeds a hundredth of all that is learned, and
-//! not oftener than every [`LEAST_AGE`] rows: what a row is judged by lags by at most a hundredth of the memory, whose
-//! effect on the statistics is of that order, far below the sampling error of axes learned from the same rows.
+//! New axes for the lens are begun when the weight learned since the last ones exceeds a hundredth of all that is learned,
+//! and not oftener than every [`LEAST_AGE`] rows, and are ready some tens of rows later ([`super::renewal`]). What a row is
+//! judged by lags by about a hundredth of the memory, whose effect on the statistics is of that order, below the
+//! sampling error of axes learned from the same rows.
+//!
+//! The tracker is given rows without gaps: the lens fills them with what the observed channels say of them.
 
 use crate::error::Error;
 use crate::scalar::Scalar;
@@ -10,11 +13,12 @@ use crate::tracker::{self, Tracker};
 
 use super::lens::{Judged, Lens};
 use super::limits::spectrum::Residuals;
+use super::renewal::Renewal;
 use super::units::Units;
 
-/// Share of the learned weight by which the lens may lag.
+/// Share of the learned weight by which the lens may lag before new axes are begun.
 const LAG: f64 = 0.01;
-/// Rows between two renewals of the lens, at least.
+/// Rows between two beginnings, at least.
 const LEAST_AGE: u32 = 16;
 /// Roundings of a scaled value that a residual may carry without meaning anything.
 const ROUNDINGS: f64 = 8.0;
@@ -28,6 +32,7 @@ pub struct Model<T: Scalar> {
     pub tracker: Tracker<T>,
     /// What rows are judged by.
     pub lens: Lens<T>,
+    renewal: Renewal<T>,
     scaled: Vec<f64>,
     observed: usize,
     floor: f64,
@@ -48,6 +53,7 @@ impl<T: Scalar> Model<T> {
         Ok(Self {
             tracker: Tracker::new(settings)?,
             lens: Lens::new(channels, rank),
+            renewal: Renewal::with_room(channels, rank, settings.directions()),
             units,
             scaled: vec![0.0; channels],
             observed: 0,
@@ -57,6 +63,16 @@ impl<T: Scalar> Model<T> {
             recent: 0.0,
             age: 0,
         })
+    }
+
+    /// Forgets what was learned; the lens stays.
+    ///
+    /// # Errors
+    /// None that the tracker's settings did not give before.
+    pub fn start_over(&mut self) -> Result<(), Error> {
+        self.tracker = Tracker::new(*self.tracker.settings())?;
+        (self.learned, self.recent, self.age) = (0.0, 0.0, 0);
+        Ok(())
     }
 
     /// Looks at a raw row: scales it and takes it from the mean. Returns whether it can be judged, and how.
@@ -74,6 +90,11 @@ impl<T: Scalar> Model<T> {
     /// # Errors
     /// None on rows that were scaled here; the tracker's own if it finds otherwise.
     pub fn learn(&mut self, weight: f64) -> Result<(), Error> {
+        for channel in 0..self.scaled.len() {
+            if self.scaled[channel].is_nan() {
+                self.scaled[channel] = self.tracker.mean()[channel] + self.lens.told_of(channel);
+            }
+        }
         self.tracker.update(&self.scaled, weight)?;
         self.learned = self.keep * self.learned + weight;
         self.recent += weight;
@@ -81,22 +102,37 @@ impl<T: Scalar> Model<T> {
         Ok(())
     }
 
-    /// Whether the lens has aged enough to be renewed.
-    #[must_use]
-    pub fn due(&self) -> bool {
-        self.age >= LEAST_AGE && self.recent > LAG * self.learned
+    /// A tick's worth of work on new axes; true where the lens has just taken them.
+    pub fn work_on_lens(&mut self) -> bool {
+        if self.renewal.idle() {
+            if self.age >= LEAST_AGE && self.recent > LAG * self.learned {
+                self.begin();
+            }
+            return false;
+        }
+        let ready = self.renewal.advance();
+        if ready {
+            self.take();
+        }
+        ready
     }
 
-    /// Renews the lens from what the tracker has learned.
-    ///
-    /// # Errors
-    /// [`Error::NoConvergence`]: the lens stays as it was.
-    pub fn renew(&mut self) -> Result<(), Error> {
+    /// New axes at once, from what the tracker has learned up to now.
+    pub fn renew(&mut self) {
+        self.begin();
+        self.renewal.finish();
+        self.take();
+    }
+
+    fn begin(&mut self) {
         self.age = 0;
         self.recent = 0.0;
-        self.tracker.refresh()?;
-        self.lens.take(self.tracker.axes(), self.tracker.energies(), self.units.moving(), self.floor);
-        Ok(())
+        self.renewal.begin(&self.tracker);
+    }
+
+    fn take(&mut self) {
+        let (axes, energies) = self.renewal.take();
+        self.lens.take(axes, energies, self.units.moving(), self.floor);
     }
 
     /// A channel joins with these units; its floor of rounding with it.
@@ -108,20 +144,19 @@ impl<T: Scalar> Model<T> {
     /// The largest energy that the axes leave out, and how many directions they leave out.
     #[must_use]
     pub fn left_out(&self) -> (f64, usize) {
-        let weakest = self.tracker.energies().last().copied().unwrap_or(0.0);
+        let (beyond, _) = self.renewal.beyond();
         let count = self.units.moving().saturating_sub(self.lens.axes().count());
-        ((1.0 - self.tracker.gap()) * weakest, count)
+        (beyond.first().copied().unwrap_or(0.0), count)
     }
 
     /// Energies that the axes leave out: those of the guard directions, and what is left spread evenly.
     #[must_use]
     pub fn residuals(&self) -> Residuals {
-        let guard = self.tracker.guard_energies();
-        let reported = self.tracker.energies();
-        let rest = self.units.moving().saturating_sub(reported.len() + guard.len());
-        let told: f64 = reported.iter().chain(guard).sum();
-        let total = (self.tracker.total_energy() - told).max(0.0);
-        Residuals::of(guard.iter().copied()).and_equal(rest, total)
+        let (guard, total) = self.renewal.beyond();
+        let reported = self.lens.axes().count();
+        let rest = self.units.moving().saturating_sub(reported + guard.len());
+        let told: f64 = self.lens.energies().iter().chain(guard).sum();
+        Residuals::of(guard.iter().copied()).and_equal(rest, (total - told).max(0.0))
     }
 
     /// Energy below which a residual is rounding.

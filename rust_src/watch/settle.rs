@@ -22,6 +22,8 @@ use super::units::Units;
 
 /// Runs in time that are judged by a model of the others.
 const FOLDS: usize = 5;
+/// Passes over settling rows with gaps.
+const PASSES: usize = 4;
 /// Rounds of dropping rows at most.
 const ROUNDS: usize = 4;
 /// Probability that a clean row is dropped in one settling.
@@ -118,17 +120,22 @@ fn learn<T: Scalar>(
     rank: usize,
     memory: Option<f64>,
 ) -> Result<Model<T>, Error> {
-    let mut model = Model::new(units, channels, rank, memory)?;
-    for (row, _) in rows.chunks_exact(channels).zip(kept).filter(|(_, keep)| **keep) {
-        model.judge(row);
-        model.learn(1.0)?;
+    let mut model = Model::<T>::new(units, channels, rank, memory)?;
+    // Gaps are filled by the lens, which knows nothing at first: it is filled, learned from, filled again.
+    let passes = if rows.iter().any(|value| value.is_nan()) { PASSES } else { 1 };
+    for pass in 0..passes {
+        if pass > 0 {
+            model.start_over()?;
+        }
+        for (row, _) in rows.chunks_exact(channels).zip(kept).filter(|(_, keep)| **keep) {
+            model.judge(row);
+            model.learn(1.0)?;
+        }
+        model.renew();
+        let left = model.residuals().theta[0];
+        let floor = model.floor();
+        model.lens.set_noise(left, floor);
     }
-    model.renew()?;
-    // The fit of rows with gaps weighs them by the noise of a residual direction: first from what there is.
-    let explained: f64 = model.lens.energies().iter().sum();
-    let left = (model.units.moving() as f64 - explained).max(model.floor());
-    let floor = model.floor();
-    model.lens.set_noise(left, floor);
     Ok(model)
 }
 
