@@ -29,19 +29,25 @@ class Narrator:
         self._out = out
         self._tally = tally
         self._on = False
+        self._stuck: set[str] = set()
+        self._vanished: set[str] = set()
 
     def take(self, row: Row, reading: Reading) -> None:
         """Say what changed with this row, if anything did."""
+        where = placed(Moment.of(row))
+        for name in new_in(self._stuck, reading.stuck):
+            self._say(f"{where}  {name} is stuck: it has not moved for longer than usual")
+        for name in new_in(self._vanished, reading.vanished):
+            self._say(f"{where}  {name} has vanished: no value for longer than usual")
         if reading.alarm == self._on:
             return
         self._on = reading.alarm
-        where = placed(Moment.of(row))
         if reading.alarm:
             excess = largest_excess(reading)
             self._say(f"{where}  ALARM  {excess or ''}".rstrip())
             self._say(wrapped("    suspects: ", named(reading.suspects(3), reading)))
         else:
-            self._say(f"{where}  alarm off after {counted(self._tally.alarms[-1].rows, 'row')}")
+            self._say(f"{where}  alarm off after {lasted(self._tally.alarms[-1])}")
 
     def _say(self, line: str) -> None:
         self._out.write(line + "\n")
@@ -99,6 +105,20 @@ def counted(count: int, noun: str) -> str:
     return f"{count:,} {noun}" + ("" if count == 1 else "s")
 
 
+def lasted(alarm: Alarm) -> str:
+    """Write how long an alarm was on, and whether it went off because the watch gave in to what it saw."""
+    adopted = f", {alarm.adopted:,} of them adopted as the new state" if alarm.adopted else ""
+    return counted(alarm.rows, "row") + adopted
+
+
+def new_in(known: set[str], names: Sequence[str]) -> list[str]:
+    """Return the names that were not known, and know exactly these from now on."""
+    added = [name for name in names if name not in known]
+    known.clear()
+    known.update(names)
+    return added
+
+
 def share(part: int, whole: int) -> str:
     """Write a share in percent; a dash where there is nothing to share."""
     return f"{100 * part / whole:.2f} %" if whole else "-"
@@ -140,7 +160,7 @@ def _gaps(tally: Tally) -> str:
 
 def _alarm(number: int, alarm: Alarm) -> list[str]:
     until = "still on" if alarm.end is None else f"to {placed(alarm.end)}"
-    lines = [f"{number:>4}  {placed(alarm.start)} {until}, {counted(alarm.rows, 'row')}"]
+    lines = [f"{number:>4}  {placed(alarm.start)} {until}", f"      on for {lasted(alarm)}"]
     if alarm.peak is not None and alarm.peak_at is not None:
         lines.append(f"      peak {alarm.peak} at row {alarm.peak_at.number}")
     lines.append(wrapped("      suspects: ", named(alarm.suspects())))
