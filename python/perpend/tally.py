@@ -49,7 +49,7 @@ class Excess:
     def __str__(self) -> str:
         """Write it as the narrator does."""
         against = f"{self.value:.4g} against {self.limit:.4g}"
-        return f"{CALLED[self.statistic]} {against}, {times(self.ratio)} its limit"
+        return f"{CALLED[self.statistic]} {against} ({times(self.ratio)})"
 
 
 def times(ratio: float) -> str:
@@ -93,6 +93,12 @@ class Alarm:
     peak_at: Moment | None = None
     _shares: dict[str, float] = field(default_factory=dict)
     _asked: int = 0
+
+    @property
+    def height(self) -> float:
+        """How many times its limit the peak was; 0 where that cannot be said."""
+        ratio = 0.0 if self.peak is None else self.peak.ratio
+        return 0.0 if math.isnan(ratio) else ratio
 
     def take(self, row: Row, reading: Reading) -> None:
         """Take one row of the alarm."""
