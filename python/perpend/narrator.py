@@ -2,7 +2,7 @@
 
 import math
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import TextIO
 
 from perpend._core import Reading
@@ -12,6 +12,8 @@ from perpend.tally import Alarm, Moment, Tally, largest_excess
 CAUTION = "perpend advises; it is no protective system. Suspects are not causes."
 LABEL = 10
 WIDTH = 80
+FEW = 5
+LISTED = 20
 
 
 class Narrator:
@@ -23,27 +25,40 @@ class Narrator:
         Where to.
     tally : Tally
         Has taken a row before the narrator does.
+    clear : callable
+        Called before each line: takes away what stands in its way on a terminal.
     """
 
-    def __init__(self, out: TextIO, tally: Tally) -> None:
+    def __init__(self, out: TextIO, tally: Tally, clear: Callable[[], None] = lambda: None) -> None:
         self._out = out
+        self._clear = clear
         self._tally = tally
         self._on = False
+        self._stuck: set[str] = set()
+        self._vanished: set[str] = set()
 
     def take(self, row: Row, reading: Reading) -> None:
         """Say what changed with this row, if anything did."""
+        where = placed(Moment.of(row))
+        for known, names, what in (
+            (self._stuck, reading.stuck, "no movement for longer than usual"),
+            (self._vanished, reading.vanished, "no value for longer than usual"),
+        ):
+            added = new_in(known, names)
+            if added:
+                self._say(wrapped(f"{where}  ", f"{what}: {few(added)}"))
         if reading.alarm == self._on:
             return
         self._on = reading.alarm
-        where = placed(Moment.of(row))
         if reading.alarm:
             excess = largest_excess(reading)
-            self._say(f"{where}  ALARM  {excess or ''}".rstrip())
+            self._say(wrapped(f"{where}  ALARM  ", str(excess or "")).rstrip())
             self._say(wrapped("    suspects: ", named(reading.suspects(3), reading)))
         else:
-            self._say(f"{where}  alarm off after {counted(self._tally.alarms[-1].rows, 'row')}")
+            self._say(f"{where}  alarm off after {lasted(self._tally.alarms[-1])}")
 
     def _say(self, line: str) -> None:
+        self._clear()
         self._out.write(line + "\n")
         self._out.flush()
 
@@ -73,8 +88,10 @@ def summary(tally: Tally, channels: int, learned: str) -> list[str]:
     if tally.adopted:
         lines.append(line("adopted", f"{counted(tally.adopted, 'row')} learned beyond a limit, after the hold"))
     lines.append(line("alarms", f"{len(tally.alarms)}" if tally.alarms else "none"))
-    for number, alarm in enumerate(tally.alarms, start=1):
-        lines += _alarm(number, alarm)
+    if len(tally.alarms) > LISTED:
+        lines[-1] += f"; the {LISTED} highest above their limit:"
+    for number in _highest(tally.alarms):
+        lines += _alarm(number, tally.alarms[number - 1])
     lines += [line("drift", drift_text(tally.last)), "", CAUTION]
     return lines
 
@@ -97,6 +114,26 @@ def placed(moment: Moment) -> str:
 def counted(count: int, noun: str) -> str:
     """Write a count with its noun."""
     return f"{count:,} {noun}" + ("" if count == 1 else "s")
+
+
+def lasted(alarm: Alarm) -> str:
+    """Write how long an alarm was on, and whether it went off because the watch gave in to what it saw."""
+    adopted = f", {alarm.adopted:,} of them adopted as the new state" if alarm.adopted else ""
+    return counted(alarm.rows, "row") + adopted
+
+
+def few(names: Sequence[str]) -> str:
+    """Write some of many names."""
+    more = len(names) - FEW
+    return ", ".join(names[:FEW]) + (f" and {more} more" if more > 0 else "")
+
+
+def new_in(known: set[str], names: Sequence[str]) -> list[str]:
+    """Return the names that were not known, and know exactly these from now on."""
+    added = [name for name in names if name not in known]
+    known.clear()
+    known.update(names)
+    return added
 
 
 def share(part: int, whole: int) -> str:
@@ -138,10 +175,16 @@ def _gaps(tally: Tally) -> str:
     return text + (f"; {tally.unjudged:,} of them not judged" if tally.unjudged else "")
 
 
+def _highest(alarms: Sequence[Alarm]) -> list[int]:
+    """Return the numbers of the alarms to list, in the order of time."""
+    ranked = sorted(range(len(alarms)), key=lambda each: -alarms[each].height)
+    return sorted(each + 1 for each in ranked[:LISTED])
+
+
 def _alarm(number: int, alarm: Alarm) -> list[str]:
     until = "still on" if alarm.end is None else f"to {placed(alarm.end)}"
-    lines = [f"{number:>4}  {placed(alarm.start)} {until}, {counted(alarm.rows, 'row')}"]
+    lines = [f"{number:>4}  {placed(alarm.start)} {until}", f"      on for {lasted(alarm)}"]
     if alarm.peak is not None and alarm.peak_at is not None:
-        lines.append(f"      peak {alarm.peak} at row {alarm.peak_at.number}")
+        lines.append(wrapped("      peak ", f"{alarm.peak} at row {alarm.peak_at.number}"))
     lines.append(wrapped("      suspects: ", named(alarm.suspects())))
     return lines

@@ -40,6 +40,11 @@ class Progress:
             self._bar.set_postfix_str(f"row {self._rows:,}, {rate:,.0f} rows/s,", refresh=False)
             self._bar.update(self._raw.tell() - self._bar.n)
 
+    def clear(self) -> None:
+        """Make room for a line; the bar comes back with the next rows."""
+        if self._bar is not None:
+            self._bar.clear()
+
     def close(self) -> None:
         """Take the bar away."""
         if self._bar is not None:

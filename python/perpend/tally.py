@@ -9,6 +9,7 @@ from perpend.intake import Row
 STATISTICS = ("spe", "t2", "spe_smooth", "t2_smooth")
 CALLED = {"spe": "SPE", "t2": "T2", "spe_smooth": "smoothed SPE", "t2_smooth": "smoothed T2"}
 SUSPECTS = 3
+TEN = 10
 
 
 @dataclass(slots=True, frozen=True)
@@ -43,12 +44,17 @@ class Excess:
     @property
     def brief(self) -> str:
         """Write it without its figures."""
-        return f"{CALLED[self.statistic]} at {self.ratio:.3g} times its limit"
+        return f"{CALLED[self.statistic]} at {times(self.ratio)} its limit"
 
     def __str__(self) -> str:
         """Write it as the narrator does."""
         against = f"{self.value:.4g} against {self.limit:.4g}"
-        return f"{CALLED[self.statistic]} {against}, {self.ratio:.3g} times its limit"
+        return f"{CALLED[self.statistic]} {against} ({times(self.ratio)})"
+
+
+def times(ratio: float) -> str:
+    """Write a ratio so that one just above 1 shows as such."""
+    return f"{ratio:.2f} times" if ratio < TEN else f"{ratio:,.0f} times"
 
 
 def largest_excess(reading: Reading) -> Excess | None:
@@ -67,8 +73,8 @@ class Alarm:
         The row at which it went on.
     end : Moment or None
         The row at which it went off; None while it is on.
-    rows : int
-        Rows it was on.
+    rows, adopted : int
+        Rows it was on, and how many of them the watch learned in spite of it, after the hold.
     peak, peak_at : Excess and Moment, or None
         The statistic that went highest above its limit, and when.
     first : list of (name, share)
@@ -82,14 +88,22 @@ class Alarm:
     opening: Excess | None = None
     end: Moment | None = None
     rows: int = 0
+    adopted: int = 0
     peak: Excess | None = None
     peak_at: Moment | None = None
     _shares: dict[str, float] = field(default_factory=dict)
     _asked: int = 0
 
+    @property
+    def height(self) -> float:
+        """How many times its limit the peak was; 0 where that cannot be said."""
+        ratio = 0.0 if self.peak is None else self.peak.ratio
+        return 0.0 if math.isnan(ratio) else ratio
+
     def take(self, row: Row, reading: Reading) -> None:
         """Take one row of the alarm."""
         self.rows += 1
+        self.adopted += reading.phase == "adopting"
         excess = largest_excess(reading)
         if excess is None:
             return

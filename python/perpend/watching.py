@@ -102,7 +102,8 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
     if first is None:
         raise InputError("a header and no rows", table.label)
     tally = Tally()
-    observers: list[Observer] = [tally, Narrator(sys.stdout, tally)]
+    progress = Progress(table.opened)
+    observers: list[Observer] = [tally, Narrator(sys.stdout, tally, progress.clear), progress]
     history = None
     if request.report is not None:
         history = History()
@@ -112,7 +113,7 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
         if request.readings is not None:
             live = table.opened.size is None
             observers.append(stack.enter_context(closing(ReadingsFile(request.readings, live=live))))
-        observers.append(stack.enter_context(closing(Progress(table.opened))))
+        stack.enter_context(closing(progress))
         try:
             judge(watch, chain([first], rows), observers)
         except KeyboardInterrupt:

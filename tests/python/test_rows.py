@@ -79,7 +79,7 @@ def test_a_cell_that_is_no_number_is_named_by_line_and_column(text, good):
     quoted = '"' + text.replace('"', '""') + '"'
     data = "flow,speed\n" + "1,2\n" * good + f"3,{quoted}\n"
     try:
-        value = float(text) if text.isascii() and "_" not in text else None
+        value = float(text) if text.strip().isascii() and "_" not in text else None
     except ValueError:
         value = None
     if text.strip().lower() in ("", "nan", "na", "null") or (value is not None and not math.isinf(value)):

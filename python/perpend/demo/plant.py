@@ -72,12 +72,15 @@ class Wear:
 
 @dataclass(slots=True)
 class Drivers:
-    """What comes from outside: weather and the production's demand for cold, one value a row."""
+    """What moves the plant: weather, the production's demand for cold, and controllers that hunt; one value a row."""
 
     wet_bulb: Series
     dry_bulb: Series
     valve: Series
     return_lift: Series
+    supply_hunting: Series
+    fan_hunting: Series
+    superheat_hunting: Series
 
 
 def drive(rows: int, random: np.random.Generator) -> Drivers:
@@ -93,14 +96,22 @@ def drive(rows: int, random: np.random.Generator) -> Drivers:
     day = np.arange(rows) / ROWS_A_DAY
     warmth = 9.0 + 0.06 * day + _wander(rows, random, days=3.0, size=2.0) + _wander(rows, random, days=0.3, size=0.4)
     sun = np.sin(2 * np.pi * (day - 0.4))
-    wet_bulb = warmth + 2.2 * sun
+    wet_bulb = warmth + 2.2 * sun + _wander(rows, random, days=0.01, size=0.3)
     dry_bulb = wet_bulb + 3.0 + 1.3 * sun + _wander(rows, random, days=0.5, size=0.6)
     hour = 24 * (day % 1)
     shift = _ramp(hour, 4.5, 6.5) - _ramp(hour, 20.5, 22.5)
-    pace = 1 + _wander(rows, random, days=0.15, size=0.08)
+    pace = 1 + _wander(rows, random, days=0.15, size=0.06) + _wander(rows, random, days=0.01, size=0.06)
     valve = 22 + 46 * shift * pace
-    return_lift = 3.6 + 1.3 * shift + _wander(rows, random, days=0.1, size=0.25)
-    return Drivers(wet_bulb, dry_bulb, valve, return_lift)
+    return_lift = 3.6 + 1.3 * shift + _wander(rows, random, days=0.02, size=0.25)
+    return Drivers(
+        wet_bulb,
+        dry_bulb,
+        valve,
+        return_lift,
+        supply_hunting=_wander(rows, random, days=0.01, size=0.12),
+        fan_hunting=_wander(rows, random, days=0.01, size=4.0),
+        superheat_hunting=_wander(rows, random, days=0.01, size=0.6),
+    )
 
 
 def respond(drivers: Drivers, wear: Wear, random: np.random.Generator) -> Series:
@@ -120,19 +131,18 @@ def respond(drivers: Drivers, wear: Wear, random: np.random.Generator) -> Series
     ndarray, shape (rows, channels)
         In the order and the units of `CHANNELS`.
     """
-    rows = len(wear.running)
     on = wear.running
     true: dict[str, Series] = {"wet_bulb": drivers.wet_bulb, "dry_bulb": drivers.dry_bulb}
     flow = 60 + 1.15 * drivers.valve
-    supply = 1.0 + 0.004 * (drivers.valve - 45) + _wander(rows, random, days=0.08, size=0.08)
+    supply = 1.0 + 0.004 * (drivers.valve - 45) + drivers.supply_hunting
     supply = supply + _lag(6.0 * (1 - on), hours=2)
     back = supply + drivers.return_lift
     cold = WATER * flow * drivers.return_lift * _lag(on, hours=0.3)
 
-    evaporating = supply - 2.2 - 0.0045 * cold
+    evaporating = supply - 2.2 - 0.0045 * cold - 0.35 * drivers.superheat_hunting
     slide = np.clip(18 + 0.098 * cold, 0, 100) * on
     approach_share = 1 + wear.fouling
-    fan = np.clip(30 + 0.055 * cold + 2.1 * (drivers.wet_bulb - 9), 15, 100) * (0.3 + 0.7 * on)
+    fan = np.clip(30 + 0.05 * cold + 2.1 * (drivers.wet_bulb - 9) + drivers.fan_hunting, 15, 100) * (0.3 + 0.7 * on)
     rejected = 1.21 * cold
     water_in = drivers.wet_bulb + 3.2 + 0.0078 * rejected - 0.035 * (fan - 60)
     water_flow = (112 + 0.35 * fan) * (0.4 + 0.6 * on)
@@ -151,17 +161,19 @@ def respond(drivers: Drivers, wear: Wear, random: np.random.Generator) -> Series
     true["cooling_water_flow"] = water_flow
     true["cooling_pump_power"] = 9 * (water_flow / 130) ** 2
     true["discharge_pressure"] = discharge
-    true["discharge_temp"] = _lag((52 + 0.85 * lift + 0.05 * slide) * on + 24 * (1 - on), hours=0.3)
+    true["discharge_temp"] = _lag(
+        (52 + 0.85 * lift + 0.05 * slide + 1.2 * drivers.superheat_hunting) * on + 24 * (1 - on), hours=0.3
+    )
     true["condenser_approach"] = approach
     true["suction_pressure"] = suction
-    true["suction_superheat"] = (4.6 + 0.010 * slide + _wander(rows, random, days=0.03, size=0.2)) * on
+    true["suction_superheat"] = (4.6 + 0.010 * slide + drivers.superheat_hunting) * on
     true["slide_position"] = slide
     true["compressor_current"] = 1.78 * power + 0.4 * wear.bearing
     true["oil_temp"] = oil + 0.8 * wear.bearing
     true["oil_pressure"] = (discharge - suction) * 0.55 * on - 0.02 * (oil - 55) * on
     true["bearing_temp"] = oil + (6 + 0.030 * slide) * on + 5.5 * _lag(wear.bearing, hours=1)
     true["bearing_vibration"] = (0.9 + 0.008 * slide + 1.9 * wear.bearing) * on
-    true["expansion_valve"] = (10 + 0.10 * cold - 0.25 * (lift - 26)) * on
+    true["expansion_valve"] = (10 + 0.10 * cold - 0.25 * (lift - 26) - 2.5 * drivers.superheat_hunting) * on
     true["ice_water_supply"] = supply
     true["ice_water_return"] = back
     true["ice_water_flow"] = flow

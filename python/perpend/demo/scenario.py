@@ -43,6 +43,10 @@ class Scenario:
     rows: Series
     troubles: tuple[Trouble, ...]
 
+    def troubled(self, row: int) -> bool:
+        """Tell whether something is wrong at a row, counted from 0."""
+        return any(each.alarming and each.start <= row < each.end for each in self.troubles)
+
 
 def moment_of(row: int) -> datetime:
     """Return the time of a row, counted from 0."""
@@ -98,7 +102,7 @@ def make_scenario(seed: int = SEED) -> Scenario:
     wear = Wear(fouling=np.zeros(total), bearing=np.zeros(total), running=np.ones(total))
     wear.fouling[FOULING.start : FOULING.end] = np.linspace(0, 0.7, FOULING.end - FOULING.start)
     age = np.linspace(0, 1, BEARING.end - BEARING.start)
-    wear.bearing[BEARING.start : BEARING.end] = np.expm1(3 * age) / np.expm1(3)
+    wear.bearing[BEARING.start : BEARING.end] = np.expm1(4 * age) / np.expm1(4)
     wear.running[RESTART.start : RESTART.end - ROWS_AN_HOUR] = 0
     wear.running[RESTART.end - ROWS_AN_HOUR : RESTART.end] = np.linspace(0.2, 1, ROWS_AN_HOUR)
     rows = respond(drive(total, random), wear, random)

@@ -10,7 +10,7 @@ from perpend.demo.scenario import DAYS, SEED, Scenario, make_scenario, moment_of
 from perpend.demo.verdict import compared, false_alarms, span, stamp
 from perpend.intake import Instant, Row
 from perpend.loop import judge
-from perpend.narrator import counted, named
+from perpend.narrator import counted, named, new_in
 from perpend.refusal import InputError
 from perpend.tally import Tally
 
@@ -26,7 +26,13 @@ powers, valves, a bearing. All of them move with load and weather, all the time.
 Nothing here was measured, and no maker's machine is meant.
 
 The watch settles on the first {SETTLE // ROWS_A_DAY} days. From then on it judges each row, then
-learns it if it looks healthy. It is told nothing of the troubles."""
+learns it if it looks healthy. It is told nothing of the troubles. The crew,
+when an alarm is raised, freezes the learning until the alarm is over and what
+was wrong is put right."""
+
+CLOSING = """\
+This is one run of many, and others are less kind: perpend demo --seed N.
+These rows: perpend demo --rows FILE. Your own rows: perpend watch FILE."""
 
 CAUTIONS = """\
 perpend advises; it is no protective system. Trips, interlocks and safety
@@ -47,13 +53,13 @@ def run_demo(seed: int | None = None) -> int:
     tally = Tally()
     print(OPENING)
     print("\nAS IT HAPPENED\n")
-    judge(watch, _rows(scenario), [tally, Chronicle(scenario, tally)])
+    judge(watch, _rows(scenario), [tally, Chronicle(scenario, tally), Crew(scenario, watch)])
     print("\nTRUTH BESIDE FINDING\n")
     for trouble in scenario.troubles:
         print("\n".join(compared(trouble, tally.alarms)))
     print("\n".join(false_alarms(scenario, tally)))
     print(f"\n{CAUTIONS}")
-    print("\nYour own rows: perpend watch FILE. These rows: perpend demo --rows FILE.")
+    print(f"\n{CLOSING}")
     return ALARM_RAISED if tally.alarms else NO_ALARM
 
 
@@ -82,6 +88,21 @@ def write_rows(name: str, seed: int | None = None) -> int:
     return NO_ALARM
 
 
+class Crew:
+    """Does what a crew would: no learning from the first row of an alarm until all is well again."""
+
+    def __init__(self, scenario: Scenario, watch: Watch) -> None:
+        self._scenario = scenario
+        self._watch = watch
+
+    def take(self, row: Row, reading: Reading) -> None:
+        """Freeze or resume the learning."""
+        if reading.alarm:
+            self._watch.freeze()
+        elif self._watch.frozen and not self._scenario.troubled(row.number - 1):
+            self._watch.resume()
+
+
 class Chronicle:
     """Prints what happens in the order of time, what is true and what the watch says of it."""
 
@@ -90,6 +111,7 @@ class Chronicle:
         self._tally = tally
         self._on = False
         self._phase = "settling"
+        self._stuck: set[str] = set()
 
     def take(self, row: Row, reading: Reading) -> None:
         """Print what changed with this row."""
@@ -102,6 +124,8 @@ class Chronicle:
         if self._phase == "settling" and reading.phase != "settling":
             self._say(index, "watch", f"settled on {counted(index, 'row')}, {reading.rank} axes of {len(NAMES)}")
         self._phase = reading.phase
+        for name in new_in(self._stuck, reading.stuck):
+            self._say(index, "watch", f"{name} has not moved for longer than usual")
         if reading.alarm != self._on:
             self._on = reading.alarm
             alarm = self._tally.alarms[-1]

@@ -30,10 +30,9 @@ def compared(trouble: Trouble, alarms: list[Alarm]) -> list[str]:
     began = stamp(moment_of(trouble.start))
     lines = [f"{trouble.what}", f"{MARGIN}began    {began}, over after {span(trouble.end - trouble.start)}"]
     alarm = first_alarm(trouble, alarms)
-    if any(_was_on(each, trouble.start + 1) for each in alarms):
-        lines.append(f"{MARGIN}found    an alarm was on already")
+    on_already = any(_was_on(each, trouble.start + 1) for each in alarms)
     if alarm is None:
-        lines.append(f"{MARGIN}found    {'no alarm of its own' if trouble.alarming else 'no alarm, rightly'}")
+        lines.append(f"{MARGIN}found    {_silence(trouble, on_already=on_already)}")
         return [*lines, ""]
     late = span(alarm.start.number - 1 - trouble.start)
     opening = f", {alarm.opening.brief}" if alarm.opening is not None else ""
@@ -87,6 +86,12 @@ def span(rows: int) -> str:
 
 def _was_on(alarm: Alarm, number: int) -> bool:
     return alarm.start.number < number and (alarm.end is None or alarm.end.number > number)
+
+
+def _silence(trouble: Trouble, *, on_already: bool) -> str:
+    if on_already:
+        return "an alarm was on already, and none of its own followed"
+    return "nothing: missed" if trouble.alarming else "no alarm, rightly"
 
 
 def _verdict(trouble: Trouble, alarm: Alarm) -> str:
