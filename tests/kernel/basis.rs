@@ -238,8 +238,9 @@ fn add_close_rows<T: Scalar>(spread: f64) {
     let first: Vec<f64> = (0..older).flat_map(|_| noise.vector(dim)).collect();
     basis.add_rows(&first, &mut steps).unwrap();
     let centre = noise.vector(dim);
-    let rows: Vec<f64> =
-        (0..close).flat_map(|_| centre.iter().map(|x| x + spread * noise.next()).collect::<Vec<_>>()).collect();
+    let rows: Vec<f64> = (0..close)
+        .flat_map(|_| centre.iter().map(|x| x + spread * noise.next()).collect::<Vec<_>>())
+        .collect();
     basis.add_rows(&rows, &mut steps).unwrap();
     assert_eq!(basis.rank(), older + close);
     let error = basis.orthogonality_error().unwrap();
