@@ -207,10 +207,11 @@ def _one_more(vectors: Matrix, v: Matrix) -> Iterator[_Contest]:
     linalg = _optional("scipy.linalg")
     if linalg is not None:
         insert = linalg.qr_insert
+        # The order of storage in which it returns what it has grown, and which it need not transpose.
         q = np.asfortranarray(held.T)
 
         def inserted() -> Any:
-            return insert(q, factor, v, rank, which="col", check_finite=False)
+            return insert(q, factor, v, rank, which="col")
 
         _assert_alike(rows, triangular, *inserted())
         yield _Contest("one add", "scipy.linalg.qr_insert", dim, rank, 1 / 8, ours, inserted)
