@@ -134,6 +134,7 @@ def _add_demo(commands: Any) -> None:
     )
     demo.add_argument("--seed", type=_whole(0), metavar="N", help="another run of the same plant")
     demo.add_argument("--rows", metavar="FILE", help="write the rows as CSV for perpend watch, and judge nothing")
+    demo.add_argument("--report", metavar="FILE", help="write one self-contained HTML page with plots")
     demo.set_defaults(run=_run_demo)
 
 
@@ -196,7 +197,7 @@ def _run_demo(found: argparse.Namespace) -> int:
 
     if found.rows is not None:
         return write_rows(found.rows, found.seed)
-    return run_demo(found.seed)
+    return run_demo(found.seed, found.report)
 
 
 def _run_watch(found: argparse.Namespace) -> int:

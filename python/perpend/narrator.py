@@ -158,11 +158,11 @@ def drift_text(reading: Reading | None) -> str:
         return "-"
     texts = []
     if reading.drift is None:
-        texts.append("no angle: the axes are too close in energy for one to mean anything")
+        texts.append("no angle, the axes are too close in energy for one to mean anything")
     else:
         texts.append(f"{math.degrees(reading.drift):.1f} degrees from the baseline")
     if reading.captured is not None:
-        texts.append(f"{100 * reading.captured:.1f} % of it still captured")
+        texts.append(f"{100 * reading.captured:.1f} % of the baseline still captured")
     if reading.mean_shift is not None:
         texts.append(f"mean moved {reading.mean_shift:.2g} spreads")
     return f"\n{'':<{LABEL}}".join(texts)

@@ -1,6 +1,5 @@
 """The command ``perpend watch``: from a file or standard input to readings, alarms and a summary."""
 
-import importlib.util
 import sys
 from collections.abc import Sequence
 from contextlib import ExitStack, closing
@@ -21,6 +20,7 @@ from perpend.progress import Progress
 from perpend.record import ReadingsFile, format_of
 from perpend.refusal import InputError
 from perpend.report.history import History
+from perpend.report.readiness import need_plots
 from perpend.tally import Tally
 
 NO_ALARM, ALARM_RAISED, INTERRUPTED = 0, 3, 130
@@ -78,7 +78,7 @@ def run_watch(request: WatchRequest) -> int:
         format_of(request.readings)
     _keep_input(request)
     if request.report is not None:
-        _need_plots(request.report)
+        need_plots(request.report)
     learned, like, ignored = None, None, list(request.ignored)
     if request.learn is not None:
         learned, like, ignored = _learn(request)
@@ -86,7 +86,7 @@ def run_watch(request: WatchRequest) -> int:
         layout = arrange(table, time=request.time, ignored=ignored, like=like)
         _say(_guesses(table) + layout.said)
         watch = _make_watch(layout.channels, request, table)
-        settled_on = f"the first {request.settings.get('settle', SETTLE):,}"
+        settled_on = f"the first {request.settings.get('settle', SETTLE):,} rows"
         if learned is not None:
             settled_on = f"{request.learn} ({counted(len(learned), 'row')})"
             try:
@@ -184,13 +184,6 @@ def _keep_input(request: WatchRequest) -> None:
                 continue
             if Path(target).exists() and Path(name).exists() and Path(target).samefile(name):
                 raise InputError(f"{option}: this would overwrite the input; give another name", target)
-
-
-def _need_plots(name: str) -> None:
-    if importlib.util.find_spec("matplotlib") is None:
-        raise InputError("--report needs the extra: pip install 'perpend[report]'")
-    if not Path(name).resolve().parent.is_dir():
-        raise InputError("--report: cannot be written: there is no such folder", name)
 
 
 def _guesses(table: Table) -> list[str]:

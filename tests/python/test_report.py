@@ -118,7 +118,13 @@ def test_the_report_never_overwrites_the_input_and_needs_a_folder(page, capsys):
     assert main(["watch", str(watched), "--report", str(watched)]) == 2
     assert watched.read_bytes() == before
     assert main(["watch", str(watched), "--report", str(page.parent / "no" / "r.html")]) == 2
-    assert "there is no such folder" in capsys.readouterr().err
+    assert "a folder that exists" in capsys.readouterr().err
+
+
+def test_the_demo_has_its_report(tmp_path):
+    target = tmp_path / "demo.html"
+    assert main(["demo", "--report", str(target)]) == 3
+    assert "dairy, invented" in target.read_text(encoding="utf-8")
 
 
 def test_the_history_of_an_alarm_is_bounded():

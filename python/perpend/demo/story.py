@@ -2,6 +2,7 @@
 
 import csv
 from collections.abc import Iterator
+from datetime import UTC
 from pathlib import Path
 
 from perpend._core import Reading, Watch
@@ -12,6 +13,8 @@ from perpend.intake import Instant, Row
 from perpend.loop import judge
 from perpend.narrator import counted, named, new_in
 from perpend.refusal import InputError
+from perpend.report.history import History
+from perpend.report.readiness import need_plots
 from perpend.tally import Tally
 
 SETTLE = 4 * ROWS_A_DAY
@@ -40,26 +43,30 @@ functions stay with the equipment made and certified for them, and local codes
 and licensed practice come first. A suspect is where to look first, not a cause."""
 
 
-def run_demo(seed: int | None = None) -> int:
-    """Watch the scenario and print truth beside finding.
+def run_demo(seed: int | None = None, report: str | None = None) -> int:
+    """Watch the scenario, print truth beside finding, and write a report if a file is named for it.
 
     Returns
     -------
     int
         3: an alarm was raised; 0 if none was.
     """
+    if report is not None:
+        need_plots(report)
     scenario = make_scenario(SEED if seed is None else seed)
     watch = Watch(len(NAMES), NAMES, settle=SETTLE, memory=MEMORY)
-    tally = Tally()
+    tally, history = Tally(), History()
     print(OPENING)
     print("\nAS IT HAPPENED\n")
-    judge(watch, _rows(scenario), [tally, Chronicle(scenario, tally), Crew(scenario, watch)])
+    judge(watch, _rows(scenario), [tally, history, Chronicle(scenario, tally), Crew(scenario, watch)])
     print("\nTRUTH BESIDE FINDING\n")
     for trouble in scenario.troubles:
         print("\n".join(compared(trouble, tally.alarms)))
     print("\n".join(false_alarms(scenario, tally)))
     print(f"\n{CAUTIONS}")
     print(f"\n{CLOSING}")
+    if report is not None:
+        _write(report, watch, tally, history)
     return ALARM_RAISED if tally.alarms else NO_ALARM
 
 
@@ -86,6 +93,21 @@ def write_rows(name: str, seed: int | None = None) -> int:
         print(f"  row {trouble.start + 1:>4} to {trouble.end:>4}  {trouble.what}")
     print(f"Watch them: perpend watch {name} --settle {SETTLE}")
     return NO_ALARM
+
+
+def _write(name: str, watch: Watch, tally: Tally, history: History) -> None:
+    from perpend.report.page import About, write_report
+
+    about = About(
+        title="Ice-water chiller plant of a dairy, invented",
+        channels=watch.names,
+        learned=f"the first {SETTLE:,} rows",
+        dated=True,
+        settings={"settle": f"{SETTLE:,}", "memory": f"{MEMORY:,}", "rank": watch.rank},
+        constant=watch.constant,
+    )
+    write_report(name, about, tally, history)
+    print(f"The report: {name}")
 
 
 class Crew:
@@ -141,4 +163,4 @@ class Chronicle:
 def _rows(scenario: Scenario) -> Iterator[Row]:
     for index, values in enumerate(scenario.rows):
         moment = moment_of(index)
-        yield Row(index + 1, f"row {index + 1}", values, Instant(moment.timestamp(), stamp(moment)))
+        yield Row(index + 1, f"row {index + 1}", values, Instant(moment.replace(tzinfo=UTC).timestamp(), stamp(moment)))

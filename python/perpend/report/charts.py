@@ -71,28 +71,34 @@ def logbook_chart(history: History, time_label: str, *, dated: bool) -> str:
 
 
 def drift_chart(history: History, time_label: str, *, dated: bool) -> str:
-    """Draw the angle from the accepted baseline, and the share of it that is still captured."""
+    """Draw how far the model has moved from the accepted baseline."""
     found = history.figures()
-    drift, captured = np.degrees(found["drift"]), 100 * found["captured"]
-    if not (np.isfinite(drift).any() or np.isfinite(captured).any()):
-        return "<p>No angle: the axes are too close in energy for one to mean anything.</p>"
+    panels = [
+        (np.degrees(found["drift"]), "angle, degrees"),
+        (100 * found["captured"], "captured, %"),
+        (found["mean_shift"], "mean, spreads"),
+    ]
+    shown = [(series, label) for series, label in panels if np.isfinite(series).any()]
+    if not shown:
+        return "<p>None of its figures means anything here.</p>"
     alt = (
-        "Drift of the model from the accepted baseline: the angle in degrees, left out where the axes are too close in"
-        " energy for it to mean anything, and the share of the baseline that the model still captures, in percent."
+        "Movement from the accepted baseline: the angle of the model, left out where the axes are too close in energy"
+        " for it to mean anything; the share of the baseline that the model still captures; and how far the mean has"
+        " moved, in spreads of its own healthy movement."
     )
 
     def draw(figure: Figure) -> None:
-        upper, lower = figure.subplots(2, 1, sharex=True)
+        sheets = figure.subplots(len(shown), 1, sharex=True, squeeze=False)[:, 0]
         where = plot.place(history.time, len(history), dated=dated)
-        for axes, series, label in ((upper, drift, "angle, degrees"), (lower, captured, "captured, %")):
+        for axes, (series, label) in zip(sheets, shown, strict=True):
             start, low, high = envelope(series, plot.BUCKETS)
             axes.fill_between(where[start], low, high, color=plot.TRACE, linewidth=1.1)
             axes.set_ylabel(label)
+            axes.tick_params(labelbottom=axes is sheets[-1])
             plot.dress(axes, grid="y")
-        upper.tick_params(labelbottom=False)
-        plot.label_time(lower, time_label, dated=dated)
+        plot.label_time(sheets[-1], time_label, dated=dated)
 
-    return drawing(draw, "drift", alt, height=3.4)
+    return drawing(draw, "drift", alt, height=0.5 + 1.5 * len(shown))
 
 
 def alarm_charts(alarm: Alarm, episode: Episode, names: list[str], time_label: str, *, dated: bool) -> str:

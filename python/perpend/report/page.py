@@ -127,7 +127,7 @@ def _verdict(tally: Tally) -> str:
         return f"No alarm in {counted(tally.judged, 'judged row')}."
     still = " The last is still on." if tally.current is not None else ""
     alarms = counted(len(tally.alarms), "alarm")
-    return f"{alarms} in {counted(tally.judged, 'judged row')}; first {placed(tally.alarms[0].start)}.{still}"
+    return f"{alarms} in {counted(tally.judged, 'judged row')}; the first at {placed(tally.alarms[0].start)}.{still}"
 
 
 def _glance(about: About, tally: Tally) -> str:
