@@ -57,7 +57,7 @@ def main(argv: Sequence[str] | None = None) -> int:
         0 no alarm, 3 an alarm was raised, 2 bad input or usage, 130 interrupted.
     """
     arguments = list(sys.argv[1:] if argv is None else argv)
-    called = " ".join(["perpend", *(name for name in arguments[:1] if name in ("demo", "watch"))])
+    called = " ".join(["perpend", *(name for name in arguments[:1] if name in ("demo", "watch", "bench"))])
     try:
         code = _dispatch(arguments)
         sys.stdout.flush()
@@ -118,6 +118,7 @@ def _parser() -> argparse.ArgumentParser:
     commands = parser.add_subparsers(dest="command", metavar="COMMAND", required=True)
     _add_demo(commands)
     _add_watch(commands)
+    _add_bench(commands)
     return parser
 
 
@@ -190,6 +191,31 @@ def _add_watch(commands: Any) -> None:
     )
     add("--decimal", choices=["point", "comma"], default="point", help="how decimals are written")
     watch.set_defaults(run=_run_watch)
+
+
+def _add_bench(commands: Any) -> None:
+    bench = commands.add_parser(
+        "bench",
+        help="streaming against batch QR on this machine",
+        description=(
+            "Time the basis, vector by vector, against batch QR and an updated QR: a\ntable of ratios, "
+            "one thread each, every answer asserted before it is timed."
+        ),
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+        allow_abbrev=False,
+    )
+    bench.add_argument("--check", action="store_true", help="assert every answer on small cases, time nothing")
+    bench.set_defaults(run=_run_bench)
+
+
+def _run_bench(found: argparse.Namespace) -> int:
+    from perpend import bench
+
+    for line in bench.conditions():
+        print(line)
+    for line in bench.lines(bench.compare(check=found.check)):
+        print(line, flush=True)
+    return 0
 
 
 def _run_demo(found: argparse.Namespace) -> int:
