@@ -30,6 +30,9 @@ const ROUNDS: usize = 4;
 const DROP: f64 = 0.05;
 /// Share of the rows above which they are not dropped.
 const MANY: f64 = 0.1;
+/// How much farther out than normal a row's SPE may lie: unequal residual energies leave its cube root skewed, and without
+/// this one clean settling in three would lose a row. A glitch worth dropping lies far beyond.
+const SKEWED: f64 = 1.5;
 /// Normal spreads in a median absolute deviation.
 const NORMAL_MAD: f64 = 1.482_602_218_505_602;
 /// A channel must have a value in one of so many settling rows to take part.
@@ -153,7 +156,7 @@ fn within(judged: &[Option<Judged>], kept: &[bool], rank: usize) -> Vec<bool> {
     let middle = median(&mut roots);
     let mut distances: Vec<f64> = roots.iter().map(|root| (root - middle).abs()).collect();
     let spread = NORMAL_MAD * median(&mut distances);
-    let far = middle + quantile::normal(tail) * spread;
+    let far = middle + SKEWED * quantile::normal(tail) * spread;
     judged
         .iter()
         .map(|judged| judged.is_none_or(|row| row.t2 <= t2_limit && (spread <= 0.0 || row.spe.cbrt() <= far)))

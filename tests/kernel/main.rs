@@ -3,3 +3,7 @@
 mod basis;
 mod ops;
 mod tracker;
+mod watch;
+mod watch_property;
+mod watch_published;
+mod watch_stream;
