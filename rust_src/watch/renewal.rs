@@ -3,7 +3,7 @@
 //! Principal axes are the right singular vectors of the tracker's rows `R Q`. Finding them at one go costs several
 //! ticks' worth of time, at each tick more than all the rest; done once in a while it makes one tick in fifty slow. So
 //! basis and factor are copied, the rows of the copied factor turned pair by pair ([`super::turning`]), and the axes put
-//! together one by one, [`Pace`] pairs or one axis a tick. The axes in use meanwhile are the last ones.
+//! together one by one, `Pace` pairs or one axis a tick. The axes in use meanwhile are the last ones.
 
 use crate::ops;
 use crate::rows::{RowStore, Rows};
