@@ -27,7 +27,7 @@ macro_rules! either {
     };
 }
 
-/// The growing orthonormal basis; see `_core.pyi` for the documentation.
+#[doc = stub_doc!("Basis")]
 #[pyclass(frozen, module = "perpend", name = "Basis")]
 pub(super) struct PyBasis {
     inner: Guarded<Inner>,
@@ -70,6 +70,7 @@ impl PyBasis {
         Ok(Self { inner: Guarded::new(inner) })
     }
 
+    #[doc = stub_doc!("Basis.add")]
     fn add(&self, vector: &Bound<'_, PyAny>) -> PyResult<Step> {
         let vector = row(vector)?;
         let entries = vector.entries()?;
@@ -81,6 +82,7 @@ impl PyBasis {
         })
     }
 
+    #[doc = stub_doc!("Basis.split")]
     fn split<'py>(&self, vector: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, Array1<'py, f64>)> {
         let vector = row(vector)?;
         let entries = vector.entries()?;
@@ -94,12 +96,14 @@ impl PyBasis {
         })
     }
 
+    #[doc = stub_doc!("Basis.residual_norm")]
     fn residual_norm(&self, vector: &Bound<'_, PyAny>) -> PyResult<f64> {
         let vector = row(vector)?;
         let entries = vector.entries()?;
         self.inner.with(vector.py(), |inner| either!(inner, basis => Ok(basis.split(entries)?.residual_norm)))
     }
 
+    #[doc = stub_doc!("Basis.add_rows")]
     fn add_rows<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, bool>, Array1<'py, f64>)> {
         let py = rows.py();
         let block = block(rows)?;
@@ -117,6 +121,7 @@ impl PyBasis {
         Ok((PyArray1::from_vec(py, accepted), PyArray1::from_vec(py, norms)))
     }
 
+    #[doc = stub_doc!("Basis.split_rows")]
     fn split_rows<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<(Array2<'py, f64>, Array2<'py, f64>)> {
         let py = rows.py();
         let block = block(rows)?;
@@ -137,6 +142,7 @@ impl PyBasis {
         Ok((matrix(py, coefficients, count, rank)?, matrix(py, residuals, count, dim)?))
     }
 
+    #[doc = stub_doc!("Basis.angles")]
     fn angles<'py>(&self, other: &Bound<'py, Self>) -> PyResult<Array1<'py, f64>> {
         let py = other.py();
         // A copy of the other, so that two locks are never held together.
@@ -155,14 +161,17 @@ impl PyBasis {
         self.__copy__(py)
     }
 
+    #[doc = stub_doc!("Basis.copy")]
     fn copy(&self, py: Python<'_>) -> Self {
         self.__copy__(py)
     }
 
+    #[doc = stub_doc!("Basis.drop")]
     fn drop(&self, py: Python<'_>, index: Count) -> PyResult<()> {
         self.inner.with(py, |inner| either!(inner, basis => basis.drop(index.0)))
     }
 
+    #[doc = stub_doc!("Basis.solve")]
     fn solve<'py>(&self, target: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, f64)> {
         let target = row(target)?;
         let entries = target.entries()?;
@@ -173,20 +182,24 @@ impl PyBasis {
         })
     }
 
+    #[doc = stub_doc!("Basis.condition")]
     fn condition(&self, py: Python<'_>) -> PyResult<f64> {
         self.inner.with(py, |inner| either!(inner, basis => basis.condition()))
     }
 
+    #[doc = stub_doc!("Basis.orthogonality_error")]
     fn orthogonality_error(&self, py: Python<'_>) -> PyResult<f64> {
         self.inner.with(py, |inner| either!(inner, basis => basis.orthogonality_error()))
     }
 
+    #[doc = stub_doc!("Basis.vectors")]
     #[getter]
     fn vectors<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyAny>> {
         self.inner
             .read(py, |inner| either!(inner, basis => Ok(array_of_rows(py, basis.vectors())?.into_any())))
     }
 
+    #[doc = stub_doc!("Basis.triangular")]
     #[getter]
     fn triangular<'py>(&self, py: Python<'py>) -> PyResult<Array2<'py, f64>> {
         let (dense, rank) =
@@ -194,16 +207,19 @@ impl PyBasis {
         matrix(py, dense, rank, rank)
     }
 
+    #[doc = stub_doc!("Basis.rank")]
     #[getter]
     fn rank(&self, py: Python<'_>) -> usize {
         self.inner.read(py, |inner| either!(inner, basis => basis.rank()))
     }
 
+    #[doc = stub_doc!("Basis.dim")]
     #[getter]
     fn dim(&self, py: Python<'_>) -> usize {
         self.inner.read(py, |inner| either!(inner, basis => basis.dim()))
     }
 
+    #[doc = stub_doc!("Basis.capacity")]
     #[getter]
     fn capacity(&self, py: Python<'_>) -> usize {
         self.inner.read(py, |inner| either!(inner, basis => basis.capacity()))

@@ -1,5 +1,12 @@
 //! The binding: thin, one file a class. The documentation of its classes is in `_core.pyi`.
 
+/// The documentation that `_core.pyi` gives a class or one of its members; the build script lays it out.
+macro_rules! stub_doc {
+    ($name:literal) => {
+        include_str!(concat!(env!("OUT_DIR"), "/", $name, ".txt"))
+    };
+}
+
 mod basis;
 mod convert;
 mod errors;
@@ -29,7 +36,7 @@ mod _core {
     #[pymodule_export]
     use super::watch::PyWatch;
 
-    /// Name of the instruction set in use.
+    #[doc = stub_doc!("kernel_path")]
     #[pyfunction]
     fn kernel_path() -> &'static str {
         Path::current().name()

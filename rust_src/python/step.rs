@@ -5,7 +5,7 @@ use pyo3::prelude::*;
 
 use crate::basis;
 
-/// What became of a vector; see `_core.pyi` for the documentation.
+#[doc = stub_doc!("Step")]
 #[pyclass(frozen, module = "perpend")]
 pub(super) struct Step {
     step: basis::Step,

@@ -26,7 +26,7 @@ macro_rules! either {
     };
 }
 
-/// The drifting subspace; see `_core.pyi` for the documentation.
+#[doc = stub_doc!("Tracker")]
 #[pyclass(frozen, module = "perpend", name = "Tracker")]
 pub(super) struct PyTracker {
     inner: Guarded<Inner>,
@@ -89,6 +89,7 @@ impl PyTracker {
         Ok(Self { inner: Guarded::new(inner), settings })
     }
 
+    #[doc = stub_doc!("Tracker.update")]
     #[pyo3(signature = (row, weight=1.0, *, elapsed=1.0))]
     fn update(&self, row: &Bound<'_, PyAny>, weight: f64, elapsed: f64) -> PyResult<bool> {
         let row = super::convert::row(row)?;
@@ -98,6 +99,7 @@ impl PyTracker {
         })
     }
 
+    #[doc = stub_doc!("Tracker.update_rows")]
     fn update_rows(&self, rows: &Bound<'_, PyAny>) -> PyResult<()> {
         let py = rows.py();
         let block = block(rows)?;
@@ -110,16 +112,19 @@ impl PyTracker {
         Ok(())
     }
 
+    #[doc = stub_doc!("Tracker.split")]
     fn split<'py>(&self, row: &Bound<'py, PyAny>) -> PyResult<(Array1<'py, f64>, Array1<'py, f64>)> {
         let py = row.py();
         let parts = self.parts(row)?;
         Ok((PyArray1::from_vec(py, parts.coefficients), PyArray1::from_vec(py, parts.residual)))
     }
 
+    #[doc = stub_doc!("Tracker.residual_norm")]
     fn residual_norm(&self, row: &Bound<'_, PyAny>) -> PyResult<f64> {
         Ok(self.parts(row)?.norm)
     }
 
+    #[doc = stub_doc!("Tracker.reconstruct")]
     fn reconstruct<'py>(&self, row: &Bound<'py, PyAny>) -> PyResult<Array1<'py, f64>> {
         let py = row.py();
         let row = super::convert::row(row)?;
@@ -130,6 +135,7 @@ impl PyTracker {
         Ok(PyArray1::from_vec(py, value))
     }
 
+    #[doc = stub_doc!("Tracker.angles")]
     fn angles<'py>(&self, other: &Bound<'py, Self>) -> PyResult<Array1<'py, f64>> {
         let py = other.py();
         // A copy of the other, so that two locks are never held together.
@@ -139,6 +145,7 @@ impl PyTracker {
         Ok(PyArray1::from_vec(py, angles))
     }
 
+    #[doc = stub_doc!("Tracker.certificate")]
     fn certificate<'py>(&self, py: Python<'py>) -> PyResult<(Array1<'py, f64>, Option<f64>)> {
         let (energies, angle) = self.inner.with(py, |inner| {
             either!(inner, tracker => {
@@ -151,6 +158,7 @@ impl PyTracker {
         Ok((PyArray1::from_vec(py, energies), angle))
     }
 
+    #[doc = stub_doc!("Tracker.merge")]
     fn merge(&self, other: &Bound<'_, Self>) -> PyResult<()> {
         let py = other.py();
         let other = other.get().inner.read(py, Inner::clone);
@@ -166,10 +174,12 @@ impl PyTracker {
         })
     }
 
+    #[doc = stub_doc!("Tracker.orthogonality_error")]
     fn orthogonality_error(&self, py: Python<'_>) -> PyResult<f64> {
         self.inner.with(py, |inner| either!(inner, tracker => tracker.orthogonality_error()))
     }
 
+    #[doc = stub_doc!("Tracker.copy")]
     fn copy(&self, py: Python<'_>) -> Self {
         Self { inner: Guarded::new(self.inner.read(py, Inner::clone)), settings: self.settings }
     }
@@ -182,6 +192,7 @@ impl PyTracker {
         self.copy(py)
     }
 
+    #[doc = stub_doc!("Tracker.axes")]
     #[getter]
     fn axes<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyAny>> {
         self.current(
@@ -190,61 +201,73 @@ impl PyTracker {
         )?
     }
 
+    #[doc = stub_doc!("Tracker.energies")]
     #[getter]
     fn energies<'py>(&self, py: Python<'py>) -> PyResult<Array1<'py, f64>> {
         self.current(py, |inner| either!(inner, tracker => PyArray1::from_slice(py, tracker.energies())))
     }
 
+    #[doc = stub_doc!("Tracker.mean")]
     #[getter]
     fn mean<'py>(&self, py: Python<'py>) -> Array1<'py, f64> {
         self.inner.read(py, |inner| either!(inner, tracker => PyArray1::from_slice(py, tracker.mean())))
     }
 
+    #[doc = stub_doc!("Tracker.noise_energy")]
     #[getter]
     fn noise_energy(&self, py: Python<'_>) -> PyResult<f64> {
         self.current(py, |inner| either!(inner, tracker => tracker.noise_energy()))
     }
 
+    #[doc = stub_doc!("Tracker.explained")]
     #[getter]
     fn explained(&self, py: Python<'_>) -> PyResult<f64> {
         self.current(py, |inner| either!(inner, tracker => tracker.explained()))
     }
 
+    #[doc = stub_doc!("Tracker.gap")]
     #[getter]
     fn gap(&self, py: Python<'_>) -> PyResult<f64> {
         self.current(py, |inner| either!(inner, tracker => tracker.gap()))
     }
 
+    #[doc = stub_doc!("Tracker.samples")]
     #[getter]
     fn samples(&self, py: Python<'_>) -> u64 {
         self.inner.read(py, |inner| either!(inner, tracker => tracker.samples()))
     }
 
+    #[doc = stub_doc!("Tracker.skipped")]
     #[getter]
     fn skipped(&self, py: Python<'_>) -> u64 {
         self.inner.read(py, |inner| either!(inner, tracker => tracker.skipped()))
     }
 
+    #[doc = stub_doc!("Tracker.total_weight")]
     #[getter]
     fn total_weight(&self, py: Python<'_>) -> f64 {
         self.inner.read(py, |inner| either!(inner, tracker => tracker.total_weight()))
     }
 
+    #[doc = stub_doc!("Tracker.channels")]
     #[getter]
     fn channels(&self) -> usize {
         self.settings.channels
     }
 
+    #[doc = stub_doc!("Tracker.rank")]
     #[getter]
     fn rank(&self) -> usize {
         self.settings.rank
     }
 
+    #[doc = stub_doc!("Tracker.guard")]
     #[getter]
     fn guard(&self) -> usize {
         self.settings.directions() - self.settings.rank
     }
 
+    #[doc = stub_doc!("Tracker.memory")]
     #[getter]
     fn memory(&self) -> Option<f64> {
         self.settings.memory

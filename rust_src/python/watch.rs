@@ -32,7 +32,7 @@ macro_rules! either {
     };
 }
 
-/// The monitoring loop; see `_core.pyi` for the documentation.
+#[doc = stub_doc!("Watch")]
 #[pyclass(frozen, module = "perpend", name = "Watch")]
 pub(super) struct PyWatch {
     inner: Guarded<Inner>,
@@ -152,6 +152,7 @@ impl PyWatch {
         Ok(Self { inner: Guarded::new(inner), channels, names })
     }
 
+    #[doc = stub_doc!("Watch.tick")]
     fn tick(&self, row: &Bound<'_, PyAny>) -> PyResult<PyReading> {
         let row = self::row(row)?;
         let entries = row.entries()?;
@@ -160,6 +161,7 @@ impl PyWatch {
         Ok(PyReading::new(reading, Arc::clone(&self.names)))
     }
 
+    #[doc = stub_doc!("Watch.replay")]
     fn replay<'py>(&self, rows: &Bound<'py, PyAny>) -> PyResult<Bound<'py, PyDict>> {
         let py = rows.py();
         let block = block(rows)?;
@@ -175,6 +177,7 @@ impl PyWatch {
         columns(py, replay, self.channels)
     }
 
+    #[doc = stub_doc!("Watch.settle_on")]
     fn settle_on(&self, rows: &Bound<'_, PyAny>) -> PyResult<()> {
         let block = block(rows)?;
         let (entries, _) = block.of(self.channels)?;
@@ -182,6 +185,7 @@ impl PyWatch {
         rows.py().detach(settle)
     }
 
+    #[doc = stub_doc!("Watch.freeze")]
     fn freeze(&self, py: Python<'_>) -> PyResult<()> {
         self.inner.with(py, |inner| {
             either!(inner, watch => watch.freeze());
@@ -189,6 +193,7 @@ impl PyWatch {
         })
     }
 
+    #[doc = stub_doc!("Watch.resume")]
     fn resume(&self, py: Python<'_>) -> PyResult<()> {
         self.inner.with(py, |inner| {
             either!(inner, watch => watch.resume());
@@ -196,6 +201,7 @@ impl PyWatch {
         })
     }
 
+    #[doc = stub_doc!("Watch.accept")]
     fn accept(&self, py: Python<'_>) -> PyResult<()> {
         self.inner.with(py, |inner| {
             either!(inner, watch => watch.accept());
@@ -203,41 +209,49 @@ impl PyWatch {
         })
     }
 
+    #[doc = stub_doc!("Watch.names")]
     #[getter]
     fn names(&self) -> Vec<String> {
         self.names.to_vec()
     }
 
+    #[doc = stub_doc!("Watch.channels")]
     #[getter]
     fn channels(&self) -> usize {
         self.channels
     }
 
+    #[doc = stub_doc!("Watch.phase")]
     #[getter]
     fn phase(&self, py: Python<'_>) -> &'static str {
         self.inner.read(py, |inner| either!(inner, watch => watch.phase().name()))
     }
 
+    #[doc = stub_doc!("Watch.rank")]
     #[getter]
     fn rank(&self, py: Python<'_>) -> usize {
         self.inner.read(py, |inner| either!(inner, watch => watch.rank()))
     }
 
+    #[doc = stub_doc!("Watch.dropped")]
     #[getter]
     fn dropped(&self, py: Python<'_>) -> usize {
         self.inner.read(py, |inner| either!(inner, watch => watch.dropped()))
     }
 
+    #[doc = stub_doc!("Watch.ticks")]
     #[getter]
     fn ticks(&self, py: Python<'_>) -> u64 {
         self.inner.read(py, |inner| either!(inner, watch => watch.ticks()))
     }
 
+    #[doc = stub_doc!("Watch.frozen")]
     #[getter]
     fn frozen(&self, py: Python<'_>) -> bool {
         self.inner.read(py, |inner| either!(inner, watch => watch.frozen()))
     }
 
+    #[doc = stub_doc!("Watch.constant")]
     #[getter]
     fn constant(&self, py: Python<'_>) -> Vec<&str> {
         self.inner.read(py, |inner| {
@@ -248,6 +262,7 @@ impl PyWatch {
         })
     }
 
+    #[doc = stub_doc!("Watch.events")]
     #[getter]
     fn events<'py>(&self, py: Python<'py>) -> PyResult<Vec<Bound<'py, PyDict>>> {
         let events: Vec<Event> =

@@ -4,6 +4,8 @@ import os
 import subprocess
 import sys
 
+import pytest
+
 import perpend
 
 
@@ -25,3 +27,12 @@ def test_an_unknown_kernel_path_is_refused_on_import_with_the_names_that_exist()
     assert outcome.returncode == 1
     assert "PERPEND_KERNEL: expected" in outcome.stderr
     assert "portable, got steam" in outcome.stderr.replace(" or portable", " portable")
+
+
+@pytest.mark.parametrize("owner", [perpend.Basis, perpend.Reading, perpend.Step, perpend.Tracker, perpend.Watch])
+def test_help_shows_what_the_stub_documents(owner):
+    assert len(owner.__doc__) > 60
+    for name, member in vars(owner).items():
+        # The attributes of a step are listed in the documentation of its class.
+        if not name.startswith("_") and owner is not perpend.Step:
+            assert member.__doc__, f"{owner.__name__}.{name}"
