@@ -1,4 +1,5 @@
 //! The binding: thin, one file a class. The documentation of its classes is in `_core.pyi`.
+#![allow(clippy::doc_markdown, reason = "what the stub documents is numpydoc")]
 
 /// The documentation that `_core.pyi` gives a class or one of its members; the build script lays it out.
 macro_rules! stub_doc {
