@@ -206,15 +206,15 @@ def _one_more(vectors: Matrix, v: Matrix) -> Iterator[_Contest]:
 
     linalg = _optional("scipy.linalg")
     if linalg is not None:
-        insert = linalg.qr_insert
-        # The order of storage in which it returns what it has grown, and which it need not transpose.
-        q = np.asfortranarray(held.T)
+        # Stored by columns, as qr_insert itself returns what it has grown, it has nothing to transpose; by rows is how
+        # numpy.linalg.qr returns Q, and what it meets the first time.
+        for order, q in (("rows", np.ascontiguousarray(held.T)), ("columns", np.asfortranarray(held.T))):
 
-        def inserted() -> Any:
-            return insert(q, factor, v, rank, which="col")
+            def inserted(q: Matrix = q) -> Any:
+                return linalg.qr_insert(q, factor, v, rank, which="col")
 
-        _assert_alike(rows, triangular, *inserted())
-        yield _Contest("one add", "scipy.linalg.qr_insert", dim, rank, 1 / 8, ours, inserted)
+            _assert_alike(rows, triangular, *inserted())
+            yield _Contest("one add", f"scipy qr_insert, Q by {order}", dim, rank, 1 / 8, ours, inserted)
 
     h, unit = _four_calls(held, v)
     slack = _ROUNDING * float(np.finfo(float).eps) * math.sqrt(dim)
@@ -290,7 +290,7 @@ def lines(comparisons: Iterable[Comparison]) -> Iterator[str]:
     str
         A heading, then a line a comparison; ``ratio`` is the share of the other's time.
     """
-    form = "{:<18}  {:<27}  {:>12}  {:>9}  {:>9}  {:>6}  {:>6}  {}"
+    form = "{:<18}  {:<29}  {:>12}  {:>9}  {:>9}  {:>6}  {:>6}  {}"
     yield form.format("what", "against", "shape", "median", "other", "ratio", "goal", "").rstrip()
     for line in comparisons:
         ratio = "-" if math.isnan(line.ratio) else f"{line.ratio:.3f}"
