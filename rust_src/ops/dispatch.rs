@@ -115,5 +115,10 @@ stamp! {
     /// loses `2 u_i g` with `g = sum_i u_i row_i + u_last extra`. `extra`, as long as a row, stays as it is. One
     /// read of the rows from memory and one from cache, one write, `4 count dim` flops.
     fn reflect<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], extra: &[f64])
-        = reflect(rows, stride, count, u, extra);
+        = reflect(rows, stride, count, u, u, extra);
+
+    /// As `reflect`, with `g = sum_i along_i row_i + along_last extra`: the same reflection where `extra` still holds
+    /// some of the rows, or is no unit vector, and `along` makes up for it.
+    fn reflect_along<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], along: &[f64], extra: &[f64])
+        = reflect(rows, stride, count, u, along, extra);
 }

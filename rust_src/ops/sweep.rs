@@ -286,7 +286,7 @@ pub(super) fn subtract<L: Lanes, T: Scalar>(
     squares
 }
 
-/// See [`super::Path::reflect`].
+/// See [`super::Path::reflect`] and [`super::Path::reflect_along`].
 #[inline(always)]
 pub(super) fn reflect<L: Lanes, T: Scalar>(
     lanes: L,
@@ -294,10 +294,11 @@ pub(super) fn reflect<L: Lanes, T: Scalar>(
     stride: usize,
     count: usize,
     u: &[f64],
+    along: &[f64],
     extra: &[f64],
 ) {
     let dim = extra.len();
-    assert!(stride >= dim && u.len() == count + 1, "shapes of a reflection");
+    assert!(stride >= dim && u.len() == count + 1 && along.len() == count + 1, "shapes of a reflection");
     assert!(count == 0 || rows.len() >= (count - 1) * stride + dim, "rows of a reflection");
     // Left unset until written: clearing it would cost more than a short row.
     let mut g = [const { std::mem::MaybeUninit::<f64>::uninit() }; BLOCK];
@@ -305,13 +306,13 @@ pub(super) fn reflect<L: Lanes, T: Scalar>(
     let block = block_for::<T>(count);
     for from in (0..dim).step_by(block) {
         let n = block.min(dim - from);
-        // g = -(u_last extra + sum_i u_i row_i), so that row_i + 2 u_i g is the reflected row.
+        // g = -(a_last extra + sum_i a_i row_i), so that row_i + 2 u_i g is the reflected row.
         // SAFETY: `g` holds `BLOCK >= n` entries, written by `scaled` before they are read; `extra` has `n` from
         // `from` on.
-        unsafe { scaled(lanes, -u[count], extra.as_ptr().add(from), g, n) };
+        unsafe { scaled(lanes, -along[count], extra.as_ptr().add(from), g, n) };
         if let Some(q) = Rows::new(rows, stride, count, dim) {
             // SAFETY: as above, and `from + n <= dim`.
-            unsafe { less_rows(lanes, q, &u[..count], from, g.cast_const(), g, n) };
+            unsafe { less_rows(lanes, q, &along[..count], from, g.cast_const(), g, n) };
         }
         for (index, &entry) in u[..count].iter().enumerate() {
             let row = rows[index * stride + from..][..n].as_mut_ptr();

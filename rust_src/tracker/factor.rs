@@ -3,8 +3,12 @@
 //! All are plane rotations of rows, `O(k^2)` flops; nothing is ever squared, so an energy `1e-12` of the largest
 //! keeps its digits.
 
+use crate::ops;
+
 /// Entries below this are taken as zero: their squares, the energies, would be subnormal.
 const VANISHED: f64 = 1e-150;
+/// From this length on the sweeps' own product is the faster one.
+const WIDE: usize = 24;
 
 /// Upper triangular, row-major, with room for one row and column more than is kept from tick to tick.
 #[derive(Clone, Debug)]
@@ -74,7 +78,7 @@ impl Factor {
     /// `R x`.
     pub(super) fn apply(&self, x: &[f64], image: &mut [f64]) {
         for (index, out) in image[..self.size].iter_mut().enumerate() {
-            *out = self.tail(index).iter().zip(&x[index..]).map(|(a, b)| a * b).sum();
+            *out = dot(self.tail(index), &x[index..self.size]);
         }
     }
 
@@ -129,6 +133,23 @@ impl Factor {
         let (head, rest) = self.entries[index * self.stride..].split_at_mut(self.stride);
         (&mut head[index..columns], &mut rest[index..columns])
     }
+}
+
+/// Sum of products of two short vectors of equal length, in chains that do not wait for one another.
+fn dot(x: &[f64], y: &[f64]) -> f64 {
+    if x.len() >= WIDE {
+        return ops::dot(x, y);
+    }
+    let (fours, rest) = x.as_chunks::<4>();
+    let (others, last) = y.as_chunks::<4>();
+    let mut sums = [0.0; 4];
+    for (a, b) in fours.iter().zip(others) {
+        for (sum, (a, b)) in sums.iter_mut().zip(a.iter().zip(b)) {
+            *sum += a * b;
+        }
+    }
+    let tail: f64 = rest.iter().zip(last).map(|(a, b)| a * b).sum();
+    (sums[0] + sums[1]) + (sums[2] + sums[3]) + tail
 }
 
 /// Cosine, sine and norm of the rotation that turns `(a, b)` into `(norm, 0)`; `b` is not zero.

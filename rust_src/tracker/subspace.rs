@@ -11,6 +11,12 @@ use crate::orthonormal::Mender;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
 
+/// Share of the basis in a residual up to which one correction by what was measured leaves only rounding: the basis
+/// being orthonormal to rounding, the correction errs by that much of itself.
+const SLIGHT: f64 = 0.01;
+/// Rows between two measurements of an old direction. What reflections leave in so many rows is below the limit at
+/// which it is mended.
+const MEASURED_EVERY: u64 = 4;
 /// Squared norms below this carry no digits.
 const NOTHING: f64 = 1e-300;
 
@@ -24,10 +30,13 @@ pub(super) struct Subspace<T> {
     /// Sum of the squared singular values given up, forgotten at the same rate as the rest.
     lost: f64,
     mender: Mender,
+    /// Directions given up so far.
+    cuts: u64,
     h: Vec<f64>,
     s: Vec<f64>,
     correction: Vec<f64>,
     w: Vec<f64>,
+    along: Vec<f64>,
 }
 
 impl<T: Scalar> Subspace<T> {
@@ -40,10 +49,12 @@ impl<T: Scalar> Subspace<T> {
             smallest: Smallest::with_room(limit + 1),
             lost: 0.0,
             mender: Mender::with_room(limit, channels),
+            cuts: 0,
             h: vec![0.0; limit + 1],
             s: Vec::with_capacity(limit),
             correction: Vec::with_capacity(limit),
             w: vec![0.0; channels],
+            along: vec![0.0; limit + 1],
         }
     }
 
@@ -94,45 +105,63 @@ impl<T: Scalar> Subspace<T> {
             buffer.resize(count, 0.0);
         }
         let squares = ops::subtract_measured(q, &self.h[..count], e, &mut self.w, &mut self.s);
-        let measured = Measured { squares, s: &mut self.s, correction: &mut self.correction };
-        let norm = clean(q, &mut self.w, measured, &mut self.h[..count], tolerance).norm;
+        let leftover: f64 = self.s.iter().map(|entry| entry * entry).sum();
+        let full = count == self.limit && count < self.q.dim();
+        let norm = if full && leftover <= SLIGHT * SLIGHT * squares {
+            for (sum, more) in self.h.iter_mut().zip(&self.s) {
+                *sum += more;
+            }
+            (squares - leftover).sqrt()
+        } else {
+            let measured = Measured { squares, s: &mut self.s, correction: &mut self.correction };
+            let norm = clean(q, &mut self.w, measured, &mut self.h[..count], tolerance).norm;
+            self.s.fill(0.0);
+            norm
+        };
         if norm <= tolerance || count == self.q.dim() {
             self.factor.append(&mut self.h[..count]);
             self.lost += norm * norm;
-        } else if count < self.limit {
+            return;
+        }
+        self.h[count] = norm;
+        self.factor.border(&mut self.h[..=count]);
+        if count < self.limit {
             ops::normalize_into(norm, &self.w, self.q.row_mut(count));
-            self.h[count] = norm;
-            self.factor.border(&mut self.h[..=count]);
         } else {
-            self.h[count] = norm;
-            self.factor.border(&mut self.h[..=count]);
-            let scale = norm.recip();
-            self.w.iter_mut().for_each(|entry| *entry *= scale);
-            self.give_up();
+            self.give_up(norm);
         }
     }
 
-    /// Gives up the weakest of the directions held and the new one in `w`.
+    /// Gives up the weakest of the directions held and the new one, `w` less what `s` says it holds of the others, of
+    /// norm `norm`.
     ///
     /// The reflection that sends it to the last place turns "rotate and cut" into one change of rank one; the sign of
-    /// the last entry is chosen so that forming `u` cancels nothing.
-    fn give_up(&mut self) {
-        let size = self.factor.size();
+    /// the last entry is chosen so that forming `u` cancels nothing. `w` is cleaned in the same sweep: `along` is `u`
+    /// for the cleaned and normalized direction.
+    fn give_up(&mut self, norm: f64) {
+        let count = self.limit;
         self.smallest.find(&self.factor);
-        let z = self.smallest.direction(size);
+        let z = self.smallest.direction();
         self.factor.apply(z, &mut self.h);
-        self.lost += self.h[..size].iter().map(|entry| entry * entry).sum::<f64>();
-        let u = &mut self.h[..size];
+        self.lost += self.h.iter().map(|entry| entry * entry).sum::<f64>();
+        let u = &mut self.h;
         u.copy_from_slice(z);
-        u[size - 1] += 1.0_f64.copysign(u[size - 1]);
-        let norm = u.iter().map(|entry| entry * entry).sum::<f64>().sqrt();
+        u[count] += 1.0_f64.copysign(u[count]);
+        let scale = ops::norm_squared(u).sqrt().recip();
         for entry in &mut *u {
-            *entry /= norm;
+            *entry *= scale;
+        }
+        let last = u[count] / norm;
+        self.along[count] = last;
+        for ((out, entry), left) in self.along.iter_mut().zip(&*u).zip(&self.s) {
+            *out = entry - last * left;
         }
         let (rows, stride) = self.q.parts_mut();
-        ops::reflect(rows, stride, size - 1, u, &self.w);
+        ops::reflect_along(rows, stride, count, u, &self.along, &self.w);
         self.factor.cut(u);
-        // Rounding in the reflections is caught within as many rows as there are directions.
-        self.mender.take_turn(&mut self.q, size - 1);
+        self.cuts += 1;
+        if self.cuts.is_multiple_of(MEASURED_EVERY) {
+            self.mender.take_turn(&mut self.q, count);
+        }
     }
 }

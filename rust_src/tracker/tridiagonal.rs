@@ -9,7 +9,10 @@ pub(super) struct Tridiagonal {
     diagonal: Vec<f64>,
     /// Entry `i` couples rows `i` and `i + 1`; the last one is not yet in the matrix.
     beside: Vec<f64>,
+    /// The largest eigenvalue, or a bound on it from above where rows were added since it was found.
     largest: f64,
+    /// Least that the last entry of the vector can be, relative to its first.
+    reach: f64,
     /// Pivots of `largest I - T`, eliminated from the top and from the bottom.
     down: Vec<f64>,
     up: Vec<f64>,
@@ -22,6 +25,7 @@ impl Tridiagonal {
             diagonal: Vec::with_capacity(limit),
             beside: Vec::with_capacity(limit),
             largest: 0.0,
+            reach: 1.0,
             down: vec![0.0; limit],
             up: vec![0.0; limit],
             vector: vec![0.0; limit],
@@ -33,12 +37,28 @@ impl Tridiagonal {
         self.diagonal.clear();
         self.beside.clear();
         self.largest = 0.0;
+        self.reach = 1.0;
     }
 
     /// One row more: its diagonal entry, and the entry that will couple it to the row after it.
     pub(super) fn push(&mut self, diagonal: f64, beside: f64) {
+        if let Some(&before) = self.beside.last() {
+            // The bound of the two by two matrix of the block before and this row.
+            let half = 0.5 * (self.largest - diagonal);
+            let bound = 0.5 * (self.largest + diagonal) + (half * half + before * before).sqrt();
+            self.largest = bound * (1.0 + 8.0 * f64::EPSILON);
+            self.reach *= (before / (self.largest - diagonal)).min(1.0);
+        } else {
+            self.largest = diagonal;
+        }
         self.diagonal.push(diagonal);
         self.beside.push(beside);
+    }
+
+    /// Whether what couples the vector to a row not yet in the matrix may be as little as `share` of the eigenvalue:
+    /// an estimate that costs nothing and errs on the side of yes.
+    pub(super) fn may_couple_below(&self, share: f64) -> bool {
+        self.beside.last().is_none_or(|beside| beside * self.reach <= share * self.largest)
     }
 
     /// The unit vector found by the last [`Self::largest`].
@@ -46,14 +66,14 @@ impl Tridiagonal {
         &self.vector[..self.diagonal.len()]
     }
 
-    /// Finds the largest eigenvalue. Called after each row: the value before bounds the value now.
+    /// Finds the largest eigenvalue.
     ///
     /// Newton's iteration on the characteristic polynomial, from above, where it falls monotonically; then the vector
     /// by a factorization twisted at the smallest pivot (Parlett & Dhillon, Linear Algebra Appl. 267 (1997) 247-279),
     /// which is accurate in its small entries too: the last one decides whether to stop.
     pub(super) fn largest(&mut self) -> f64 {
         let size = self.diagonal.len();
-        let mut value = self.bound();
+        let mut value = self.largest;
         for _ in 0..STEPS {
             let Some(step) = self.newton(value) else { break };
             value -= step;
@@ -79,19 +99,6 @@ impl Tridiagonal {
             *entry /= norm;
         }
         value
-    }
-
-    /// A bound from above: that of the two by two matrix of the block before and the last row.
-    fn bound(&self) -> f64 {
-        let size = self.diagonal.len();
-        let last = self.diagonal[size - 1];
-        if size == 1 {
-            return last;
-        }
-        let beside = self.beside[size - 2];
-        let half = 0.5 * (self.largest - last);
-        let bound = 0.5 * (self.largest + last) + half.hypot(beside);
-        bound * (1.0 + 8.0 * f64::EPSILON)
     }
 
     /// Newton's step down from `value`; None where `value` is no longer above.
