@@ -7,7 +7,7 @@
 //!
 //! The angle means nothing where the weakest axis could as well be another: two estimates of the same subspace from
 //! `n` rows differ by about the square root of `sum_ij L_i l_j / (n (L_i - l_j)^2)` over kept energies `L` and those left
-//! out `l` (Anderson, Ann. Math. Stat. 34 (1963) 122-148). Where that exceeds [`UNTOLD`] the angle is withheld.
+//! out `l` (Anderson, Ann. Math. Stat. 34 (1963) 122-148). Where that exceeds half a radian the angle is withheld.
 //!
 //! The comparison is made once for each renewal of the axes, an axis or a few rotations a tick.
 

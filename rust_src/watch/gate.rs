@@ -6,7 +6,7 @@
 //! limit/statistic, until rows stay within the limits of themselves.
 //!
 //! The count is of rows beyond in succession, and a succession ends with `of` rows within in a row: a new regime
-//! that shows beyond the limits nine times in ten must be adopted too. While it adopts, and for [`SETTLING`] times `hold`
+//! that shows beyond the limits nine times in ten must be adopted too. While it adopts, and for three times `hold`
 //! rows after, the limits forget with time constant `hold`: else the rows met while adopting would leave
 //! them wide for a whole memory.
 

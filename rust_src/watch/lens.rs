@@ -1,7 +1,7 @@
 //! What a row is judged by: principal axes and energies as they stood a little while ago.
 //!
 //! The tracker learns each row, but its principal axes need a singular value decomposition, which would cost more than
-//! the rest of a tick. Rows are judged by axes at most a hundredth of the learned weight old ([`super::model`]); the mean
+//! the rest of a tick. Rows are judged by axes at most a hundredth of the learned weight old; the mean
 //! they are taken from is the present one.
 //!
 //! With deviation `d`, axes `P` and energies `L`: scores `t = P d`, residual `e = d - P^T t`, SPE `e . e`, Hotelling's
