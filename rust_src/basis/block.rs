@@ -72,8 +72,13 @@ impl<T: Scalar> Basis<T> {
     /// Adds at most [`BLOCK_ROWS`] vectors that have been checked.
     fn add_block(&mut self, rows: &[f64], steps: &mut Vec<Step>) -> Result<(), Error> {
         let dim = self.dim();
-        let norms_squared: Vec<f64> = rows.chunks_exact(dim).map(ops::norm_squared).collect();
-        let count = norms_squared.len();
+        let count = rows.len() / dim;
+        let mut norms_squared = [0.0; BLOCK_ROWS];
+        norms_squared
+            .iter_mut()
+            .zip(rows.chunks_exact(dim))
+            .for_each(|(target, row)| *target = ops::norm_squared(row));
+        let norms_squared = &norms_squared[..count];
         if count < 2 || norms_squared.iter().any(|squares| !SAFE_SQUARES.contains(squares)) {
             for row in rows.chunks_exact(dim) {
                 steps.push(self.add(row)?);
@@ -87,11 +92,11 @@ impl<T: Scalar> Basis<T> {
         for buffer in [&mut block.h, &mut block.s, &mut block.correction] {
             buffer.resize(count * older, 0.0);
         }
-        let floors: Vec<f64> = norms_squared
-            .iter()
-            .map(|squares| (self.tolerance.relative * squares.sqrt()).max(self.tolerance.absolute))
-            .collect();
-        let passes = self.subtract_older(rows, &mut block, &floors);
+        let mut floors = [0.0; BLOCK_ROWS];
+        for (floor, squares) in floors.iter_mut().zip(norms_squared) {
+            *floor = (self.tolerance.relative * squares.sqrt()).max(self.tolerance.absolute);
+        }
+        let passes = self.subtract_older(rows, &mut block, &floors[..count]);
         for index in 0..count {
             let step = self.take(&mut block, index, norms_squared[index].sqrt(), floors[index], passes);
             steps.push(step);
