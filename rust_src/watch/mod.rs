@@ -28,6 +28,7 @@ mod judging;
 pub mod lens;
 pub mod limits;
 mod model;
+mod partial;
 pub mod rank;
 mod reading;
 mod renewal;

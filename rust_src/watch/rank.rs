@@ -5,9 +5,13 @@
 //! analysis: Horn, Psychometrika 30 (1965) 179-185), in a form that respects time and scale: the same channels,
 //! each shifted in time by its own amount, move as before one by one but no longer together. The axes are taken off one after
 //! another, and what is left is compared with what is left, shifted; so a dominant axis does not hide the smaller ones.
+//! Channels that all follow the same day move together however they are shifted; partial correlations see through that
+//! ([`super::partial`]) and miss what is only weakly shared, so the larger of the two counts is taken.
 //! After `k` axes the rows lie in `channels - k` dimensions but their shifted copies in all of them: their energy is
 //! raised by that ratio.
 
+use super::partial::count_shared;
+use crate::error::Error;
 use crate::ops;
 
 /// Shifted copies an axis is compared with; it must exceed each of them, which an axis of pure chance does one time in
@@ -21,9 +25,18 @@ const SETTLED: f64 = 1e-4;
 const GOLDEN: f64 = 0.618_033_988_749_894_9;
 
 /// Axes worth keeping of `rows` (row-major, `channels` wide, columns with mean zero; those that do not `move` are
-/// zero): between 1 and `most`. About `10 steps (k + 1)` products of the rows with a vector.
-#[must_use]
-pub fn choose(mut rows: Vec<f64>, channels: usize, moving: usize, most: usize) -> usize {
+/// zero): between 1 and `most`. About `10 steps (k + 1)` products of the rows with a vector, and what the partial
+/// correlations take.
+///
+/// # Errors
+/// [`Error::NoConvergence`], never seen.
+pub fn choose(rows: Vec<f64>, channels: usize, moving: usize, most: usize) -> Result<usize, Error> {
+    let shared = count_shared(&rows, channels, moving, most)?;
+    Ok(beyond_chance(rows, channels, moving, most).max(shared))
+}
+
+/// Axes that hold more than shifted copies of the same channels do.
+fn beyond_chance(mut rows: Vec<f64>, channels: usize, moving: usize, most: usize) -> usize {
     let count = rows.len() / channels;
     let mut power = Power::new(count, channels);
     let mut shifted = vec![0.0; rows.len()];
@@ -104,6 +117,11 @@ impl Power {
 mod tests {
     use super::*;
 
+    /// The number chosen.
+    fn choose(rows: Vec<f64>, channels: usize, moving: usize, most: usize) -> usize {
+        super::choose(rows, channels, moving, most).unwrap_or(0)
+    }
+
     struct Normal(u64);
 
     impl Normal {
@@ -165,6 +183,35 @@ mod tests {
         let rank = choose(rows(500, 24, &[10.0, 1.0, 0.5], 0.1, 0.0), 24, 24, 23);
         // The dominant one leaves channels of very different spread: a few axes more may hold one channel each.
         assert!((3..=9).contains(&rank), "{rank}");
+    }
+
+    #[test]
+    fn a_day_that_moves_every_channel_does_not_hide_what_few_share() {
+        let mut normal = Normal(31);
+        let channels = 24;
+        // One day for all channels, and four small slow movements that some of them share.
+        let day_of: Vec<f64> = (0..channels).map(|_| 1.0 + 0.3 * normal.draw()).collect();
+        let drivers: Vec<f64> = (0..4 * channels).map(|_| normal.draw()).collect();
+        let mut slow = [0.0; 4];
+        let mut rows = Vec::new();
+        for row in 0..1000 {
+            let day = (std::f64::consts::TAU * f64::from(row) / 250.0).sin();
+            for state in &mut slow {
+                *state = 0.999 * *state + 0.045 * normal.draw();
+            }
+            for channel in 0..channels {
+                let shared: f64 = (0..4).map(|d| 0.02 * slow[d] * drivers[d * channels + channel]).sum();
+                rows.push(day_of[channel] * day + shared + 0.01 * normal.draw());
+            }
+        }
+        for channel in 0..channels {
+            let mean = rows.iter().skip(channel).step_by(channels).sum::<f64>() / 1000.0;
+            rows.iter_mut().skip(channel).step_by(channels).for_each(|value| *value -= mean);
+        }
+        let (alone, both) =
+            (beyond_chance(rows.clone(), channels, channels, 23), choose(rows, channels, channels, 23));
+        assert!((5..=7).contains(&both), "{both}, by shifted copies alone {alone}");
+        assert!(alone < 5, "{alone}");
     }
 
     #[test]

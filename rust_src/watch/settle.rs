@@ -58,7 +58,7 @@ pub fn settle<T: Scalar>(rows: &[f64], settings: &Settings) -> Result<Option<Set
     let count = rows.len() / channels;
     let all = vec![true; count];
     let Some(units) = units(rows, channels, &all) else { return Ok(None) };
-    let rank = choose_rank(rows, settings, &units, &all);
+    let rank = choose_rank(rows, settings, &units, &all)?;
     let mut kept = all.clone();
     let mut model = learn::<T>(rows, channels, &kept, units, rank, None)?;
     for round in 0..ROUNDS {
@@ -73,7 +73,7 @@ pub fn settle<T: Scalar>(rows: &[f64], settings: &Settings) -> Result<Option<Set
             break;
         }
         let Some(units) = self::units(rows, channels, &kept) else { return Ok(None) };
-        let rank = choose_rank(rows, settings, &units, &kept);
+        let rank = choose_rank(rows, settings, &units, &kept)?;
         model = learn::<T>(rows, channels, &kept, units, rank, None)?;
         if sticking_out as f64 > MANY * count as f64 {
             break;
@@ -97,12 +97,12 @@ fn units(rows: &[f64], channels: usize, kept: &[bool]) -> Option<Units> {
 }
 
 /// The rank asked for, or chosen, below the number of channels that move and of rows a fold leaves.
-fn choose_rank(rows: &[f64], settings: &Settings, units: &Units, kept: &[bool]) -> usize {
+fn choose_rank(rows: &[f64], settings: &Settings, units: &Units, kept: &[bool]) -> Result<usize, Error> {
     let count = kept.iter().filter(|keep| **keep).count();
     let seen = count - count.div_ceil(FOLDS);
     let most = (units.moving() - 1).min(seen.saturating_sub(2)).max(1);
     if let Some(rank) = settings.rank {
-        return rank.min(most);
+        return Ok(rank.min(most));
     }
     let mut scaled = vec![0.0; settings.channels];
     let mut block = Vec::with_capacity(rows.len());
