@@ -31,13 +31,13 @@ pub fn count_shared(rows: &[f64], channels: usize, moving: usize, most: usize) -
     let mut scatter = scatter_of(rows, channels);
     let whole: Vec<f64> = (0..channels).map(|c| scatter[c * channels + c]).collect();
     let last = (count.min(moving) / 2).min(most);
-    let (mut best, mut least) = (0, f64::INFINITY);
+    let (mut best, mut smallest) = (0, f64::INFINITY);
     let mut axes = Svd::new(channels, channels);
     axes.decompose(&scatter)?;
     for rank in 0..=last {
         let average = partial_correlation(&scatter, &whole);
-        if average < least {
-            (best, least) = (rank, average);
+        if average < smallest {
+            (best, smallest) = (rank, average);
         } else if rank - best >= PATIENCE {
             break;
         }
