@@ -1,4 +1,4 @@
-//! Once its capacity stands, the basis allocates nothing.
+//! Once its capacity stands, the basis allocates nothing; nor does the watch once settled.
 #![allow(clippy::unwrap_used, reason = "a test may stop where it finds a surprise")]
 #![allow(unsafe_code, reason = "an allocator that counts has to be one: GlobalAlloc is an unsafe trait")]
 
@@ -6,7 +6,13 @@ use std::alloc::{GlobalAlloc, Layout, System};
 use std::cell::Cell;
 use std::hint::black_box;
 
+use perpend::watch::{Limits, Phase, Settings, Watch};
 use perpend::{Basis, Scalar, ops};
+
+#[path = "watch_stream.rs"]
+mod watch_stream;
+
+use watch_stream::{CHANNELS, each, healthy};
 
 /// The system's allocator, counting what the thread asks of it.
 struct Counting;
@@ -137,4 +143,33 @@ fn allocates_nothing<T: Scalar>() {
 fn once_its_capacity_stands_a_basis_allocates_nothing() {
     allocates_nothing::<f64>();
     allocates_nothing::<f32>();
+}
+
+/// Healthy rows, gaps, an alarm, its adoption and the peace after it: each tick without a request.
+#[test]
+fn once_settled_a_tick_allocates_nothing() {
+    black_box(ops::Path::current());
+    for limits in [Limits::Moments, Limits::Empirical, Limits::Spectrum] {
+        let settings = Settings { limits, hold: 50, ..Settings::new(CHANNELS) };
+        let mut watch = Watch::<f64>::new(settings).unwrap();
+        watch.settle_on(&healthy(300, 1)).unwrap();
+        let mut rows = healthy(2_000, 2);
+        for (tick, row) in rows.chunks_exact_mut(CHANNELS).enumerate() {
+            if tick % 9 == 0 {
+                row[tick % CHANNELS] = f64::NAN;
+            }
+            if tick >= 1_000 {
+                row[3] += 30.0;
+            }
+        }
+        let mut seen = [false; 5];
+        let ticking = requests(|| {
+            for row in each(&rows) {
+                seen[watch.tick(row).unwrap().phase as usize] = true;
+            }
+        });
+        let all = [Phase::Healthy, Phase::Exceeding, Phase::Alarmed, Phase::Adopting];
+        assert!(all.iter().all(|phase| seen[*phase as usize]), "{limits:?}: {seen:?}");
+        assert_eq!(ticking, 0, "{limits:?}");
+    }
 }
