@@ -291,20 +291,23 @@ class Tracker:
     channels : int
         Entries a row.
     rank : int
-        Principal axes reported, 1 to `channels`.
+        Principal axes reported, 1 to `channels`; with `share`, the most of them.
     memory : float, optional
         Time constant of forgetting, in rows. Without it nothing is forgotten and the answer is that of the whole batch.
     center : bool
         Whether the weighted mean is tracked and taken off.
     guard : int, optional
         Directions tracked beyond `rank`. Default: as many again, at least 8, and never more than there are.
+    share : float, optional
+        Report as many axes as explain this share of the variance, between 0 and 1, and follow it: one more where it is
+        not reached, one less only where it is clearly exceeded without; always fewer than there are channels.
     dtype : {"float64", "float32"}
         Type the directions are stored in. Arithmetic, mean and energies are float64 in either case.
 
     Raises
     ------
     ValueError
-        Where `rank`, `guard` or `memory` is out of its range.
+        Where `rank`, `guard`, `memory` or `share` is out of its range.
     TypeError
         Where `dtype` is neither of the two.
     """
@@ -317,6 +320,7 @@ class Tracker:
         memory: float | None = None,
         center: bool = True,
         guard: int | None = None,
+        share: float | None = None,
         dtype: DTypeLike = "float64",
     ) -> Tracker: ...
     def update(self, row: ArrayLike, weight: float = 1.0, *, elapsed: float = 1.0) -> bool:
@@ -472,7 +476,11 @@ class Tracker:
 
     @property
     def rank(self) -> int:
-        """Axes reported."""
+        """Axes reported; where `share` is followed, as many as it takes now."""
+
+    @property
+    def share(self) -> float | None:
+        """Share of the variance that the number of axes follows."""
 
     @property
     def guard(self) -> int:

@@ -47,10 +47,13 @@ impl PyTracker {
         let entries = row.entries()?;
         let mut coefficients = vec![0.0; self.settings.rank];
         let mut residual = vec![0.0; self.settings.channels];
-        let split = self.inner.with(
-            object.py(),
-            |inner| either!(inner, tracker => tracker.split_into(entries, &mut coefficients, &mut residual)),
-        )?;
+        let split = self.inner.with(object.py(), |inner| {
+            either!(inner, tracker => {
+                let split = tracker.split_into(entries, &mut coefficients, &mut residual)?;
+                coefficients.truncate(tracker.rank());
+                Ok(split)
+            })
+        })?;
         Ok(Parts { coefficients, residual, norm: split.residual_norm_squared.sqrt() })
     }
 
@@ -67,8 +70,9 @@ impl PyTracker {
 impl PyTracker {
     #[new]
     #[pyo3(
-        signature = (channels, rank, *, memory=None, center=true, guard=None, dtype=Stored::Float64),
-        text_signature = "(channels, rank, *, memory=None, center=True, guard=None, dtype='float64')"
+        signature = (channels, rank, *, memory=None, center=true, guard=None, share=None, dtype=Stored::Float64),
+        text_signature =
+            "(channels, rank, *, memory=None, center=True, guard=None, share=None, dtype='float64')"
     )]
     fn new(
         channels: Count,
@@ -76,15 +80,20 @@ impl PyTracker {
         memory: Option<f64>,
         center: bool,
         guard: Option<Count>,
+        share: Option<f64>,
         dtype: Stored,
     ) -> PyResult<Self> {
         let guard = guard.map(|guard| guard.0);
         let settings = Settings { channels: channels.0, rank: rank.0, memory, center, guard };
         let inner = fenced(|| {
-            Ok(match dtype {
+            let mut inner = match dtype {
                 Stored::Float64 => Inner::Float64(Tracker::new(settings)?),
                 Stored::Float32 => Inner::Float32(Tracker::new(settings)?),
-            })
+            };
+            if let Some(share) = share {
+                either!(&mut inner, tracker => tracker.follow_share(share))?;
+            }
+            Ok(inner)
         })?;
         Ok(Self { inner: Guarded::new(inner), settings })
     }
@@ -257,14 +266,19 @@ impl PyTracker {
 
     #[doc = stub_doc!("Tracker.rank")]
     #[getter]
-    fn rank(&self) -> usize {
-        self.settings.rank
+    fn rank(&self, py: Python<'_>) -> PyResult<usize> {
+        self.current(py, |inner| either!(inner, tracker => tracker.rank()))
     }
 
     #[doc = stub_doc!("Tracker.guard")]
     #[getter]
-    fn guard(&self) -> usize {
-        self.settings.directions() - self.settings.rank
+    fn guard(&self, py: Python<'_>) -> PyResult<usize> {
+        Ok(self.settings.directions() - self.rank(py)?)
+    }
+
+    #[getter]
+    fn share(&self, py: Python<'_>) -> Option<f64> {
+        self.inner.read(py, |inner| either!(inner, tracker => tracker.share()))
     }
 
     #[doc = stub_doc!("Tracker.memory")]
@@ -275,9 +289,10 @@ impl PyTracker {
 
     fn __repr__(&self, py: Python<'_>) -> String {
         let Settings { channels, rank, .. } = self.settings;
+        let guard = self.settings.directions() - rank;
+        let share = self.share(py).map_or_else(String::new, |share| format!(", share={share}"));
         format!(
-            "Tracker(channels={channels}, rank={rank}, guard={}, samples={})",
-            self.guard(),
+            "Tracker(channels={channels}, rank={rank}, guard={guard}{share}, samples={})",
             self.samples(py)
         )
     }

@@ -16,14 +16,12 @@ pub(super) struct Factor {
     entries: Vec<f64>,
     stride: usize,
     size: usize,
-    /// `R u` of the last cut.
-    image: Vec<f64>,
 }
 
 impl Factor {
     /// Room for `limit` rows and columns.
     pub(super) fn with_room(limit: usize) -> Self {
-        Self { entries: vec![0.0; limit * limit], stride: limit, size: 0, image: vec![0.0; limit] }
+        Self { entries: vec![0.0; limit * limit], stride: limit, size: 0 }
     }
 
     /// Rows, which are also columns.
@@ -92,14 +90,21 @@ impl Factor {
         }
     }
 
+    /// Adds `share` of the last column.
+    pub(super) fn add_last_column(&self, share: f64, image: &mut [f64]) {
+        let last = self.entries[self.size - 1..].iter().step_by(self.stride);
+        for (out, entry) in image[..self.size].iter_mut().zip(last) {
+            *out += share * entry;
+        }
+    }
+
     /// Columns reflected by `I - 2 u u^T`, the last of them cut off, rows rotated back to triangular form.
     ///
     /// The reflected matrix is `R - 2 (R u) u^T`: one sweep of rotations from below turns `R u` into a multiple of the
     /// first unit vector and leaves one diagonal below the main one, the rank-one change then touches the first
-    /// row only, and a second sweep from above clears that diagonal. About `9 k^2` flops.
-    pub(super) fn cut(&mut self, u: &[f64]) {
-        let mut image = std::mem::take(&mut self.image);
-        self.apply(u, &mut image);
+    /// row only, and a second sweep from above clears that diagonal. `image` is `R u` and is used up. About `6 k^2`
+    /// flops.
+    pub(super) fn cut(&mut self, u: &[f64], image: &mut [f64]) {
         let kept = self.size - 1;
         for index in (0..kept).rev() {
             if image[index + 1] == 0.0 {
@@ -115,7 +120,6 @@ impl Factor {
         for (entry, &last) in self.entries[..kept].iter_mut().zip(u) {
             *entry -= 2.0 * image[0] * last;
         }
-        self.image = image;
         for index in 0..kept {
             let (upper, lower) = self.pair(index, kept);
             if lower[0] == 0.0 {

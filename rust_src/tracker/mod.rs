@@ -23,6 +23,7 @@ mod mean;
 mod merge;
 mod normal;
 mod principal;
+mod rank;
 mod settings;
 mod smallest;
 mod split;

@@ -1,6 +1,7 @@
 //! Principal axes and energies, from the small factor when they are asked for.
 
 use super::Tracker;
+use super::rank::Rank;
 use super::subspace::Subspace;
 use crate::dense::Svd;
 use crate::error::Error;
@@ -14,6 +15,7 @@ pub(super) struct Principal<T> {
     axes: RowStore<T>,
     fresh: RowStore<T>,
     count: usize,
+    rank: Rank,
     stale: bool,
     /// Energies of all directions tracked.
     energies: Vec<f64>,
@@ -51,6 +53,7 @@ impl<T: Scalar> Principal<T> {
             axes: RowStore::zeros(rank, channels),
             fresh: RowStore::zeros(rank, channels),
             count: 0,
+            rank: Rank::fixed(rank),
             stale: false,
             energies: vec![0.0; limit],
             total: 0.0,
@@ -87,13 +90,15 @@ impl<T: Scalar> Principal<T> {
             slot => &mut slot.insert((size, Svd::new(size, size))).1,
         };
         svd.decompose(matrix)?;
+        let per_weight = if weight > 0.0 { weight.recip() } else { 0.0 };
         for (target, value) in self.energies.iter_mut().zip(svd.values()) {
-            *target = energy(value * value / weight);
+            *target = energy(value * value * per_weight);
         }
-        self.lost = energy(subspace.lost() / weight);
+        self.lost = energy(subspace.lost() * per_weight);
         self.total = self.energies.iter().sum::<f64>() + self.lost;
+        self.rank.choose(&self.energies, self.total);
         let before = self.count;
-        let count = size.min(self.axes.rows());
+        let count = size.min(self.rank.reported());
         for index in 0..count {
             let direction = svd.right(index);
             for (out, entry) in self.weights.iter_mut().zip(direction) {
@@ -140,6 +145,31 @@ impl<T: Scalar> Tracker<T> {
         Ok(())
     }
 
+    /// Axes reported: as set or, where a share is followed, as chosen at the last refresh.
+    #[must_use]
+    pub fn rank(&self) -> usize {
+        self.principal.rank.reported()
+    }
+
+    /// The share of the variance that the number of axes follows; None where it is fixed.
+    #[must_use]
+    pub fn share(&self) -> Option<f64> {
+        self.principal.rank.share()
+    }
+
+    /// From now on reports, at each refresh, as many axes as explain `share` of the variance: at most the rank set, and
+    /// fewer than there are channels, so that there is a residual. With hysteresis: an axis is added where the share is not
+    /// reached, and dropped only where those before it exceed the share by a fifth of what it leaves.
+    ///
+    /// # Errors
+    /// [`Error::Parameter`] where `share` is not between 0 and 1.
+    pub fn follow_share(&mut self, share: f64) -> Result<(), Error> {
+        let most = self.settings.rank.min(self.settings.channels - 1);
+        self.principal.rank.follow(share, most)?;
+        self.principal.outdate();
+        Ok(())
+    }
+
     /// Whether rows were learned since the last refresh.
     #[must_use]
     pub fn is_stale(&self) -> bool {
@@ -150,20 +180,20 @@ impl<T: Scalar> Tracker<T> {
     /// that have been seen.
     #[must_use]
     pub fn axes(&self) -> Rows<'_, T> {
-        self.principal.axes.view(self.settings.rank)
+        self.principal.axes.view(self.rank())
     }
 
     /// Variances along the axes, descending, squared unit of the rows, as of the last refresh: sums of squares
     /// divided by the total weight.
     #[must_use]
     pub fn energies(&self) -> &[f64] {
-        &self.principal.energies[..self.settings.rank]
+        &self.principal.energies[..self.rank()]
     }
 
     /// Variances along the guard directions, which are tracked and not reported, as of the last refresh.
     #[must_use]
     pub fn guard_energies(&self) -> &[f64] {
-        &self.principal.energies[self.settings.rank..]
+        &self.principal.energies[self.rank()..]
     }
 
     /// Variance of all channels together, as of the last refresh. Exact: what truncation gave up is counted.

@@ -37,6 +37,7 @@ pub(super) struct Subspace<T> {
     correction: Vec<f64>,
     w: Vec<f64>,
     along: Vec<f64>,
+    image: Vec<f64>,
 }
 
 impl<T: Scalar> Subspace<T> {
@@ -55,6 +56,7 @@ impl<T: Scalar> Subspace<T> {
             correction: Vec::with_capacity(limit),
             w: vec![0.0; channels],
             along: vec![0.0; limit + 1],
+            image: vec![0.0; limit + 1],
         }
     }
 
@@ -142,14 +144,17 @@ impl<T: Scalar> Subspace<T> {
         let count = self.limit;
         self.smallest.find(&self.factor);
         let z = self.smallest.direction();
-        self.factor.apply(z, &mut self.h);
-        self.lost += self.h.iter().map(|entry| entry * entry).sum::<f64>();
+        self.factor.apply(z, &mut self.image);
+        self.lost += ops::norm_squared(&self.image);
         let u = &mut self.h;
         u.copy_from_slice(z);
-        u[count] += 1.0_f64.copysign(u[count]);
+        let sign = 1.0_f64.copysign(u[count]);
+        u[count] += sign;
+        self.factor.add_last_column(sign, &mut self.image);
         let scale = ops::norm_squared(u).sqrt().recip();
-        for entry in &mut *u {
+        for (entry, image) in u.iter_mut().zip(&mut self.image) {
             *entry *= scale;
+            *image *= scale;
         }
         let last = u[count] / norm;
         self.along[count] = last;
@@ -158,7 +163,7 @@ impl<T: Scalar> Subspace<T> {
         }
         let (rows, stride) = self.q.parts_mut();
         ops::reflect_along(rows, stride, count, u, &self.along, &self.w);
-        self.factor.cut(u);
+        self.factor.cut(u, &mut self.image);
         self.cuts += 1;
         if self.cuts.is_multiple_of(MEASURED_EVERY) {
             self.mender.take_turn(&mut self.q, count);

@@ -125,8 +125,8 @@ impl<T: Scalar> Tracker<T> {
         }
         self.mean.delta(row, &mut self.delta);
         self.gaps.clear();
-        // A sum of products with zero is zero unless an entry is no finite number.
-        if self.delta.iter().map(|entry| entry * 0.0).sum::<f64>() == 0.0 {
+        // Finite where every entry is, unless the squares overflow; then the entries are looked at.
+        if ops::norm_squared(&self.delta).is_finite() {
             return Ok(());
         }
         self.gaps.find(row).map_err(|index| Error::NonFinite { what: "row", index, value: row[index] })?;

@@ -533,3 +533,36 @@ fn merging_unlike_models_is_refused() {
         assert!(matches!(tracker.merge(&other), Err(Error::Unlike { .. })));
     }
 }
+
+#[test]
+fn rank_follows_the_share_with_hysteresis_and_never_reaches_the_channels() {
+    let mut next = Noise(97);
+    let mut tracker = Tracker::<f64>::new(Settings { memory: Some(200.0), ..Settings::new(6, 6) }).unwrap();
+    assert!(matches!(tracker.follow_share(1.0), Err(Error::Parameter { name: "share", .. })));
+    tracker.follow_share(0.9).unwrap();
+    // A third source comes up to a quarter of the variance and goes again.
+    let mut ranks = Vec::new();
+    for tick in 0..6000 {
+        let third = if (2000..4000).contains(&tick) { 1.0 } else { 0.05 };
+        let row: Vec<f64> = [2.0, 1.5, third, 0.1, 0.1, 0.1].iter().map(|size| size * next.next()).collect();
+        tracker.update(&row, 1.0).unwrap();
+        if tick > 500 {
+            tracker.refresh().unwrap();
+            assert_eq!(tracker.axes().count(), tracker.rank());
+            assert!(tracker.explained() >= 0.9);
+            ranks.push(tracker.rank());
+        }
+    }
+    assert_eq!((ranks[1000], ranks[3000], ranks[5400]), (2, 3, 2));
+    let changes = ranks.windows(2).filter(|pair| pair[0] != pair[1]).count();
+    assert_eq!(changes, 2, "one up, one down");
+    // Noise in all channels alike: all but one axis, however high the share.
+    let mut tracker = Tracker::<f64>::new(Settings::new(4, 4)).unwrap();
+    tracker.follow_share(0.999).unwrap();
+    for _ in 0..300 {
+        let row = [next.next(), next.next(), next.next(), next.next()];
+        tracker.update(&row, 1.0).unwrap();
+    }
+    tracker.refresh().unwrap();
+    assert_eq!(tracker.rank(), 3);
+}

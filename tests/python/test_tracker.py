@@ -213,3 +213,18 @@ def test_a_bad_row_is_refused_with_its_place_and_leaves_the_tracker_as_it_was():
         tracker.update([1, 2, 3, 4], -1)
     np.testing.assert_array_equal(tracker.energies, twin.energies)
     assert tracker.samples == twin.samples
+
+
+def test_share_chooses_how_many_axes_are_reported():
+    rows = stream(400, 12)
+    tracker = Tracker(12, 8, share=0.95)
+    tracker.update_rows(rows)
+    _, energies, axes = batch(rows)
+    needed = int(np.searchsorted(np.cumsum(energies) / energies.sum(), 0.95)) + 1
+    assert tracker.rank == len(tracker.energies) == needed
+    assert tracker.axes.shape == (needed, 12)
+    assert tracker.split(rows[0])[0].shape == (needed,)
+    assert tracker.rank + tracker.guard == 12
+    assert subspace_angles(tracker.axes.T, axes[:needed].T).max() < 1e-9
+    with pytest.raises(ValueError, match="share"):
+        Tracker(12, 8, share=1.5)
