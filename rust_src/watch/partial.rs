@@ -32,8 +32,8 @@ pub fn count_shared(rows: &[f64], channels: usize, moving: usize, most: usize) -
     let whole: Vec<f64> = (0..channels).map(|c| scatter[c * channels + c]).collect();
     let last = (count.min(moving) / 2).min(most);
     let (mut best, mut smallest) = (0, f64::INFINITY);
-    let mut axes = Svd::new(channels, channels);
-    axes.decompose(&scatter)?;
+    let mut spectrum = Svd::new(channels, channels);
+    spectrum.decompose(&scatter)?;
     for rank in 0..=last {
         let average = partial_correlation(&scatter, &whole);
         if average < smallest {
@@ -41,7 +41,7 @@ pub fn count_shared(rows: &[f64], channels: usize, moving: usize, most: usize) -
         } else if rank - best >= PATIENCE {
             break;
         }
-        let (energy, axis) = (axes.values()[rank], axes.right(rank));
+        let (energy, axis) = (spectrum.values()[rank], spectrum.right(rank));
         for (row, a) in scatter.chunks_exact_mut(channels).zip(axis) {
             row.iter_mut().zip(axis).for_each(|(entry, b)| *entry -= energy * a * b);
         }
