@@ -276,6 +276,7 @@ impl PyTracker {
         Ok(self.settings.directions() - self.rank(py)?)
     }
 
+    #[doc = stub_doc!("Tracker.share")]
     #[getter]
     fn share(&self, py: Python<'_>) -> Option<f64> {
         self.inner.read(py, |inner| either!(inner, tracker => tracker.share()))
