@@ -359,7 +359,7 @@ class Tracker:
         Raises
         ------
         ValueError, TypeError
-            As `update`, naming the row; then nothing has been learned.
+            As `update`, naming the row; nothing has been learned, except the rows before one whose squares overflow.
         """
 
     def split(self, row: ArrayLike) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

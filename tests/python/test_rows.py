@@ -104,6 +104,12 @@ def test_a_column_that_was_not_learned_is_left_out_and_said():
     assert "'note'" in layout.said[0]
 
 
+@pytest.mark.parametrize("text", ["0\x1f", "1_000", "\u0661", "1\x0b"])
+def test_a_number_that_only_python_would_read_is_refused(text):
+    with pytest.raises(InputError, match=r"line 2, column 'flow': expected a number"):
+        values_of(f"flow,speed\n{text},1\n".encode())
+
+
 def test_an_ignored_column_of_text_is_not_read():
     table = table_of(b"flow,product,speed\n1,UHT,3\n")
     layout = arrange(table, ignored=["product"])

@@ -171,18 +171,18 @@ class DelimitedTable:
                 pass
             else:
                 # A sum that is not finite says that a cell may not be: then, and for 1_000, cell by cell.
-                if math.isfinite(sum(values)) and "_" not in "".join(texts):
+                if math.isfinite(sum(values)) and _is_plain("".join(texts)):
                     return values
         return [self._number(text, name, place) for text, name in zip(texts, channels, strict=True)]
 
     def _number(self, text: str, name: str, place: str) -> float:
-        text = text.strip()
+        text = text.strip(" \t")
         if text.lower() in GAPS:
             return math.nan
         place = f"{place}, column {shown(name)}"
         plain = text.replace(",", ".") if self.dialect.decimal == "," else text
         try:
-            value = float(plain) if plain.isascii() and "_" not in plain else None
+            value = float(plain) if _is_plain(plain) else None
         except ValueError:
             value = None
         if value is None:
@@ -205,6 +205,11 @@ class DelimitedTable:
 
 def _separator_of(header: str) -> str:
     return max(SEPARATORS, key=lambda each: (header.count(each), each == ","))
+
+
+def _is_plain(text: str) -> bool:
+    """Tell whether a number is written as people and loggers do: Python reads more, such as 1_000 and other scripts."""
+    return text.isascii() and text.isprintable() and "_" not in text
 
 
 def _is_number_or_gap(text: str) -> bool:
