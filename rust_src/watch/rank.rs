@@ -6,7 +6,7 @@
 //! each shifted in time by its own amount, move as before one by one but no longer together. The axes are taken off one after
 //! another, and what is left is compared with what is left, shifted; so a dominant axis does not hide the smaller ones.
 //! Channels that all follow the same day move together however they are shifted; partial correlations see through that
-//! ([`super::partial`]) and miss what is only weakly shared, so the larger of the two counts is taken.
+//! (`partial`) and miss what is only weakly shared, so the larger of the two counts is taken.
 //! After `k` axes the rows lie in `channels - k` dimensions but their shifted copies in all of them: their energy is
 //! raised by that ratio.
 

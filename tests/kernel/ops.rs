@@ -116,15 +116,33 @@ fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]
     let norm = u.iter().map(|x| x * x).sum::<f64>().sqrt().max(f64::MIN_POSITIVE);
     let unit: Vec<f64> = u.iter().map(|x| x / norm).collect();
     let before = q.clone();
+    // Along weights of its own the same sweep reflects what the weights make of the rows.
+    let along: Vec<f64> = unit.iter().map(|x| 0.5 - x).collect();
+    let mut other = q.clone();
+    let (rows, stride) = other.parts_mut();
+    path.reflect_along(rows, stride, count, &unit, &along, extra);
+    assert_reflected(&before, &other, extra, &unit, &along);
     let (rows, stride) = q.parts_mut();
     path.reflect(rows, stride, count, &unit, extra);
+    assert_reflected(&before, q, extra, &unit, &unit);
+}
+
+/// Each row less `2 unit_i g`, with `g` summed along `along`.
+fn assert_reflected<T: Scalar>(
+    before: &RowStore<T>,
+    after: &RowStore<T>,
+    extra: &[f64],
+    unit: &[f64],
+    along: &[f64],
+) {
+    let count = before.rows();
     for (column, &last) in extra.iter().enumerate() {
         let all: Vec<f64> = (0..count).map(|i| before.row(i)[column].to_f64()).chain([last]).collect();
-        let g: f64 = all.iter().zip(&unit).map(|(a, b)| a * b).sum();
-        let size = all.iter().map(|a| a.abs()).sum::<f64>();
+        let g: f64 = all.iter().zip(along).map(|(a, b)| a * b).sum();
+        let size = 2.0 * all.iter().map(|a| a.abs()).sum::<f64>();
         for index in 0..count {
             let plain = all[index] - 2.0 * unit[index] * g;
-            let got = q.row(index)[column].to_f64();
+            let got = after.row(index)[column].to_f64();
             assert!(
                 (got - plain).abs() <= slack(count, size) + 4.0 * T::EPSILON * size,
                 "{got} against {plain}"

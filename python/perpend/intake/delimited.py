@@ -12,6 +12,7 @@ from perpend.intake.opening import Opened
 from perpend.intake.row import Row
 from perpend.refusal import InputError, shown
 
+BLANKS = " \t\r\n"
 GAPS = frozenset({"", "nan", "na", "null"})
 SEPARATORS = {",": "comma", ";": "semicolon", "\t": "tab"}
 GROUPING = str.maketrans("", "", ",._' \u00a0\u202f")
@@ -176,7 +177,7 @@ class DelimitedTable:
         return [self._number(text, name, place) for text, name in zip(texts, channels, strict=True)]
 
     def _number(self, text: str, name: str, place: str) -> float:
-        text = text.strip(" \t")
+        text = text.strip(BLANKS)
         if text.lower() in GAPS:
             return math.nan
         place = f"{place}, column {shown(name)}"
@@ -213,7 +214,7 @@ def _is_plain(text: str) -> bool:
 
 
 def _is_number_or_gap(text: str) -> bool:
-    if text.strip().lower() in GAPS:
+    if text.strip(BLANKS).lower() in GAPS:
         return True
     try:
         float(text)
