@@ -87,12 +87,15 @@ impl Tridiagonal {
             .min_by(|&a, &b| self.gap_at(a, value).total_cmp(&self.gap_at(b, value)))
             .unwrap_or_default();
         let x = &mut self.vector[..size];
+        x.fill(0.0);
         x[twist] = 1.0;
         for row in (0..twist).rev() {
             x[row] = x[row + 1] * self.beside[row] / self.down[row];
+            keep_in_range(x, row);
         }
         for row in twist + 1..size {
             x[row] = x[row - 1] * self.beside[row - 1] / self.up[row];
+            keep_in_range(x, row);
         }
         let norm = x.iter().map(|entry| entry * entry).sum::<f64>().sqrt();
         for entry in x {
@@ -134,5 +137,19 @@ impl Tridiagonal {
     /// The pivot that remains where the two eliminations meet in `row`.
     fn gap_at(&self, row: usize, value: f64) -> f64 {
         (self.down[row] + self.up[row] - (value - self.diagonal[row])).abs()
+    }
+}
+
+/// Largest entry of a vector before it is normalized: its square and a step from it stay in range.
+const LARGEST_ENTRY: f64 = 1e100;
+
+/// Scales `x` down where its entry `row`, the one found last, has grown out of range: pivots near zero in a row, which
+/// eigenvalues that all but coincide bring, multiply.
+fn keep_in_range(x: &mut [f64], row: usize) {
+    if x[row].abs() > LARGEST_ENTRY {
+        let scale = x[row].abs().recip();
+        for entry in x {
+            *entry *= scale;
+        }
     }
 }

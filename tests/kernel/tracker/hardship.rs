@@ -153,3 +153,29 @@ fn orthonormality_holds_after_1e7_updates() {
     println!("worst |I - Q Q^T| at 2442 looks: {worst:e}");
     assert!(worst <= 1e-14, "{worst:e}");
 }
+
+#[test]
+fn rows_of_noise_alone_whose_directions_are_all_alike_leave_basis_and_trace_sound() {
+    for (channels, rank) in [(2000, 20), (500, 20), (200, 3), (64, 6)] {
+        let mut noise = Noise(77);
+        let mut tracker = Tracker::<f64>::new(Settings::new(channels, rank)).unwrap();
+        let (mut mean, mut scatter) = (vec![0.0; channels], 0.0);
+        for count in 0..150_u32 {
+            // Sums of six uniform numbers: all directions of nearly the same energy.
+            let row: Vec<f64> = (0..channels).map(|_| (0..6).map(|_| noise.next()).sum()).collect();
+            assert!(tracker.update(&row, 1.0).unwrap().learned());
+            let share = f64::from(count) / f64::from(count + 1);
+            for (mean, value) in mean.iter_mut().zip(&row) {
+                scatter += share * (value - *mean).powi(2);
+                *mean += (value - *mean) / f64::from(count + 1);
+            }
+        }
+        assert!(tracker.orthogonality_error().unwrap() <= 1e-14, "{channels} x {rank}");
+        tracker.refresh().unwrap();
+        let total = tracker.total_energy() * tracker.total_weight();
+        assert!(
+            (total - scatter).abs() <= 1e3 * EPS * scatter,
+            "{channels} x {rank}: {total} against {scatter}"
+        );
+    }
+}
