@@ -95,7 +95,7 @@ impl fmt::Display for Error {
                 write!(f, "{what} differs: expected {expected}, got {got}")
             }
             Self::InRow { row, source } => write!(f, "row {row}: {source}"),
-            Self::State { what } => write!(f, "state: {what}"),
+            Self::State { what } => f.write_str(what),
             Self::NoConvergence { what } => write!(f, "{what} did not converge"),
         }
     }
