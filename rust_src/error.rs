@@ -59,6 +59,11 @@ pub enum Error {
         /// What was wrong with it.
         source: Box<Error>,
     },
+    /// Bytes are no state of the object asked for, or an object has a state that cannot be written.
+    State {
+        /// What is wrong: where, what was expected, what was found.
+        what: String,
+    },
     /// A small decomposition did not converge; kept apart because it would be a defect, never the caller's.
     NoConvergence {
         /// Which decomposition.
@@ -90,6 +95,7 @@ impl fmt::Display for Error {
                 write!(f, "{what} differs: expected {expected}, got {got}")
             }
             Self::InRow { row, source } => write!(f, "row {row}: {source}"),
+            Self::State { what } => f.write_str(what),
             Self::NoConvergence { what } => write!(f, "{what} did not converge"),
         }
     }

@@ -25,6 +25,7 @@ pub mod ops;
 mod orthonormal;
 mod rows;
 mod scalar;
+pub mod state;
 pub mod tracker;
 pub mod watch;
 
@@ -37,4 +38,5 @@ pub use error::Error;
 pub use orthonormal::orthogonality_error;
 pub use rows::{RowStore, Rows};
 pub use scalar::Scalar;
+pub use state::State;
 pub use tracker::Tracker;

@@ -33,7 +33,7 @@ pub fn orthogonality_error<T: Scalar>(q: Rows<'_, T>) -> Result<f64, Error> {
 /// Room to mend a row.
 #[derive(Clone, Debug)]
 pub(crate) struct Mender {
-    /// The row whose turn is next.
+    /// The row whose turn was last.
     turn: usize,
     h: Vec<f64>,
     s: Vec<f64>,
@@ -44,6 +44,16 @@ impl Mender {
     /// Room for `count` rows of `dim` entries.
     pub fn with_room(count: usize, dim: usize) -> Self {
         Self { turn: 0, h: Vec::with_capacity(count), s: Vec::with_capacity(count), w: vec![0.0; dim] }
+    }
+
+    /// The row measured last: the state of the mender, the rest is room.
+    pub fn turn(&self) -> usize {
+        self.turn
+    }
+
+    /// Goes on after row `turn`.
+    pub fn go_on_after(&mut self, turn: usize) {
+        self.turn = turn;
     }
 
     /// Measures one of the first `count` rows, the next in turn, against the others, and makes it orthonormal to

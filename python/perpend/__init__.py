@@ -8,6 +8,6 @@ The kernel is compiled. `kernel_path` names the instruction set it uses, which t
 ``PERPEND_KERNEL`` can force.
 """
 
-from perpend._core import Basis, Reading, Step, Tracker, Watch, __version__, kernel_path
+from perpend._core import Basis, Reading, StateError, Step, Tracker, Watch, __version__, kernel_path
 
-__all__ = ["Basis", "Reading", "Step", "Tracker", "Watch", "__version__", "kernel_path"]
+__all__ = ["Basis", "Reading", "StateError", "Step", "Tracker", "Watch", "__version__", "kernel_path"]

@@ -1,10 +1,12 @@
+import os
 from collections.abc import Sequence
 from typing import Any, Literal, TypedDict, final
 
 import numpy as np
 from numpy.typing import ArrayLike, DTypeLike, NDArray
+from typing_extensions import Buffer
 
-__all__ = ["Basis", "Reading", "Step", "Tracker", "Watch", "__version__", "kernel_path"]
+__all__ = ["Basis", "Reading", "StateError", "Step", "Tracker", "Watch", "__version__", "kernel_path"]
 
 __version__: str
 
@@ -15,6 +17,12 @@ def kernel_path() -> Literal["avx512", "avx2", "neon", "portable"]:
     -------
     str
         The widest set the processor has, or the one the environment variable ``PERPEND_KERNEL`` names.
+    """
+
+class StateError(ValueError):
+    """Bytes or a file hold no state of the object asked for.
+
+    They are cut off, changed, of another class, or of a later release; the message says which.
     """
 
 @final
@@ -212,6 +220,82 @@ class Basis:
 
     def __copy__(self) -> Basis: ...
     def __deepcopy__(self, _memo: object, /) -> Basis: ...
+    def to_bytes(self) -> bytes:
+        """Give the state as bytes: all that what the basis does next depends on.
+
+        A safetensors container, which any reader of that format opens: ``basis.vectors`` and ``basis.triangular``,
+        settings and counters in the metadata.
+        The same state gives the same bytes.
+
+        Returns
+        -------
+        bytes
+            About as long as the arrays; as much again is taken while they are made.
+
+        Raises
+        ------
+        StateError
+            Where a number has grown beyond the finite ones.
+        """
+
+    @classmethod
+    def from_bytes(cls, data: Buffer) -> Basis:
+        """Make the basis whose state `to_bytes` gave; on the same kernel path it goes on bit for bit.
+
+        Sizes, checksum, finiteness, ranges, triangularity and orthonormality are checked. Takes a small multiple of the
+        length of the data, whatever the data says, and the time of one `orthogonality_error`.
+
+        Parameters
+        ----------
+        data : bytes-like
+            Neither modified nor kept.
+
+        Raises
+        ------
+        StateError
+            Where `data` is anything else: the message says what is wrong.
+        TypeError
+            Where it has no bytes.
+        """
+
+    def save(self, path: str | os.PathLike[str]) -> None:
+        """Write the state to a file, at once and for good.
+
+        The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
+        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
+        meanwhile.
+
+        Parameters
+        ----------
+        path : path-like
+            A file, to be made or replaced; where it is a link, what that points to.
+
+        Raises
+        ------
+        OSError
+            Where it cannot be written; the old file is then as it was.
+        StateError
+            As `to_bytes`.
+        """
+
+    @classmethod
+    def load(cls, path: str | os.PathLike[str]) -> Basis:
+        """Make the basis whose state a file holds; as `from_bytes`.
+
+        Parameters
+        ----------
+        path : path-like
+            What `save` wrote, in this release or an earlier one.
+
+        Raises
+        ------
+        StateError
+            Where the file holds anything else.
+        OSError
+            Where it cannot be read.
+        """
+
+    def __reduce__(self) -> tuple[Any, ...]: ...
     def drop(self, index: int) -> None:
         """Forget an accepted vector; basis and triangular factor hold for the rest.
 
@@ -434,6 +518,82 @@ class Tracker:
 
     def __copy__(self) -> Tracker: ...
     def __deepcopy__(self, _memo: object, /) -> Tracker: ...
+    def to_bytes(self) -> bytes:
+        """Give the state as bytes: all that what the tracker does next depends on.
+
+        A safetensors container, which any reader of that format opens: ``tracker.mean``, ``tracker.axes``,
+        ``tracker.energies``, ``tracker.directions`` and their factor, settings and counters in the metadata.
+        The same state gives the same bytes.
+
+        Returns
+        -------
+        bytes
+            About as long as the arrays; as much again is taken while they are made.
+
+        Raises
+        ------
+        StateError
+            Where a number has grown beyond the finite ones.
+        """
+
+    @classmethod
+    def from_bytes(cls, data: Buffer) -> Tracker:
+        """Make the tracker whose state `to_bytes` gave; on the same kernel path it goes on bit for bit.
+
+        Sizes, checksum, finiteness, ranges, triangularity and orthonormality are checked. Takes a small multiple of the
+        length of the data, whatever the data says, and the time of one `orthogonality_error`.
+
+        Parameters
+        ----------
+        data : bytes-like
+            Neither modified nor kept.
+
+        Raises
+        ------
+        StateError
+            Where `data` is anything else: the message says what is wrong.
+        TypeError
+            Where it has no bytes.
+        """
+
+    def save(self, path: str | os.PathLike[str]) -> None:
+        """Write the state to a file, at once and for good.
+
+        The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
+        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
+        meanwhile.
+
+        Parameters
+        ----------
+        path : path-like
+            A file, to be made or replaced; where it is a link, what that points to.
+
+        Raises
+        ------
+        OSError
+            Where it cannot be written; the old file is then as it was.
+        StateError
+            As `to_bytes`.
+        """
+
+    @classmethod
+    def load(cls, path: str | os.PathLike[str]) -> Tracker:
+        """Make the tracker whose state a file holds; as `from_bytes`.
+
+        Parameters
+        ----------
+        path : path-like
+            What `save` wrote, in this release or an earlier one.
+
+        Raises
+        ------
+        StateError
+            Where the file holds anything else.
+        OSError
+            Where it cannot be read.
+        """
+
+    def __reduce__(self) -> tuple[Any, ...]: ...
     @property
     def axes(self) -> NDArray[np.float64] | NDArray[np.float32]:
         """Principal axes, shape (rank, channels), a copy; signs and order held from call to call."""

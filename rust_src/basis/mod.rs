@@ -12,6 +12,7 @@ mod drop;
 mod grow;
 mod orthogonalize;
 mod solve;
+mod state;
 mod triangular;
 
 pub use block::BLOCK_ROWS;
@@ -81,27 +82,18 @@ impl<T: Scalar> Basis<T> {
     /// [`Error::Parameter`] where `dim` is 0, `capacity` exceeds it, or a tolerance is negative or not a number;
     /// [`Error::Memory`].
     pub fn new(dim: usize, capacity: Option<usize>, tolerance: Option<Tolerance>) -> Result<Self, Error> {
-        if dim == 0 {
-            return Err(Error::Parameter { name: "dim", expected: "at least 1".into(), got: "0".into() });
-        }
-        if let Some(capacity) = capacity.filter(|&capacity| capacity > dim) {
-            return Err(Error::Parameter {
-                name: "capacity",
-                expected: format!("at most dim = {dim}: no more vectors can be independent"),
-                got: capacity.to_string(),
-            });
-        }
         let tolerance = tolerance.unwrap_or_else(|| Tolerance::of_rounding::<T>(dim));
-        for (name, value) in [("tolerance", tolerance.relative), ("absolute tolerance", tolerance.absolute)] {
-            if !(value >= 0.0 && value.is_finite()) {
-                return Err(Error::Parameter {
-                    name,
-                    expected: "a finite number, 0 or more".into(),
-                    got: value.to_string(),
-                });
-            }
-        }
-        let room = capacity.unwrap_or(FIRST_ROWS.min(dim));
+        check_settings(dim, capacity, tolerance)?;
+        Self::with_room(dim, capacity, tolerance, capacity.unwrap_or(FIRST_ROWS.min(dim)))
+    }
+
+    /// An empty basis with room for `room` vectors, made of settings that have been checked.
+    fn with_room(
+        dim: usize,
+        capacity: Option<usize>,
+        tolerance: Tolerance,
+        room: usize,
+    ) -> Result<Self, Error> {
         // Rows, triangle and workspace.
         check_room(dim.saturating_add(room), room.saturating_add(4))?;
         Ok(Self {
@@ -180,8 +172,32 @@ impl<T: Scalar> Basis<T> {
     /// Makes room for one row more.
     fn make_room(&mut self) {
         if self.rank == self.q.rows() {
-            let room = (2 * self.rank).max(FIRST_ROWS).min(self.dim());
+            let room = (2 * self.rank).max(FIRST_ROWS).min(self.capacity());
             self.q.grow(room);
         }
     }
+}
+
+/// Checks the ranges of what a basis is made with.
+fn check_settings(dim: usize, capacity: Option<usize>, tolerance: Tolerance) -> Result<(), Error> {
+    if dim == 0 {
+        return Err(Error::Parameter { name: "dim", expected: "at least 1".into(), got: "0".into() });
+    }
+    if let Some(capacity) = capacity.filter(|&capacity| capacity > dim) {
+        return Err(Error::Parameter {
+            name: "capacity",
+            expected: format!("at most dim = {dim}: no more vectors can be independent"),
+            got: capacity.to_string(),
+        });
+    }
+    for (name, value) in [("tolerance", tolerance.relative), ("absolute tolerance", tolerance.absolute)] {
+        if !(value >= 0.0 && value.is_finite()) {
+            return Err(Error::Parameter {
+                name,
+                expected: "a finite number, 0 or more".into(),
+                got: value.to_string(),
+            });
+        }
+    }
+    Ok(())
 }

@@ -2,10 +2,12 @@
 
 use numpy::PyArray1;
 use pyo3::prelude::*;
+use pyo3::types::{PyBytes, PyType};
 
 use super::convert::{Array1, Array2, Count, Stored, array_of_rows, block, matrix, row};
 use super::errors::fenced;
 use super::guarded::Guarded;
+use super::state::{self, kept};
 use super::step::Step;
 use crate::Scalar;
 use crate::basis::{Basis, Tolerance};
@@ -27,6 +29,8 @@ macro_rules! either {
     };
 }
 
+kept!(Inner);
+
 #[doc = stub_doc!("Basis")]
 #[pyclass(frozen, module = "perpend", name = "Basis")]
 pub(super) struct PyBasis {
@@ -43,6 +47,12 @@ enum ToleranceArgument {
 /// Makes a basis of one type.
 fn make<T: Scalar>(dim: usize, capacity: Option<usize>, tolerance: Option<Tolerance>) -> PyResult<Basis<T>> {
     fenced(|| Basis::new(dim, capacity, tolerance))
+}
+
+impl PyBasis {
+    fn around(inner: Inner) -> Self {
+        Self { inner: Guarded::new(inner) }
+    }
 }
 
 #[pymethods]
@@ -67,7 +77,7 @@ impl PyBasis {
             Stored::Float64 => Inner::Float64(make(dim, capacity, tolerance)?),
             Stored::Float32 => Inner::Float32(make(dim, capacity, tolerance)?),
         };
-        Ok(Self { inner: Guarded::new(inner) })
+        Ok(Self::around(inner))
     }
 
     #[doc = stub_doc!("Basis.add")]
@@ -154,7 +164,7 @@ impl PyBasis {
     }
 
     fn __copy__(&self, py: Python<'_>) -> Self {
-        Self { inner: Guarded::new(self.inner.read(py, Inner::clone)) }
+        Self::around(self.inner.read(py, Inner::clone))
     }
 
     fn __deepcopy__(&self, py: Python<'_>, _memo: &Bound<'_, PyAny>) -> Self {
@@ -164,6 +174,32 @@ impl PyBasis {
     #[doc = stub_doc!("Basis.copy")]
     fn copy(&self, py: Python<'_>) -> Self {
         self.__copy__(py)
+    }
+
+    #[doc = stub_doc!("Basis.to_bytes")]
+    fn to_bytes<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyBytes>> {
+        Ok(PyBytes::new(py, &state::to_bytes(py, &self.inner)?))
+    }
+
+    #[doc = stub_doc!("Basis.from_bytes")]
+    #[classmethod]
+    fn from_bytes(_class: &Bound<'_, PyType>, data: &Bound<'_, PyAny>) -> PyResult<Self> {
+        Ok(Self::around(state::from_bytes(data)?))
+    }
+
+    #[doc = stub_doc!("Basis.save")]
+    fn save(&self, path: &Bound<'_, PyAny>) -> PyResult<()> {
+        state::save(&self.inner, path)
+    }
+
+    #[doc = stub_doc!("Basis.load")]
+    #[classmethod]
+    fn load(_class: &Bound<'_, PyType>, path: &Bound<'_, PyAny>) -> PyResult<Self> {
+        Ok(Self::around(state::load(path)?))
+    }
+
+    fn __reduce__<'py>(slf: &Bound<'py, Self>) -> PyResult<(Bound<'py, PyAny>, (Bound<'py, PyBytes>,))> {
+        Ok((slf.get_type().getattr("from_bytes")?, (slf.get().to_bytes(slf.py())?,)))
     }
 
     #[doc = stub_doc!("Basis.drop")]

@@ -2,10 +2,17 @@
 
 use std::panic::{AssertUnwindSafe, catch_unwind};
 
-use pyo3::PyErr;
 use pyo3::exceptions::{PyMemoryError, PyRuntimeError, PyValueError};
+use pyo3::{PyErr, create_exception};
 
 use crate::Error;
+
+create_exception!(
+    perpend,
+    StateError,
+    PyValueError,
+    "Bytes or a file hold no state of the object asked for: cut off, changed, of another class, or of a later release."
+);
 
 impl From<Error> for PyErr {
     fn from(error: Error) -> Self {
@@ -17,6 +24,7 @@ impl From<Error> for PyErr {
             | Error::Parameter { .. }
             | Error::Unlike { .. }
             | Error::InRow { .. } => PyValueError::new_err(message),
+            Error::State { .. } => StateError::new_err(message),
             Error::Memory { .. } => PyMemoryError::new_err(message),
             Error::NoConvergence { .. } => PyRuntimeError::new_err(message),
         }

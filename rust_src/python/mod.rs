@@ -13,6 +13,8 @@ mod convert;
 mod errors;
 mod guarded;
 mod reading;
+mod saving;
+mod state;
 mod step;
 mod tracker;
 mod watch;
@@ -20,11 +22,12 @@ mod watch;
 use pyo3::prelude::*;
 
 use crate::ops::Path;
+use errors::StateError;
 
 /// The kernel of perpend.
 #[pymodule]
 mod _core {
-    use super::{Bound, Path, PyModule, PyModuleMethods, PyResult, pyfunction};
+    use super::{Bound, Path, PyModule, PyModuleMethods, PyResult, StateError, pyfunction};
 
     #[pymodule_export]
     use super::basis::PyBasis;
@@ -47,6 +50,7 @@ mod _core {
     #[pymodule_init]
     fn init(module: &Bound<'_, PyModule>) -> PyResult<()> {
         Path::requested()?;
+        module.add("StateError", module.py().get_type::<StateError>())?;
         module.add("__version__", env!("CARGO_PKG_VERSION"))
     }
 }

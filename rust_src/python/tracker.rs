@@ -2,10 +2,12 @@
 
 use numpy::PyArray1;
 use pyo3::prelude::*;
+use pyo3::types::{PyBytes, PyType};
 
 use super::convert::{Array1, Count, Stored, array_of_rows, block, row};
 use super::errors::fenced;
 use super::guarded::Guarded;
+use super::state::{self, kept};
 use crate::Error;
 use crate::tracker::{Settings, Tracker};
 
@@ -26,6 +28,8 @@ macro_rules! either {
     };
 }
 
+kept!(Inner);
+
 #[doc = stub_doc!("Tracker")]
 #[pyclass(frozen, module = "perpend", name = "Tracker")]
 pub(super) struct PyTracker {
@@ -41,6 +45,11 @@ struct Parts {
 }
 
 impl PyTracker {
+    fn around(inner: Inner) -> Self {
+        let settings = either!(&inner, tracker => *tracker.settings());
+        Self { inner: Guarded::new(inner), settings }
+    }
+
     /// Splits a row, with fresh room for the answer.
     fn parts(&self, object: &Bound<'_, PyAny>) -> PyResult<Parts> {
         let row = row(object)?;
@@ -95,7 +104,7 @@ impl PyTracker {
             }
             Ok(inner)
         })?;
-        Ok(Self { inner: Guarded::new(inner), settings })
+        Ok(Self::around(inner))
     }
 
     #[doc = stub_doc!("Tracker.update")]
@@ -190,7 +199,7 @@ impl PyTracker {
 
     #[doc = stub_doc!("Tracker.copy")]
     fn copy(&self, py: Python<'_>) -> Self {
-        Self { inner: Guarded::new(self.inner.read(py, Inner::clone)), settings: self.settings }
+        Self::around(self.inner.read(py, Inner::clone))
     }
 
     fn __copy__(&self, py: Python<'_>) -> Self {
@@ -199,6 +208,32 @@ impl PyTracker {
 
     fn __deepcopy__(&self, py: Python<'_>, _memo: &Bound<'_, PyAny>) -> Self {
         self.copy(py)
+    }
+
+    #[doc = stub_doc!("Tracker.to_bytes")]
+    fn to_bytes<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyBytes>> {
+        Ok(PyBytes::new(py, &state::to_bytes(py, &self.inner)?))
+    }
+
+    #[doc = stub_doc!("Tracker.from_bytes")]
+    #[classmethod]
+    fn from_bytes(_class: &Bound<'_, PyType>, data: &Bound<'_, PyAny>) -> PyResult<Self> {
+        Ok(Self::around(state::from_bytes(data)?))
+    }
+
+    #[doc = stub_doc!("Tracker.save")]
+    fn save(&self, path: &Bound<'_, PyAny>) -> PyResult<()> {
+        state::save(&self.inner, path)
+    }
+
+    #[doc = stub_doc!("Tracker.load")]
+    #[classmethod]
+    fn load(_class: &Bound<'_, PyType>, path: &Bound<'_, PyAny>) -> PyResult<Self> {
+        Ok(Self::around(state::load(path)?))
+    }
+
+    fn __reduce__<'py>(slf: &Bound<'py, Self>) -> PyResult<(Bound<'py, PyAny>, (Bound<'py, PyBytes>,))> {
+        Ok((slf.get_type().getattr("from_bytes")?, (slf.get().to_bytes(slf.py())?,)))
     }
 
     #[doc = stub_doc!("Tracker.axes")]

@@ -24,6 +24,14 @@ impl Factor {
         Self { entries: vec![0.0; limit * limit], stride: limit, size: 0 }
     }
 
+    /// Takes a triangle of order `size`, within the room, given row-major.
+    pub(super) fn restore(&mut self, size: usize, square: &[f64]) {
+        self.size = size;
+        for (row, entries) in square.chunks_exact(size.max(1)).enumerate() {
+            self.entries[row * self.stride..][..size].copy_from_slice(entries);
+        }
+    }
+
     /// Rows, which are also columns.
     pub(super) fn size(&self) -> usize {
         self.size

@@ -12,16 +12,16 @@ const EVEN: f64 = 1e-12;
 /// Mean of each channel and the weights it rests on.
 #[derive(Clone, Debug)]
 pub(super) struct Mean {
-    high: Vec<f64>,
-    low: Vec<f64>,
+    pub(super) high: Vec<f64>,
+    pub(super) low: Vec<f64>,
     /// Sum of the weights of all rows.
-    total: f64,
+    pub(super) total: f64,
     /// Sum of the weights of the rows since the channel was first seen; of no meaning while `even`.
-    seen: Vec<f64>,
+    pub(super) seen: Vec<f64>,
     /// Whether every channel has the weight `total`.
-    even: bool,
+    pub(super) even: bool,
     /// Whether a mean is taken off at all.
-    center: bool,
+    pub(super) center: bool,
 }
 
 /// What a row adds: the scale of its delta, and the step of the mean.

@@ -27,6 +27,7 @@ mod rank;
 mod settings;
 mod smallest;
 mod split;
+mod state;
 mod subspace;
 mod tridiagonal;
 mod update;

@@ -12,28 +12,28 @@ use crate::scalar::Scalar;
 /// Axes and energies as of the last refresh.
 #[derive(Clone, Debug)]
 pub(super) struct Principal<T> {
-    axes: RowStore<T>,
-    fresh: RowStore<T>,
-    count: usize,
-    rank: Rank,
-    stale: bool,
+    pub(super) axes: RowStore<T>,
+    pub(super) fresh: RowStore<T>,
+    pub(super) count: usize,
+    pub(super) rank: Rank,
+    pub(super) stale: bool,
     /// Energies of all directions tracked.
-    energies: Vec<f64>,
+    pub(super) energies: Vec<f64>,
     /// Energy of all channels.
-    total: f64,
+    pub(super) total: f64,
     /// Energy given up by truncation.
-    lost: f64,
-    svd: Workspace,
-    matrix: Vec<f64>,
-    weights: Vec<f64>,
-    overlap: Vec<f64>,
-    zeros: Vec<f64>,
-    axis: Vec<f64>,
+    pub(super) lost: f64,
+    pub(super) svd: Workspace,
+    pub(super) matrix: Vec<f64>,
+    pub(super) weights: Vec<f64>,
+    pub(super) overlap: Vec<f64>,
+    pub(super) zeros: Vec<f64>,
+    pub(super) axis: Vec<f64>,
 }
 
 /// Room for the decomposition, and the size it was made for; a copy makes its own when it needs it.
 #[derive(Default)]
-struct Workspace(Option<(usize, Svd)>);
+pub(super) struct Workspace(Option<(usize, Svd)>);
 
 impl Clone for Workspace {
     fn clone(&self) -> Self {

@@ -9,9 +9,9 @@ const SLACK: f64 = 0.2;
 /// The number of axes reported.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct Rank {
-    share: Option<f64>,
-    most: usize,
-    reported: usize,
+    pub(super) share: Option<f64>,
+    pub(super) most: usize,
+    pub(super) reported: usize,
 }
 
 impl Rank {

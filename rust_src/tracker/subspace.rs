@@ -23,21 +23,21 @@ const NOTHING: f64 = 1e-300;
 /// Basis and factor, with room for one direction more than is kept.
 #[derive(Clone, Debug)]
 pub(super) struct Subspace<T> {
-    q: RowStore<T>,
-    limit: usize,
-    factor: Factor,
-    smallest: Smallest,
+    pub(super) q: RowStore<T>,
+    pub(super) limit: usize,
+    pub(super) factor: Factor,
+    pub(super) smallest: Smallest,
     /// Sum of the squared singular values given up, forgotten at the same rate as the rest.
-    lost: f64,
-    mender: Mender,
+    pub(super) lost: f64,
+    pub(super) mender: Mender,
     /// Directions given up so far.
-    cuts: u64,
-    h: Vec<f64>,
-    s: Vec<f64>,
-    correction: Vec<f64>,
-    w: Vec<f64>,
-    along: Vec<f64>,
-    image: Vec<f64>,
+    pub(super) cuts: u64,
+    pub(super) h: Vec<f64>,
+    pub(super) s: Vec<f64>,
+    pub(super) correction: Vec<f64>,
+    pub(super) w: Vec<f64>,
+    pub(super) along: Vec<f64>,
+    pub(super) image: Vec<f64>,
 }
 
 impl<T: Scalar> Subspace<T> {
