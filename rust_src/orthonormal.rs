@@ -30,6 +30,21 @@ pub fn orthogonality_error<T: Scalar>(q: Rows<'_, T>) -> Result<f64, Error> {
     Ok(svd.values().first().copied().unwrap_or(0.0))
 }
 
+/// Frobenius norm of `I - Q Q^T`: the spectral norm or more, and at most `sqrt(count)` times it. `2 count^2 dim` flops and
+/// no decomposition; room for a row.
+pub(crate) fn orthogonality_bound<T: Scalar>(q: Rows<'_, T>) -> f64 {
+    let mut row = vec![0.0; q.dim()];
+    let mut products = vec![0.0; q.count()];
+    let mut squares = 0.0;
+    for (index, entries) in q.iter().enumerate() {
+        row.iter_mut().zip(entries).for_each(|(target, value)| *target = value.to_f64());
+        ops::project(q, &row, &mut products);
+        products[index] -= 1.0;
+        squares += products.iter().map(|product| product * product).sum::<f64>();
+    }
+    squares.sqrt()
+}
+
 /// Room to mend a row.
 #[derive(Clone, Debug)]
 pub(crate) struct Mender {
