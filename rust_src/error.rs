@@ -79,6 +79,17 @@ impl Error {
     }
 }
 
+impl Error {
+    /// The same error, `rows` further down: where the rows it counts are a piece of more.
+    #[must_use]
+    pub fn further_down(self, rows: usize) -> Self {
+        match self {
+            Self::InRow { row, source } => Self::InRow { row: row + rows, source },
+            other => other,
+        }
+    }
+}
+
 impl fmt::Display for Error {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
@@ -88,7 +99,7 @@ impl fmt::Display for Error {
             Self::NonFinite { what, index, value } => {
                 write!(f, "{what}: expected finite entries, got {value} at index {index}")
             }
-            Self::Overflow { what } => write!(f, "{what}: its norm exceeds the largest float64"),
+            Self::Overflow { what } => write!(f, "{what}: exceeds the largest float64"),
             Self::Memory { bytes } => write!(f, "{bytes:.3e} bytes of memory cannot be had"),
             Self::Parameter { name, expected, got } => write!(f, "{name}: expected {expected}, got {got}"),
             Self::Unlike { what, expected, got } => {

@@ -58,6 +58,11 @@ def main(argv: Sequence[str] | None = None) -> int:
     """
     arguments = list(sys.argv[1:] if argv is None else argv)
     called = " ".join(["perpend", *(name for name in arguments[:1] if name in ("demo", "watch", "bench"))])
+    # Closed by whoever started it: what is said there goes nowhere, for as long as the process lasts.
+    if sys.stdout is None:
+        sys.stdout = open(os.devnull, "w")  # noqa: SIM115
+    if sys.stderr is None:
+        sys.stderr = open(os.devnull, "w")  # noqa: SIM115
     try:
         code = _dispatch(arguments)
         sys.stdout.flush()

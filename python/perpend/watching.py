@@ -173,8 +173,8 @@ def _make_watch(channels: list[str], request: WatchRequest, table: Table) -> Wat
         raise InputError(f"--rank: expected 1 to {len(channels) - 1} for {len(channels)} channels, got {rank}")
     try:
         return Watch(len(channels), channels, **request.settings)
-    except ValueError as error:
-        raise InputError(str(error), table.label) from None
+    except (ValueError, MemoryError) as error:
+        raise InputError(f"{error}; perpend watch --help says more") from None
 
 
 def _keep_input(request: WatchRequest) -> None:
@@ -184,6 +184,12 @@ def _keep_input(request: WatchRequest) -> None:
                 continue
             if Path(target).exists() and Path(name).exists() and Path(target).samefile(name):
                 raise InputError(f"{option}: this would overwrite the input; give another name", target)
+    if None not in (request.readings, request.report) and _same(str(request.readings), str(request.report)):
+        raise InputError("--report: this would overwrite the readings; give another name", request.report)
+
+
+def _same(one: str, other: str) -> bool:
+    return Path(one).resolve() == Path(other).resolve()
 
 
 def _guesses(table: Table) -> list[str]:

@@ -89,7 +89,11 @@ impl<T: Scalar> Basis<T> {
     pub(super) fn reason(&self, norm: f64, residual_norm: f64, threshold: f64, loss: f64) -> Option<Reason> {
         if norm == 0.0 {
             Some(Reason::Zero)
-        } else if residual_norm <= threshold || residual_norm == 0.0 || loss > UNCLEAN {
+        } else if residual_norm == 0.0
+            || residual_norm <= threshold
+            || !(loss <= UNCLEAN && residual_norm.is_finite())
+        {
+            // The last also keeps out what is no number: vectors that another thread wrote to after they were checked.
             Some(Reason::Dependent)
         } else if self.rank == self.capacity() {
             Some(Reason::Full)

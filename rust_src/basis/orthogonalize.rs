@@ -195,7 +195,7 @@ pub(super) fn check(v: &[f64]) -> Result<(), Error> {
 }
 
 /// Binary exponent of the largest entry; None where all are zero.
-fn exponent_of_largest(v: &[f64]) -> Result<Option<i32>, Error> {
+pub(super) fn exponent_of_largest(v: &[f64]) -> Result<Option<i32>, Error> {
     let mut largest = 0.0_f64;
     for (index, &value) in v.iter().enumerate() {
         if !value.is_finite() {

@@ -1,6 +1,7 @@
 //! Least squares on the accepted vectors.
 
 use super::Basis;
+use super::orthogonalize::{exponent_of_largest, times_power};
 use crate::dense::Svd;
 use crate::error::Error;
 use crate::scalar::Scalar;
@@ -38,10 +39,21 @@ impl<T: Scalar> Basis<T> {
     /// [`Error::NoConvergence`], never seen.
     pub fn condition(&self) -> Result<f64, Error> {
         let mut svd = Svd::new(self.rank, self.rank);
-        svd.decompose(&self.r.to_dense())?;
+        svd.decompose(&in_range(self.r.to_dense()))?;
         Ok(match (svd.values().first(), svd.values().last()) {
             (Some(largest), Some(smallest)) => largest / smallest,
             _ => 1.0,
         })
     }
+}
+
+/// The matrix times the power of two that brings its largest entry near 1: its condition is the same, and its squares
+/// neither overflow nor vanish.
+fn in_range(mut matrix: Vec<f64>) -> Vec<f64> {
+    if let Ok(Some(exponent)) = exponent_of_largest(&matrix) {
+        for entry in &mut matrix {
+            *entry = times_power(*entry, -exponent);
+        }
+    }
+    matrix
 }

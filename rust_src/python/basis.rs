@@ -9,8 +9,8 @@ use super::errors::fenced;
 use super::guarded::Guarded;
 use super::state::{self, kept};
 use super::step::Step;
-use crate::Scalar;
 use crate::basis::{Basis, Tolerance};
+use crate::{Error, Scalar};
 
 /// A basis in one of the stored types.
 #[derive(Clone)]
@@ -120,12 +120,11 @@ impl PyBasis {
         let (entries, count) = block.of(self.dim(py))?;
         self.inner.with(py, |inner| either!(inner, basis => basis.check_rows(entries)))?;
         let mut steps = Vec::with_capacity(count);
-        for piece in block.pieces(entries) {
-            py.detach(|| {
-                self.inner.alone(|inner| either!(inner, basis => basis.add_rows(piece, &mut steps)))
-            })?;
-            py.check_signals()?;
-        }
+        self.inner.in_pieces(
+            py,
+            block.pieces(entries),
+            |inner, piece| either!(inner, basis => basis.add_rows(piece, &mut steps)),
+        )?;
         let accepted = steps.iter().map(crate::basis::Step::accepted).collect();
         let norms = steps.iter().map(|step| step.residual_norm).collect();
         Ok((PyArray1::from_vec(py, accepted), PyArray1::from_vec(py, norms)))
@@ -137,18 +136,24 @@ impl PyBasis {
         let block = block(rows)?;
         let dim = self.dim(py);
         let (entries, count) = block.of(dim)?;
-        let (mut coefficients, mut residuals) = (Vec::new(), Vec::with_capacity(entries.len()));
-        for (index, row) in entries.chunks_exact(dim).enumerate() {
-            self.inner.with(py, |inner| {
-                either!(inner, basis => {
+        let rank = self.rank(py);
+        let mut coefficients = Vec::with_capacity(count * rank);
+        let mut residuals = Vec::with_capacity(entries.len());
+        self.inner.in_pieces(py, block.pieces(entries), |inner, piece| {
+            either!(inner, basis => {
+                if basis.rank() != rank {
+                    // Another thread had its turn between two pieces.
+                    let (expected, got) = (rank.to_string(), basis.rank().to_string());
+                    return Err(Error::Unlike { what: "rank of the rows before", expected, got });
+                }
+                for (index, row) in piece.chunks_exact(dim).enumerate() {
                     basis.split(row).map_err(|error| error.in_row(index))?;
                     coefficients.extend_from_slice(basis.coefficients());
                     residuals.extend_from_slice(basis.residual());
-                    Ok(())
-                })
-            })?;
-        }
-        let rank = coefficients.len().checked_div(count).unwrap_or_else(|| self.rank(py));
+                }
+                Ok(())
+            })
+        })?;
         Ok((matrix(py, coefficients, count, rank)?, matrix(py, residuals, count, dim)?))
     }
 

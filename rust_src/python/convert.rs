@@ -72,10 +72,11 @@ impl Block<'_> {
     }
 
     /// The entries in pieces of whole rows, short enough to look for signals between them.
-    pub fn pieces<'a>(&self, entries: &'a [f64]) -> impl Iterator<Item = &'a [f64]> + use<'a> {
+    /// Each comes with the index of its first row.
+    pub fn pieces<'a>(&self, entries: &'a [f64]) -> impl Iterator<Item = (usize, &'a [f64])> + use<'a> {
         let width = self.0.as_array().dim().1.max(1);
         let rows = (PIECE / width).next_multiple_of(crate::basis::BLOCK_ROWS).max(crate::basis::BLOCK_ROWS);
-        entries.chunks(rows * width)
+        entries.chunks(rows * width).enumerate().map(move |(index, piece)| (index * rows, piece))
     }
 }
 

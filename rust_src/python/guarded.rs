@@ -28,6 +28,26 @@ impl<T> Guarded<T> {
         fenced(|| call(&mut object))
     }
 
+    /// Runs `call` on one piece of rows after another, each without the interpreter, so that other threads go on meanwhile,
+    /// and looks for signals between them. An error names the row among all.
+    pub fn in_pieces<'a>(
+        &self,
+        py: Python<'_>,
+        pieces: impl Iterator<Item = (usize, &'a [f64])>,
+        mut call: impl FnMut(&mut T, &[f64]) -> Result<(), Error> + Send,
+    ) -> PyResult<()>
+    where
+        T: Send,
+    {
+        for (first, piece) in pieces {
+            py.detach(|| {
+                self.alone(|object| call(object, piece).map_err(|error| error.further_down(first)))
+            })?;
+            py.check_signals()?;
+        }
+        Ok(())
+    }
+
     /// Reads something that cannot fail.
     pub fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&T) -> R) -> R {
         call(&self.0.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))

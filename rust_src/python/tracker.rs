@@ -123,11 +123,11 @@ impl PyTracker {
         let block = block(rows)?;
         let (entries, _) = block.of(self.settings.channels)?;
         self.inner.with(py, |inner| either!(inner, tracker => tracker.check_rows(entries)))?;
-        for piece in block.pieces(entries) {
-            py.detach(|| self.inner.alone(|inner| either!(inner, tracker => tracker.update_rows(piece))))?;
-            py.check_signals()?;
-        }
-        Ok(())
+        self.inner.in_pieces(
+            py,
+            block.pieces(entries),
+            |inner, piece| either!(inner, tracker => tracker.update_rows(piece)),
+        )
     }
 
     #[doc = stub_doc!("Tracker.split")]

@@ -168,12 +168,11 @@ impl PyWatch {
         let (entries, count) = block.of(self.channels)?;
         self.inner.with(py, |inner| either!(inner, watch => watch.check_rows(entries)))?;
         let mut replay = Replay::with_room(count, self.channels);
-        for piece in block.pieces(entries) {
-            py.detach(|| {
-                self.inner.alone(|inner| either!(inner, watch => watch.replay_into(piece, &mut replay)))
-            })?;
-            py.check_signals()?;
-        }
+        self.inner.in_pieces(
+            py,
+            block.pieces(entries),
+            |inner, piece| either!(inner, watch => watch.replay_into(piece, &mut replay)),
+        )?;
         columns(py, replay, self.channels)
     }
 

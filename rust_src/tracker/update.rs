@@ -76,6 +76,9 @@ impl<T: Scalar> Tracker<T> {
         let kept = self.settings.kept(elapsed);
         let gain = Gain::new(kept, weight);
         self.mean.scale(gain, &self.delta, &mut self.scaled);
+        if !(self.mean.total() * kept + weight).is_finite() {
+            return Err(Error::Overflow { what: "total weight" });
+        }
         let squares = ops::norm_squared(&self.scaled);
         if !(squares + self.subspace.factor().energy()).is_finite() {
             return Err(Error::Overflow { what: "squared row" });

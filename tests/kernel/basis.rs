@@ -348,3 +348,21 @@ fn solving_gives_back_the_weights_of_a_combination() {
     }
     assert!(solution.residual_norm <= 64.0 * EPS * norm(&target));
 }
+
+#[test]
+fn the_condition_is_the_same_at_every_scale() {
+    let mut noise = Noise(19);
+    let vectors: Vec<Vec<f64>> = (0..8).map(|_| noise.vector(20)).collect();
+    let condition = |power: i32| {
+        let mut basis = Basis::<f64>::new(20, None, None).unwrap();
+        for v in &vectors {
+            let scaled: Vec<f64> = v.iter().map(|x| x * 2f64.powi(power)).collect();
+            assert!(basis.add(&scaled).unwrap().accepted());
+        }
+        basis.condition().unwrap()
+    };
+    let plain = condition(0);
+    for power in [-900, -600, 600, 900] {
+        assert!((condition(power) / plain - 1.0).abs() <= 64.0 * EPS, "at 2^{power}");
+    }
+}

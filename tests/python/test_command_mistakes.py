@@ -1,5 +1,6 @@
 """Mistakes of the first ten minutes: each is answered by one line that says what, where and what to do."""
 
+import gzip
 import re
 
 import pytest
@@ -182,3 +183,30 @@ def test_a_name_with_control_characters_stays_on_one_line(tmp_path, monkeypatch,
     monkeypatch.chdir(tmp_path)
     (tmp_path / "rows.csv").write_text('flow,"sp\need"\n1,x\n')
     assert "'sp\\need'" in complaint(capsys, "watch", "rows.csv")
+
+
+def test_a_gzip_file_whose_inside_is_damaged_is_said_in_one_line(tmp_path, capsys):
+    path = tmp_path / "rows.csv.gz"
+    whole = bytearray(gzip.compress(b"flow,speed\n" + b"1,2\n" * 3000))
+    whole[12:40] = bytes(28)
+    path.write_bytes(bytes(whole))
+    assert main(["watch", str(path)]) == 2
+    complaint = capsys.readouterr().err
+    assert complaint.count("\n") == 1
+    assert "damaged" in complaint or "stopped after" in complaint
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["--settle", "9999999999999"], "memory"),
+        (["--report", "out.csv", "--readings", "out.csv"], "overwrite the readings"),
+    ],
+)
+def test_what_cannot_be_had_is_said_in_one_line(tmp_path, capsys, monkeypatch, arguments, words):
+    monkeypatch.chdir(tmp_path)
+    (tmp_path / "rows.csv").write_text("flow,speed\n" + "1,2\n" * 30, encoding="utf-8")
+    assert main(["watch", "rows.csv", *arguments]) == 2
+    complaint = capsys.readouterr().err
+    assert words in complaint
+    assert complaint.count("\n") == 1

@@ -2,6 +2,7 @@
 
 import gzip
 import sys
+import zlib
 from dataclasses import dataclass
 from io import BufferedReader
 from pathlib import Path
@@ -57,7 +58,11 @@ def open_input(name: str) -> Opened:
         Where there is no such file, it cannot be read, it is empty, or it does not hold rows.
     """
     if name == STANDARD_INPUT:
+        if sys.stdin is None:
+            raise InputError("it is closed; pipe rows into it or give a file", LIVE)
         return _recognised(cast(BufferedReader, sys.stdin.buffer), LIVE, None)
+    if not name:
+        raise InputError("expected the name of a file, got an empty one; - is standard input")
     path = Path(name)
     try:
         if path.is_dir():
@@ -85,7 +90,7 @@ def _recognised(raw: BufferedReader, label: str, size: int | None) -> Opened:
     unpacked = gzip.GzipFile(fileobj=raw)
     try:
         first = unpacked.peek(FIRST_BYTES)[:FIRST_BYTES]
-    except (OSError, EOFError) as error:
+    except (OSError, EOFError, zlib.error) as error:
         raise InputError(f"the gzip file is damaged ({error})", label) from None
     return Opened(label, _kind(first, label), cast(BinaryIO, unpacked), raw, size)
 
