@@ -782,22 +782,35 @@ class Watch:
     names : sequence of str, optional
         Their names; `channel_0`, ... if not given.
     rank : int, optional
-        Principal axes; below `channels`. Chosen when settling ends if not given.
+        Principal axes; below `channels`. If not given, chosen when settling ends: those along which the channels move
+        together by more than chance.
     memory : float or None
-        Rows after which a healthy row's weight has fallen to 1/e; None forgets nothing.
+        Rows after which a healthy row's weight has fallen to 1/e, at least 2; None forgets nothing.
     settle : int
-        Rows to learn units, rank and first limits from.
+        Rows to learn units, rank and first limits from, at least 20.
     false_alarm : float
-        Share of healthy rows that may pass each limit by chance.
+        Share of healthy rows that may be beyond one limit or another by chance, at most 0.2. It is split evenly over
+        the four limits; the alarm, which wants several rows, is rarer.
     confirm, of : int
-        The alarm goes on when `confirm` of the last `of` rows exceed a limit, and off when as many do not.
+        The alarm goes on when `confirm` of the last `of` rows are beyond a limit, and off when as many are not. Both
+        count from the last switch.
     hold : int
-        Rows beyond a limit, in succession, after which the watch adopts what it sees with bounded influence.
+        Rows beyond a limit in succession after which the watch adopts what it sees with bounded influence. A
+        succession ends with `of` rows in a row within the limits.
     limits : {"moments", "empirical", "spectrum"}
-        Limits from the moments of healthy statistics (chi-square matched), from their streamed quantile, or from the
-        model's energies (Jackson and Mudholkar for SPE, F for T2).
+        Where the limits of SPE and T2 come from: the moments of healthy statistics (matched chi-square), their
+        streamed quantile, or the model's energies (Jackson and Mudholkar for SPE, F for T2).
     dtype : {"float64", "float32"}
-        What rows of the model are stored in.
+        What the axes are stored in.
+
+    Raises
+    ------
+    ValueError
+        Where a setting is out of its range, or the names are not one a channel, each once.
+    TypeError
+        Where `dtype` is neither of the two.
+    MemoryError
+        Where the rows to settle on cannot be held.
     """
 
     def __new__(
@@ -816,21 +829,64 @@ class Watch:
         dtype: DTypeLike = "float64",
     ) -> Watch: ...
     def tick(self, row: ArrayLike) -> Reading:
-        """Judge one row, then learn it as far as the gate allows. NaN is a gap; infinity is an error."""
+        """Judge one row, then learn it as far as the gate allows.
+
+        Some microseconds at 24 channels, in proportion to channels times tracked directions; the row that ends settling
+        takes longer, as all of them are learned then.
+
+        Parameters
+        ----------
+        row : array_like, shape (channels,)
+            Real numbers in any unit; NaN is a gap. Neither modified nor kept.
+
+        Returns
+        -------
+        Reading
+            What was found. A row with no more values than axes is not judged, and not learned.
+
+        Raises
+        ------
+        ValueError
+            Wrong length or an infinite entry; the watch is as it was.
+        TypeError
+            Entries that are not real numbers.
+        """
 
     def replay(self, rows: ArrayLike) -> dict[str, NDArray[Any]]:
-        """Tick through many rows: shape (ticks, channels).
+        """Tick through many rows: the readings of `tick`, one after another, to the last bit.
+
+        Parameters
+        ----------
+        rows : array_like, shape (ticks, channels)
+            As for `tick`.
 
         Returns
         -------
         dict of arrays
-            One entry a property of `Reading`, first axis the ticks: `tick`, `phase` (str), `alarm`, `spe`, `spe_limit`,
-            `t2`, `t2_limit`, `spe_smooth`, ..., `drift` (NaN for None), `missing` (count), `contributions`
-            (ticks, channels).
+            An entry a property of `Reading`, named as that, first axis the ticks. NaN stands for None; `missing` is a
+            count; `exceeds` has four columns: SPE, T2, smoothed SPE, smoothed T2; `contributions` one a channel.
+
+        Raises
+        ------
+        ValueError, TypeError
+            As `tick`, naming the row, before any row is judged.
         """
 
     def settle_on(self, rows: ArrayLike) -> None:
-        """End settling with exactly these rows, shape (rows, channels), instead of the first `settle` of the stream."""
+        """Settle on exactly these rows instead of the first `settle` of the stream.
+
+        They are no ticks. What was learned before is let go; the next row is judged.
+
+        Parameters
+        ----------
+        rows : array_like, shape (rows, channels)
+            Healthy rows, 20 or more; a few glitches among them are left out (`dropped`).
+
+        Raises
+        ------
+        ValueError
+            As `tick`, naming the row; too few rows, or fewer than two channels that move. The watch is as it was.
+        """
 
     def freeze(self) -> None:
         """Stop learning until `resume`; judging goes on."""
@@ -839,7 +895,11 @@ class Watch:
         """Learn again after `freeze`."""
 
     def accept(self) -> None:
-        """Take the present state as the new baseline; the alarm and its counters start afresh."""
+        """Take the present state as the new baseline; the alarm and its counters start afresh.
+
+        Said during an alarm it also means that what is seen now is healthy: rows beyond a limit are adopted from the
+        next one on, without waiting for `hold`.
+        """
 
     @property
     def names(self) -> list[str]:
