@@ -85,6 +85,13 @@ def summary(tally: Tally, channels: int, learned: str) -> list[str]:
         line("gaps", _gaps(tally)),
         line("healthy", f"{share(tally.healthy, tally.judged)} of {counted(tally.judged, 'judged row')}"),
     ]
+    if tally.still:
+        longest = sorted(tally.stopped, key=lambda name: -tally.stopped[name])
+        more = f" and {len(longest) - LISTED} more" if len(longest) > LISTED else ""
+        text = (
+            f"{counted(tally.still, 'row')} with a channel that had stopped moving: {', '.join(longest[:LISTED])}{more}"
+        )
+        lines.append(wrapped(f"{'still':<{LABEL}}", text))
     if tally.adopted:
         lines.append(line("adopted", f"{counted(tally.adopted, 'row')} learned beyond a limit, after the hold"))
     lines.append(line("alarms", f"{len(tally.alarms)}" if tally.alarms else "none"))

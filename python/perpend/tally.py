@@ -121,7 +121,7 @@ class Alarm:
 
 @dataclass(slots=True)
 class Tally:
-    """Counts a run as its readings come in."""
+    """Counts a run as its readings come in; `still` counts the judged rows in which a channel had stopped moving."""
 
     rows: int = 0
     settling: int = 0
@@ -130,6 +130,8 @@ class Tally:
     gaps: int = 0
     rows_with_gaps: int = 0
     adopted: int = 0
+    still: int = 0
+    stopped: dict[str, int] = field(default_factory=dict)
     alarms: list[Alarm] = field(default_factory=list)
     last: Reading | None = None
 
@@ -156,6 +158,10 @@ class Tally:
             self.judged += 1
             self.healthy += reading.phase == "healthy"
             self.adopted += reading.phase == "adopting"
+            stuck = reading.stuck
+            self.still += bool(stuck)
+            for name in stuck:
+                self.stopped[name] = self.stopped.get(name, 0) + 1
         alarm = self.current
         if reading.alarm:
             if alarm is None:

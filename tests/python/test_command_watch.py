@@ -214,3 +214,17 @@ def test_help_fits_a_terminal_and_names_exit_codes_and_cautions():
         )
         assert all(len(line) <= 80 for line in found.stdout.splitlines())
         assert "no protective system" in found.stdout
+
+
+def test_a_logger_that_hangs_is_told_at_the_end_and_not_passed_over_as_healthy(tmp_path, capsys):
+    rng = np.random.default_rng(8)
+    rows = rng.standard_normal((1500, 2)) @ rng.standard_normal((2, 5)) + 0.1 * rng.standard_normal((1500, 5))
+    rows[800:] = rows[800]
+    path = tmp_path / "rows.csv"
+    lines = [",".join(f"p{i}" for i in range(5)), *(",".join(map(repr, row)) for row in rows.tolist())]
+    path.write_text("\n".join(lines), encoding="utf-8")
+    main(["watch", str(path)])
+    printed = capsys.readouterr().out
+    still = next(line for line in printed.splitlines() if line.startswith("still"))
+    assert 600 <= int(still.split()[1]) <= 700
+    assert "p0, p1, p2, p3, p4" in " ".join(printed.split())
