@@ -184,7 +184,7 @@ def _keep_input(request: WatchRequest) -> None:
                 continue
             if Path(target).exists() and Path(name).exists() and Path(target).samefile(name):
                 raise InputError(f"{option}: this would overwrite the input; give another name", target)
-    if None not in (request.readings, request.report) and _same(str(request.readings), str(request.report)):
+    if request.readings is not None and request.report is not None and _same(request.readings, request.report):
         raise InputError("--report: this would overwrite the readings; give another name", request.report)
 
 

@@ -15,6 +15,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from perpend.cli import main
+
 NAMES = [f"ch{i}" for i in range(8)]
 SETTLE = 120
 ROWS = 240
