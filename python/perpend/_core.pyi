@@ -718,7 +718,7 @@ class Reading:
 
     @property
     def widening(self) -> float:
-        """Factor, 1 or more, by which the limits are wider for resting on few healthy rows so far."""
+        """Factor, 1 or more, by which the limits are wider for resting on few rows so far; NaN while settling."""
 
     @property
     def weight(self) -> float:
@@ -738,7 +738,7 @@ class Reading:
 
     @property
     def mean_shift(self) -> float | None:
-        """Distance of the present mean from the baseline's, in spreads of the mean's own healthy movement."""
+        """Largest shift of a channel's mean from the baseline's, in spreads of that channel while settling."""
 
     @property
     def missing(self) -> list[str]:
@@ -746,11 +746,14 @@ class Reading:
 
     @property
     def stuck(self) -> list[str]:
-        """Channels that used to move and have not for longer than they ever stood still."""
+        """Channels that have repeated their value for longer than twice their longest run while settling, and ten rows.
+
+        A row in which all channels that take part are stuck or missing is judged, but not learned.
+        """
 
     @property
     def vanished(self) -> list[str]:
-        """Channels that have had no value for longer than `hold` rows."""
+        """Channels that have had no value for longer than twice their longest silence while settling, and ten rows."""
 
     def contributions(self) -> NDArray[np.float64]:
         """Squared residual of each channel: shape (channels,), they sum to `spe`."""
@@ -789,8 +792,9 @@ class Watch:
     settle : int
         Rows to learn units, rank and first limits from, at least 20.
     false_alarm : float
-        Share of healthy rows that may be beyond one limit or another by chance, at most 0.2. It is split evenly over
-        the four limits; the alarm, which wants several rows, is rarer.
+        Share of healthy rows that may be beyond one limit or another by chance, 1e-9 to 0.2. It is split evenly over
+        the four limits; the alarm, which wants several rows, is rarer. Rows with tails heavier than normal pass it
+        oftener, two to four times for Student's t with 5 degrees of freedom.
     confirm, of : int
         The alarm goes on when `confirm` of the last `of` rows are beyond a limit, and off when as many are not. Both
         count from the last switch.
@@ -799,7 +803,8 @@ class Watch:
         succession ends with `of` rows in a row within the limits.
     limits : {"moments", "empirical", "spectrum"}
         Where the limits of SPE and T2 come from: the moments of healthy statistics (matched chi-square), their
-        streamed quantile, or the model's energies (Jackson and Mudholkar for SPE, F for T2).
+        streamed quantile, or the model's energies (Jackson and Mudholkar for SPE, F for T2). Rows beyond a limit
+        count for it no oftener than chance brings them.
     dtype : {"float64", "float32"}
         What the axes are stored in.
 
@@ -864,7 +869,8 @@ class Watch:
         -------
         dict of arrays
             An entry a property of `Reading`, named as that, first axis the ticks. NaN stands for None; `missing` is a
-            count; `exceeds` has four columns: SPE, T2, smoothed SPE, smoothed T2; `contributions` one a channel.
+            count; `exceeds` has four columns: SPE, T2, smoothed SPE, smoothed T2; `contributions`, `stuck` and
+            `vanished` have one a channel.
 
         Raises
         ------
@@ -885,11 +891,12 @@ class Watch:
         Raises
         ------
         ValueError
-            As `tick`, naming the row; too few rows, or fewer than two channels that move. The watch is as it was.
+            As `tick`, naming the row; or the rows do not do, saying why: too few that can be judged, or fewer than two
+            channels that move. The watch is as it was.
         """
 
     def freeze(self) -> None:
-        """Stop learning until `resume`; judging goes on."""
+        """Stop learning until `resume`; judging goes on. A watch that has not settled yet waits meanwhile."""
 
     def resume(self) -> None:
         """Learn again after `freeze`."""
@@ -898,7 +905,8 @@ class Watch:
         """Take the present state as the new baseline; the alarm and its counters start afresh.
 
         Said during an alarm it also means that what is seen now is healthy: rows beyond a limit are adopted from the
-        next one on, without waiting for `hold`.
+        next one on, without waiting for `hold`, and raise no alarm until `of` rows in a row were within the limits,
+        or for three times `hold` rows at most.
         """
 
     @property

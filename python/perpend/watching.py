@@ -119,12 +119,7 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
         except KeyboardInterrupt:
             interrupted = True
     if watch.phase == "settling" and not interrupted:
-        settle = request.settings.get("settle", SETTLE)
-        raise InputError(
-            f"{counted(tally.rows, 'row')}, fewer than the {settle} to settle on: nothing was judged"
-            "; give --learn FILE or a smaller --settle",
-            table.label,
-        )
+        raise InputError(_unsettled(tally.rows, request.settings.get("settle", SETTLE)), table.label)
     for line in summary(tally, len(layout.channels), settled_on):
         print(line)
     if history is not None:
@@ -133,6 +128,19 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
         _say([f"interrupted after row {tally.rows}"])
         return INTERRUPTED
     return ALARM_RAISED if tally.alarms else NO_ALARM
+
+
+def _unsettled(rows: int, settle: int) -> str:
+    """Say why nothing was judged."""
+    if rows < settle:
+        return (
+            f"{counted(rows, 'row')}, fewer than the {settle} to settle on: nothing was judged"
+            "; give --learn FILE or a smaller --settle"
+        )
+    return (
+        f"{counted(rows, 'row')}, and no {settle} of them to settle on: nothing was judged; two channels or more must"
+        " move, and 20 rows have values in more channels than the rank"
+    )
 
 
 def _report(

@@ -105,6 +105,10 @@ fn columns(py: Python<'_>, replay: Replay, channels: usize) -> PyResult<Bound<'_
     dict.set_item("exceeds", exceeds.call_method1("reshape", ((ticks, 4),))?)?;
     dict.set_item("rank", PyArray1::from_vec(py, replay.rank))?;
     dict.set_item("missing", PyArray1::from_vec(py, replay.missing))?;
+    for (name, flags) in [("stuck", replay.stuck), ("vanished", replay.vanished)] {
+        let flags = PyArray1::from_vec(py, flags);
+        dict.set_item(name, flags.call_method1("reshape", ((ticks, channels),))?)?;
+    }
     dict.set_item("contributions", matrix(py, replay.contributions, ticks, channels)?)?;
     Ok(dict)
 }

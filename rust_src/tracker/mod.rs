@@ -16,6 +16,7 @@
 //! Energies are variances, `C / w`. Principal axes are made from `R` when asked for. Rows whose deviations square out of
 //! the range of numbers are refused; deviations below `1e-150` count as zero.
 
+mod admit;
 mod certificate;
 mod factor;
 mod gaps;

@@ -1,5 +1,6 @@
 //! A statistic with its limits: the value itself, and its smoothed form.
 
+use super::allowance::Allowance;
 use super::limits::histogram::Histogram;
 use super::limits::moments::Moments;
 use super::limits::quantile::ChiSquare;
@@ -8,6 +9,9 @@ use super::smooth::{SHARE, Smooth};
 
 /// Passes over the settling rows until limit and winsorised moments agree; each gains about two digits.
 const PASSES: usize = 12;
+/// How far beyond the limit a value is counted for the quantile, over the limit: what lies beyond lifts it by a tenth at a
+/// time, however far out.
+const CREEP: f64 = 1.1;
 
 /// What a chart says of a row.
 #[derive(Clone, Copy, Debug, Default, PartialEq)]
@@ -35,6 +39,8 @@ pub struct Chart {
     smooth: Smooth,
     bound: MomentLimit,
     histogram: Option<Histogram>,
+    /// Values beyond the limit that the histogram may count.
+    counted: Allowance,
     /// Values below this are rounding.
     floor: f64,
     limit: f64,
@@ -53,6 +59,7 @@ impl Chart {
             smooth: Smooth::new(SHARE, tail),
             bound: MomentLimit::new(tail),
             histogram: None,
+            counted: Allowance::of_quantile(tail),
             floor,
             limit: f64::INFINITY,
         };
@@ -94,13 +101,17 @@ impl Chart {
         Verdict { limit, exceeds: value > limit, smooth, smooth_limit, smooth_exceeds: smooth > smooth_limit }
     }
 
-    /// Learns the value last judged as healthy, winsorised at the limit it was judged by.
-    pub fn learn(&mut self, value: f64, limit: f64, keep: f64) {
+    /// Learns the value last judged as healthy, winsorised at the limit it was judged by. The quantile counts a value
+    /// beyond as far as its allowance goes, or while `adopting`.
+    pub fn learn(&mut self, value: f64, verdict: Verdict, keep: f64, adopting: bool) {
+        let limit = verdict.limit;
         self.moments.learn(value.max(self.floor).min(limit), keep);
         self.roots.learn(self.root(value, limit), keep);
         self.smooth.learn(keep);
-        if let Some(histogram) = &mut self.histogram {
-            histogram.learn(value, keep);
+        if let Some(histogram) = &mut self.histogram
+            && (self.counted.take(verdict.exceeds) || adopting)
+        {
+            histogram.learn(value.min(CREEP * limit), keep);
         }
     }
 

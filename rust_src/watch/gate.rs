@@ -8,7 +8,10 @@
 //! The count is of rows beyond in succession, and a succession ends with `of` rows within in a row: a new regime
 //! that shows beyond the limits nine times in ten must be adopted too. While it adopts, and for three times `hold`
 //! rows after, the limits forget with time constant `hold`: else the rows met while adopting would leave
-//! them wide for a whole memory.
+//! them wide for a whole memory. So they do after a channel has joined, whose residual shrinks as it is learned.
+//!
+//! Somebody may say that what is seen now is healthy. Rows beyond are then adopted from the next one on, and do not
+//! count for the alarm until `of` rows in a row were within, or for three times `hold` rows at most.
 
 /// How long, in `hold`s, limits forget quickly after adopting: three time constants leave 5 % of what was met.
 const SETTLING: u64 = 3;
@@ -21,18 +24,21 @@ pub struct Gate {
     beyond: u64,
     calm: u64,
     recent: u64,
+    /// Rows for which those beyond do not count for the alarm.
+    forgiven: u64,
 }
 
 impl Gate {
     /// Opens after `hold` rows beyond; `of` rows within end a succession.
     #[must_use]
     pub fn new(hold: u64, of: u64) -> Self {
-        Self { hold, calm_needed: of, beyond: 0, calm: 0, recent: 0 }
+        Self { hold, calm_needed: of, beyond: 0, calm: 0, recent: 0, forgiven: 0 }
     }
 
     /// Takes in whether the newest row exceeds a limit; returns whether it is to be adopted.
     pub fn take(&mut self, exceeds: bool) -> bool {
         self.recent = self.recent.saturating_sub(1);
+        self.forgiven = self.forgiven.saturating_sub(1);
         if exceeds {
             self.beyond = (self.beyond + 1).min(self.hold + 1);
             self.calm = 0;
@@ -40,13 +46,19 @@ impl Gate {
             self.calm = (self.calm + 1).min(self.calm_needed);
             if self.calm == self.calm_needed {
                 self.beyond = 0;
+                self.forgiven = 0;
             }
         }
         let adopting = exceeds && self.beyond > self.hold;
         if adopting {
-            self.recent = self.hold.saturating_mul(SETTLING);
+            self.hurry();
         }
         adopting
+    }
+
+    /// Limits are to forget quickly for a while.
+    pub fn hurry(&mut self) {
+        self.recent = self.hold.saturating_mul(SETTLING);
     }
 
     /// Whether limits are to forget quickly.
@@ -58,12 +70,20 @@ impl Gate {
     /// Lets rows beyond in from the next one on: somebody has said that they are healthy.
     pub fn open(&mut self) {
         self.beyond = self.hold;
+        self.forgiven = self.hold.saturating_mul(SETTLING);
+    }
+
+    /// Whether rows beyond do not count for the alarm.
+    #[must_use]
+    pub fn forgiving(&self) -> bool {
+        self.forgiven > 0
     }
 
     /// Starts counting afresh.
     pub fn reset(&mut self) {
         self.beyond = 0;
         self.calm = 0;
+        self.forgiven = 0;
     }
 }
 
@@ -98,6 +118,18 @@ mod tests {
         let mut gate = Gate::new(300, 5);
         gate.open();
         assert!(!gate.take(false));
-        assert!(gate.take(true));
+        assert!(gate.take(true) && gate.forgiving());
+    }
+
+    #[test]
+    fn what_was_accepted_is_forgiven_until_rows_are_within_and_not_for_ever() {
+        let mut gate = Gate::new(300, 5);
+        gate.open();
+        assert!((0..100).all(|_| gate.take(true) && gate.forgiving()));
+        assert!((0..5).all(|_| !gate.take(false)));
+        assert!(!gate.forgiving());
+        gate.open();
+        (0..900).for_each(|_| assert!(gate.take(true)));
+        assert!(!gate.forgiving());
     }
 }

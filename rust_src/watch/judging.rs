@@ -4,6 +4,7 @@ use crate::error::Error;
 use crate::scalar::Scalar;
 
 use super::alarm::Alarm;
+use super::allowance::Allowance;
 use super::chart::{Chart, Verdict};
 use super::drift::{Baseline, Drift, Present};
 use super::event::Events;
@@ -12,11 +13,11 @@ use super::lens::Judged;
 use super::limits::Limits;
 use super::limits::hotelling;
 use super::model::Model;
+use super::newcomer::Newcomer;
 use super::reading::{Phase, Reading};
 use super::settings::Settings;
 use super::settle::Settled;
 use super::suspects::{Lasting, share_of};
-use super::units::Newcomer;
 
 /// Learned rows between two renewals of the same limit. In as many rows the moments move by 3 % of what 500 rows have
 /// taught; the four limits take turns, so that no tick pays for two.
@@ -33,6 +34,7 @@ pub(super) struct Judging<T: Scalar> {
     /// SPE and T2.
     charts: [Chart; 2],
     gate: Gate,
+    allowance: Allowance,
     alarm: Alarm,
     lasting: Lasting,
     baseline: Baseline<T>,
@@ -52,6 +54,7 @@ impl<T: Scalar> Judging<T> {
         let baseline = Baseline::of(present(&model, &charts));
         let mut judging = Self {
             gate: Gate::new(settings.hold, settings.of as u64),
+            allowance: Allowance::of_rows(settings.false_alarm),
             alarm: Alarm::new(settings.confirm, settings.of),
             lasting: Lasting::new(settings.channels),
             baseline,
@@ -100,8 +103,11 @@ impl<T: Scalar> Judging<T> {
         record(reading, judged, &verdicts, self.model.lens.residual());
         self.suspect(judged, &verdicts, reading);
 
+        // A feed that stands still, all channels repeating themselves, is no news: it would teach that nothing moves.
+        let frozen = frozen || self.stands_still(reading);
         let exceeds = reading.exceeds_any();
-        let switched = self.alarm.take(exceeds);
+        let forgiven = !frozen && self.gate.forgiving();
+        let switched = self.alarm.take(exceeds && !forgiven);
         let adopting = !frozen && self.gate.take(exceeds);
         let ratio = ratio(reading);
         if switched && self.alarm.on() {
@@ -132,6 +138,12 @@ impl<T: Scalar> Judging<T> {
         Ok(())
     }
 
+    /// Whether all channels that take part are stuck or silent.
+    fn stands_still(&self, reading: &Reading) -> bool {
+        let mut conditions = reading.conditions.iter().enumerate();
+        conditions.all(|(channel, is)| is.stuck || is.missing || !self.model.units.moves(channel))
+    }
+
     /// Shares of the channels: of this row where it is itself beyond a limit, else of the last tens of rows.
     fn suspect(&mut self, judged: Judged, verdicts: &[Verdict; 2], reading: &mut Reading) {
         let limits = verdicts.map(|verdict| verdict.limit);
@@ -155,16 +167,17 @@ impl<T: Scalar> Judging<T> {
         let exceeds = reading.exceeds_any();
         let adopting = reading.phase == Phase::Adopting;
         // A row beyond counts in the limits' moments as one at the limit, or they would feed on their own success; but not
-        // while an alarm lasts: a fault would lift them.
-        if (!exceeds || adopting || !self.alarm.on()) && judged.share >= SHOWN {
+        // while an alarm lasts, nor oftener than chance has it: a fault would lift them.
+        let counts = (self.allowance.take(exceeds) && !(exceeds && self.alarm.on())) || adopting;
+        if counts && judged.share >= SHOWN {
             let keep = if self.gate.hasty() { self.settings.hasty_keep() } else { self.settings.keep() };
-            self.charts[0].learn(judged.spe, verdicts[0].limit, keep);
-            self.charts[1].learn(judged.t2, verdicts[1].limit, keep);
+            self.charts[0].learn(judged.spe, verdicts[0], keep, adopting);
+            self.charts[1].learn(judged.t2, verdicts[1], keep, adopting);
             self.take_turn();
         }
         if reading.weight > 0.0 {
             self.model.learn(reading.weight)?;
-            self.admit(row);
+            self.admit(row)?;
         }
         Ok(())
     }
@@ -212,22 +225,31 @@ impl<T: Scalar> Judging<T> {
         self.drift = self.baseline.compare(present(&self.model, &self.charts));
     }
 
-    /// Watches the channels that take no part, and lets in those that have begun to move. A channel that joins is
-    /// all residual at first: one squared spread of it, whose variance is two.
-    fn admit(&mut self, row: &[f64]) {
+    /// Watches the channels that take no part, and lets in those that have begun to move. The part of its variance that
+    /// the others do not tell joins the residual: that much squared, with twice its square for a variance.
+    fn admit(&mut self, row: &[f64]) -> Result<(), Error> {
         if self.model.units.moving() == row.len() {
-            return;
+            return Ok(());
         }
+        let mut joined = false;
         let enough = self.settings.settle as u64;
         for (channel, newcomer) in self.newcomers.iter_mut().enumerate() {
             if self.model.units.moves(channel) {
                 continue;
             }
-            if let Some((mean, spread)) = newcomer.take(row[channel], enough) {
-                self.model.join(channel, mean, spread);
-                self.charts[0].widen_for_newcomer(1.0, 2.0);
+            if newcomer.take(row[channel], &self.model.lens.deviation, enough) {
+                let joining = newcomer.join(self.model.lens.axes(), self.model.lens.energies());
+                self.model.join(channel, &joining)?;
+                self.charts[0].widen_for_newcomer(joining.own, 2.0 * joining.own * joining.own);
+                *newcomer = Newcomer::default();
+                joined = true;
             }
         }
+        if joined {
+            self.gate.hurry();
+            self.renew();
+        }
+        Ok(())
     }
 
     /// The present state becomes the baseline; alarm and counters start afresh. Said during an alarm, it also opens the

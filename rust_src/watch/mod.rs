@@ -19,6 +19,7 @@
 //! what was asked. The alarm itself, which wants a majority of rows, is rarer still where rows are independent.
 
 pub mod alarm;
+pub mod allowance;
 pub mod chart;
 mod cholesky;
 pub mod drift;
@@ -28,6 +29,7 @@ mod judging;
 pub mod lens;
 pub mod limits;
 mod model;
+mod newcomer;
 mod partial;
 pub mod rank;
 mod reading;
@@ -52,6 +54,7 @@ pub use reading::{Condition, LIMITS, Phase, Reading};
 use replay::Replay;
 use runs::Runs;
 pub use settings::{LEAST_SETTLE, Settings};
+use settle::Shortage;
 
 /// Where the watch is in its life.
 #[derive(Clone)]
@@ -70,6 +73,7 @@ pub struct Watch<T: Scalar> {
     runs: Runs,
     events: Events,
     reading: Reading,
+    phase: Phase,
     ticks: u64,
     frozen: bool,
 }
@@ -90,6 +94,7 @@ impl<T: Scalar> Watch<T> {
             runs: Runs::new(channels),
             events: Events::new(channels),
             reading: Reading::new(channels),
+            phase: Phase::Settling,
             ticks: 0,
             frozen: false,
             settings,
@@ -115,14 +120,17 @@ impl<T: Scalar> Watch<T> {
         }
         match &mut self.stage {
             Stage::Settling(rows) => {
-                rows.extend_from_slice(row);
                 self.reading.phase = Phase::Settling;
-                self.try_to_settle()?;
+                if !self.frozen {
+                    rows.extend_from_slice(row);
+                    self.try_to_settle()?;
+                }
             }
             Stage::Judging(judging) => {
                 judging.tick(row, self.frozen, &mut self.reading, &mut self.events)?;
             }
         }
+        self.phase = self.reading.phase;
         Ok(&self.reading)
     }
 
@@ -157,19 +165,26 @@ impl<T: Scalar> Watch<T> {
     /// two channels that move. The watch is as it was.
     pub fn settle_on(&mut self, rows: &[f64]) -> Result<(), Error> {
         self.check_rows(rows)?;
-        let Some(settled) = settle::settle(rows, &self.settings)? else {
-            return Err(Error::Parameter {
+        let settled = settle::settle(rows, &self.settings)?.map_err(|shortage| {
+            let count = rows.len() / self.settings.channels;
+            Error::Parameter {
                 name: "rows to settle on",
-                expected: format!("{LEAST_SETTLE} or more, in which two channels or more move"),
-                got: format!("{} rows", rows.len() / self.settings.channels),
-            });
-        };
+                expected: format!(
+                    "{LEAST_SETTLE} or more that can be judged, in which two channels or more move"
+                ),
+                got: match shortage {
+                    Shortage::Moving(moving) => format!("{count}, in which {moving} of the channels move"),
+                    Shortage::Judged(judged) => format!("{count}, of which {judged} can be judged"),
+                },
+            }
+        })?;
         let judging = Judging::new(&self.settings, settled);
         self.runs = Runs::new(self.settings.channels);
         for row in rows.chunks_exact(self.settings.channels) {
             self.runs.take(row, true);
         }
         self.events.close(self.ticks);
+        self.phase = judging.phase();
         self.stage = Stage::Judging(Box::new(judging));
         Ok(())
     }
@@ -181,7 +196,7 @@ impl<T: Scalar> Watch<T> {
         if rows.len() < wanted {
             return Ok(());
         }
-        if let Some(settled) = settle::settle(rows, &self.settings)? {
+        if let Ok(settled) = settle::settle(rows, &self.settings)? {
             self.stage = Stage::Judging(Box::new(Judging::new(&self.settings, settled)));
         } else {
             rows.drain(..self.settings.settle.div_ceil(4) * self.settings.channels);
@@ -189,7 +204,7 @@ impl<T: Scalar> Watch<T> {
         Ok(())
     }
 
-    /// Stops learning until [`Watch::resume`]; judging goes on.
+    /// Stops learning until [`Watch::resume`]; judging goes on. A watch that has not settled yet waits meanwhile.
     pub fn freeze(&mut self) {
         self.frozen = true;
     }
@@ -206,10 +221,12 @@ impl<T: Scalar> Watch<T> {
     }
 
     /// Takes the present state as the new baseline; the alarm and its counters start afresh. Said during an alarm, it
-    /// also means that what is seen now is healthy: rows beyond a limit are adopted from the next one on.
+    /// also means that what is seen now is healthy: rows beyond a limit are adopted from the next one on, and do not raise
+    /// the alarm until `of` rows in a row were within, for three times `hold` rows at most.
     pub fn accept(&mut self) {
         if let Stage::Judging(judging) = &mut self.stage {
             judging.accept(self.ticks, &mut self.events);
+            self.phase = judging.phase();
         }
     }
 
@@ -228,12 +245,7 @@ impl<T: Scalar> Watch<T> {
     /// Where it stands.
     #[must_use]
     pub fn phase(&self) -> Phase {
-        match &self.stage {
-            Stage::Settling(_) => Phase::Settling,
-            Stage::Judging(judging) if self.ticks == 0 => judging.phase(),
-            Stage::Judging(_) if self.reading.phase != Phase::Settling => self.reading.phase,
-            Stage::Judging(judging) => judging.phase(),
-        }
+        self.phase
     }
 
     /// Principal axes in use; 0 while settling.

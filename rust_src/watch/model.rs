@@ -13,6 +13,7 @@ use crate::tracker::{self, Tracker};
 
 use super::lens::{Judged, Lens};
 use super::limits::spectrum::Residuals;
+use super::newcomer::Joining;
 use super::renewal::Renewal;
 use super::units::Units;
 
@@ -135,10 +136,15 @@ impl<T: Scalar> Model<T> {
         self.lens.take(axes, energies, self.units.moving(), self.floor);
     }
 
-    /// A channel joins with these units; its floor of rounding with it.
-    pub fn join(&mut self, channel: usize, mean: f64, spread: f64) {
-        self.units.join(channel, mean, spread);
+    /// A channel joins: its units, its past, its floor of rounding.
+    ///
+    /// # Errors
+    /// None on loadings that were found here.
+    pub fn join(&mut self, channel: usize, joining: &Joining) -> Result<(), Error> {
+        self.tracker.admit(channel, &joining.loadings)?;
+        self.units.join(channel, joining.mean, joining.spread);
         self.floor = rounding_energy::<T>(&self.units);
+        Ok(())
     }
 
     /// The largest energy that the axes leave out, and how many directions they leave out.

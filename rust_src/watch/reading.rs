@@ -73,7 +73,8 @@ pub struct Reading {
     pub t2_smooth_limit: f64,
     /// Which limits were passed, in the order of [`LIMITS`].
     pub exceeds: [bool; 4],
-    /// How much wider the wider of the SPE's and T2's limits is for resting on few rows: 1 or more.
+    /// How much wider the wider of the SPE's and T2's limits is for resting on few rows: 1 or more; NaN as
+    /// long as there are none.
     pub widening: f64,
     /// How much of the row was learned.
     pub weight: f64,
@@ -120,6 +121,7 @@ impl Reading {
         (self.spe, self.spe_limit, self.t2, self.t2_limit) = (f64::NAN, f64::NAN, f64::NAN, f64::NAN);
         (self.spe_smooth, self.spe_smooth_limit) = (f64::NAN, f64::NAN);
         (self.t2_smooth, self.t2_smooth_limit) = (f64::NAN, f64::NAN);
+        self.widening = f64::NAN;
         self.exceeds = [false; 4];
         self.weight = 0.0;
         self.contributions.fill(f64::NAN);

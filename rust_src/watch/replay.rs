@@ -19,6 +19,10 @@ pub struct Replay {
     pub rank: Vec<usize>,
     /// Channels without a value.
     pub missing: Vec<usize>,
+    /// Whether each channel was stuck, `channels` a tick.
+    pub stuck: Vec<bool>,
+    /// Whether each had vanished, `channels` a tick.
+    pub vanished: Vec<bool>,
     /// Squared residuals, `channels` a tick.
     pub contributions: Vec<f64>,
 }
@@ -52,6 +56,8 @@ impl Replay {
             exceeds: Vec::with_capacity(4 * ticks),
             rank: Vec::with_capacity(ticks),
             missing: Vec::with_capacity(ticks),
+            stuck: Vec::with_capacity(ticks * channels),
+            vanished: Vec::with_capacity(ticks * channels),
             contributions: Vec::with_capacity(ticks * channels),
         }
     }
@@ -82,6 +88,8 @@ impl Replay {
         self.exceeds.extend(reading.exceeds);
         self.rank.push(reading.rank);
         self.missing.push(reading.missing());
+        self.stuck.extend(reading.conditions.iter().map(|condition| condition.stuck));
+        self.vanished.extend(reading.conditions.iter().map(|condition| condition.vanished));
         self.contributions.extend_from_slice(&reading.contributions);
     }
 }

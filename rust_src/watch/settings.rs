@@ -7,6 +7,9 @@ use super::limits::Limits;
 /// Fewest rows to settle on: below this, five folds leave too few rows to judge by.
 pub const LEAST_SETTLE: usize = 20;
 
+/// Least rate that can be asked for: one row in thirty years of a row a second. Far below, quantiles have no digits left.
+const RAREST: f64 = 1e-9;
+
 /// What a watch is made with.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Settings {
@@ -96,8 +99,8 @@ impl Settings {
         if self.settle < LEAST_SETTLE {
             return refuse("settle", format!("{LEAST_SETTLE} rows or more"), self.settle.to_string());
         }
-        if !(self.false_alarm > 0.0 && self.false_alarm <= 0.2) {
-            return refuse("false_alarm", "above 0, at most 0.2".into(), self.false_alarm.to_string());
+        if !(RAREST..=0.2).contains(&self.false_alarm) {
+            return refuse("false_alarm", "1e-9 to 0.2".into(), format!("{:e}", self.false_alarm));
         }
         if self.confirm == 0 || self.confirm > self.of {
             return refuse("confirm", format!("1 to of = {}", self.of), self.confirm.to_string());

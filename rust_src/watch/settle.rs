@@ -38,6 +38,15 @@ const NORMAL_MAD: f64 = 1.482_602_218_505_602;
 /// A channel must have a value in one of so many settling rows to take part.
 const PRESENT: usize = 2;
 
+/// Why rows do not do.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Shortage {
+    /// Fewer than two channels move.
+    Moving(usize),
+    /// Too few rows are complete enough to be judged, once glitches are dropped.
+    Judged(usize),
+}
+
 /// What settling found.
 pub struct Settled<T: Scalar> {
     /// The model, having learned the rows.
@@ -48,16 +57,18 @@ pub struct Settled<T: Scalar> {
     pub dropped: usize,
 }
 
-/// Settles on `rows` (row-major). None where they do not do: fewer than two channels move, or too few rows are
-/// complete enough to be judged.
+/// Settles on `rows` (row-major), or says why they do not do.
 ///
 /// # Errors
 /// Those of the tracker; none on rows without infinities.
-pub fn settle<T: Scalar>(rows: &[f64], settings: &Settings) -> Result<Option<Settled<T>>, Error> {
+pub fn settle<T: Scalar>(rows: &[f64], settings: &Settings) -> Result<Result<Settled<T>, Shortage>, Error> {
     let channels = settings.channels;
     let count = rows.len() / channels;
     let all = vec![true; count];
-    let Some(units) = units(rows, channels, &all) else { return Ok(None) };
+    let units = match units(rows, channels, &all) {
+        Ok(units) => units,
+        Err(shortage) => return Ok(Err(shortage)),
+    };
     let rank = choose_rank(rows, settings, &units, &all)?;
     let mut kept = all.clone();
     let mut model = learn::<T>(rows, channels, &kept, units, rank, None)?;
@@ -72,7 +83,10 @@ pub fn settle<T: Scalar>(rows: &[f64], settings: &Settings) -> Result<Option<Set
         } else {
             break;
         }
-        let Some(units) = self::units(rows, channels, &kept) else { return Ok(None) };
+        let units = match self::units(rows, channels, &kept) {
+            Ok(units) => units,
+            Err(shortage) => return Ok(Err(shortage)),
+        };
         let rank = choose_rank(rows, settings, &units, &kept)?;
         model = learn::<T>(rows, channels, &kept, units, rank, None)?;
         if sticking_out as f64 > MANY * count as f64 {
@@ -82,18 +96,18 @@ pub fn settle<T: Scalar>(rows: &[f64], settings: &Settings) -> Result<Option<Set
     let (units, rank) = (model.units.clone(), model.lens.axes().count());
     let statistics = judge_unseen::<T>(rows, channels, &kept, &units, rank)?;
     if statistics[0].len() < LEAST_SETTLE {
-        return Ok(None);
+        return Ok(Err(Shortage::Judged(statistics[0].len())));
     }
     let model = learn::<T>(rows, channels, &kept, units, rank, settings.memory)?;
     let dropped = kept.iter().filter(|keep| !**keep).count();
-    Ok(Some(Settled { model, statistics, dropped }))
+    Ok(Ok(Settled { model, statistics, dropped }))
 }
 
-/// Units of the rows kept; None where fewer than two channels move.
-fn units(rows: &[f64], channels: usize, kept: &[bool]) -> Option<Units> {
+/// Units of the rows kept, of which at least two channels move.
+fn units(rows: &[f64], channels: usize, kept: &[bool]) -> Result<Units, Shortage> {
     let count = kept.iter().filter(|keep| **keep).count();
     let units = Units::of(rows, channels, kept, count.div_ceil(PRESENT));
-    (units.moving() >= 2).then_some(units)
+    if units.moving() >= 2 { Ok(units) } else { Err(Shortage::Moving(units.moving())) }
 }
 
 /// The rank asked for, or chosen, below the number of channels that move and of rows a fold leaves.

@@ -6,7 +6,7 @@
 
 /// A channel moves if its range exceeds this many roundings of its magnitude. A constant that went through a
 /// computation carries a few; its standard deviation is then not zero, only meaningless.
-const ROUNDINGS: f64 = 16.0;
+pub(super) const ROUNDINGS: f64 = 16.0;
 /// Scaled values are kept within this: their squares, summed over any number of channels and divided by the
 /// smallest energy in use, stay finite.
 const FAR: f64 = 1e60;
@@ -118,46 +118,8 @@ impl Summary {
 }
 
 /// Whether values between `least` and `most`, none larger than `largest`, move by more than rounding.
-fn moves(least: f64, most: f64, largest: f64) -> bool {
+pub(super) fn moves(least: f64, most: f64, largest: f64) -> bool {
     0.5 * most - 0.5 * least > 0.5 * ROUNDINGS * f64::EPSILON * largest
-}
-
-/// A channel that stayed out, watched for its first movement: it joins when it has moved and has shown `enough`
-/// values since.
-#[derive(Clone, Debug, Default)]
-pub struct Newcomer {
-    count: u64,
-    mean: f64,
-    square: f64,
-    first: f64,
-    stirred: bool,
-}
-
-impl Newcomer {
-    /// Takes in a value; returns mean and spread once they are known from `enough` values.
-    pub fn take(&mut self, value: f64, enough: u64) -> Option<(f64, f64)> {
-        if value.is_nan() {
-            return None;
-        }
-        if !self.stirred {
-            if self.count == 0 {
-                self.first = value;
-                self.count = 1;
-                return None;
-            }
-            if !moves(self.first.min(value), self.first.max(value), self.first.abs().max(value.abs())) {
-                return None;
-            }
-            *self = Self { stirred: true, ..Self::default() };
-        }
-        self.count += 1;
-        let step = value - self.mean;
-        self.mean += step / self.count as f64;
-        self.square += step * (value - self.mean);
-        let spread = (self.square / self.count as f64).sqrt();
-        let known = self.count >= enough && spread >= f64::MIN_POSITIVE && spread.is_finite();
-        (known && spread > ROUNDINGS * f64::EPSILON * self.mean.abs()).then_some((self.mean, spread))
-    }
 }
 
 #[cfg(test)]
@@ -200,17 +162,5 @@ mod tests {
             units.scale(&[-f64::MAX], &mut scaled);
             assert!(scaled[0].is_finite() && scaled[0] < 0.0);
         }
-    }
-
-    #[test]
-    fn a_newcomer_joins_after_it_has_moved_and_been_seen() {
-        let mut newcomer = Newcomer::default();
-        for _ in 0..1000 {
-            assert!(newcomer.take(5.0, 10).is_none());
-        }
-        let joined: Vec<_> = (0..12).filter_map(|i| newcomer.take(5.0 + f64::from(i % 3), 10)).collect();
-        // The first value of the twelve is the old one.
-        assert_eq!(joined.len(), 2);
-        assert!((joined[0].0 - 6.0).abs() < 0.2 && (joined[0].1 - 0.8).abs() < 0.1);
     }
 }

@@ -1,5 +1,6 @@
 //! The tracker against the decomposition of all rows at once.
 
+mod admitting;
 mod gaps;
 mod hardship;
 mod merging;

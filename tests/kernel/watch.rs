@@ -1,4 +1,7 @@
-//! The monitoring loop: what it says, learns, holds back and forgives.
+//! The monitoring loop: what it says of rows. What it learns and forgives is in `gate`, rows as they come in `input`.
+
+mod gate;
+mod input;
 
 use faer::Mat;
 use perpend::Error;
@@ -6,6 +9,7 @@ use perpend::watch::{Limits, Phase, Reading, Settings, Watch};
 
 use crate::watch_stream::{CHANNELS, Normal, each, healthy};
 
+/// A watch settled on 500 healthy rows.
 fn settled(seed: u64) -> Watch<f64> {
     let mut watch = Watch::new(Settings::new(CHANNELS)).unwrap();
     watch.settle_on(&healthy(500, seed)).unwrap();
@@ -108,209 +112,6 @@ fn replay_gives_the_readings_of_tick_to_the_last_bit() {
 }
 
 #[test]
-fn a_row_beyond_a_limit_is_not_learned_and_nothing_is_forgotten() {
-    let rows = healthy(2, 8);
-    let mut watch = settled(9);
-    let mut untouched = watch.clone();
-    let mut glitch = rows[..CHANNELS].to_vec();
-    glitch[3] += 1e5;
-    let reading = watch.tick(&glitch).unwrap();
-    assert!(reading.exceeds[0] && reading.weight == 0.0 && reading.phase == Phase::Exceeding);
-    // The model has not moved: the next row gets the same statistics.
-    let after = watch.tick(&rows[CHANNELS..]).unwrap().clone();
-    let plain = untouched.tick(&rows[CHANNELS..]).unwrap();
-    assert_eq!((after.spe.to_bits(), after.t2.to_bits()), (plain.spe.to_bits(), plain.t2.to_bits()));
-}
-
-#[test]
-fn no_fault_is_absorbed_before_hold_and_none_locks_it_up() {
-    for (name, size) in [("step", 6.0), ("huge step", 1e6)] {
-        let mut watch = settled(10);
-        let mut first_adopted = None;
-        let mut phases = Vec::new();
-        for (tick, row) in each(&healthy(6_000, 11)).enumerate() {
-            let mut row = row.to_vec();
-            row[2] += size;
-            row[7] -= 0.7 * size;
-            let reading = watch.tick(&row).unwrap();
-            if reading.phase == Phase::Adopting {
-                first_adopted.get_or_insert(tick);
-                assert!(reading.weight > 0.0 && reading.weight <= 1.0);
-            }
-            if tick < 300 {
-                assert!(reading.weight == 0.0 || !reading.exceeds_any(), "{name}: absorbed at {tick}");
-            }
-            phases.push(reading.phase);
-        }
-        let adopted = first_adopted.unwrap();
-        assert!((300..330).contains(&adopted), "{name}: adopted from {adopted}");
-        let healthy_at_the_end = phases[5_000..].iter().filter(|p| **p == Phase::Healthy).count();
-        assert!(healthy_at_the_end > 980, "{name}: {healthy_at_the_end} of 1000 healthy");
-    }
-}
-
-#[test]
-fn a_burst_leaves_no_trace() {
-    let mut watch = settled(12);
-    let mut normal = Normal::new(13);
-    let mut beyond = 0;
-    for (tick, row) in each(&healthy(1_500, 14)).enumerate() {
-        let mut row = row.to_vec();
-        if (200..300).contains(&tick) {
-            for value in &mut row {
-                *value += 1e4 * normal.draw();
-            }
-        }
-        let reading = watch.tick(&row).unwrap();
-        beyond += usize::from(tick >= 340 && reading.exceeds_any());
-    }
-    assert!(beyond < 10, "{beyond} of 1160 rows beyond after the burst");
-    let event = *watch.events().next().unwrap();
-    assert_eq!((event.start, watch.events().count()), (202, 1));
-    assert!(event.end.is_some_and(|end| (302..345).contains(&end)), "{event:?}");
-    assert!((200..300).contains(&event.peak) && event.peak_ratio > 1e6);
-}
-
-#[test]
-fn frozen_it_judges_and_learns_nothing_until_resumed() {
-    let probe = healthy(1, 15);
-    let mut watch = settled(16);
-    watch.freeze();
-    let before = watch.tick(&probe).unwrap().clone();
-    for row in each(&healthy(800, 17)) {
-        assert!(watch.tick(row).unwrap().weight == 0.0);
-    }
-    let after = watch.tick(&probe).unwrap();
-    assert_eq!(before.spe.to_bits(), after.spe.to_bits());
-    assert_eq!(before.spe_limit.to_bits(), after.spe_limit.to_bits());
-    watch.resume();
-    assert!(watch.tick(&probe).unwrap().weight > 0.0);
-    for row in each(&healthy(200, 18)) {
-        watch.tick(row).unwrap();
-    }
-    assert_ne!(before.spe.to_bits(), watch.tick(&probe).unwrap().spe.to_bits());
-}
-
-#[test]
-fn accepting_in_an_alarm_adopts_at_once_and_moves_the_baseline() {
-    let mut watch = settled(19);
-    let mut beyond_again = 0;
-    for (tick, row) in each(&healthy(1_500, 20)).enumerate() {
-        let mut row = row.to_vec();
-        row[5] += 8.0;
-        if tick == 40 {
-            assert_eq!(watch.phase(), Phase::Alarmed);
-            watch.accept();
-            assert!(!watch.events().any(|event| event.end.is_none()));
-        }
-        let reading = watch.tick(&row).unwrap();
-        if (41..45).contains(&tick) {
-            assert!(reading.weight > 0.0, "row {tick}");
-        }
-        beyond_again += usize::from(tick > 700 && reading.exceeds_any());
-    }
-    assert!(beyond_again < 20, "{beyond_again}");
-    assert!(watch.reading().drift.mean_shift.is_some_and(|shift| shift > 0.5));
-    watch.accept();
-    let row = healthy(1, 21);
-    assert!(watch.tick(&row).unwrap().drift.mean_shift.is_some_and(|shift| shift < 0.2));
-}
-
-#[test]
-fn verdicts_do_not_depend_on_units_or_levels() {
-    let rows = healthy(2_500, 22);
-    let mut plain = Watch::<f64>::new(Settings::new(CHANNELS)).unwrap();
-    let plain = plain.replay(&rows).unwrap();
-    for decimal in [false, true] {
-        let converted: Vec<f64> = rows
-            .iter()
-            .enumerate()
-            .map(|(index, value)| {
-                let channel = index % CHANNELS;
-                let power = channel as f64 - 6.0;
-                // Powers of two change nothing at all; powers of ten and new zeros round.
-                if decimal { value * 10_f64.powf(power) + 1e3 * power } else { value * (4.0 * power).exp2() }
-            })
-            .collect();
-        let mut watch = Watch::<f64>::new(Settings::new(CHANNELS)).unwrap();
-        let replay = watch.replay(&converted).unwrap();
-        assert_eq!(replay.alarm, plain.alarm);
-        assert_eq!(replay.exceeds, plain.exceeds);
-        if !decimal {
-            assert_eq!(replay.numbers[0].iter().map(|x| x.to_bits()).collect::<Vec<_>>(), {
-                plain.numbers[0].iter().map(|x| x.to_bits()).collect::<Vec<_>>()
-            });
-        }
-    }
-}
-
-#[test]
-fn a_movement_of_one_on_an_offset_of_a_thousand_million_is_judged() {
-    let lifted: Vec<f64> = healthy(2_000, 23).iter().map(|value| value + 1e9).collect();
-    let mut watch = Watch::<f64>::new(Settings::new(CHANNELS)).unwrap();
-    watch.replay(&lifted).unwrap();
-    let mut row = lifted[..CHANNELS].to_vec();
-    row[6] += 8.0;
-    let reading = watch.tick(&row).unwrap();
-    assert!(reading.exceeds[0] && reading.shares[6] > 0.5);
-}
-
-#[test]
-fn float32_models_give_the_same_verdicts() {
-    let mut rows = healthy(2_000, 24);
-    rows.chunks_exact_mut(CHANNELS).skip(1_500).for_each(|row| row[1] += 6.0);
-    let wide = Watch::<f64>::new(Settings::new(CHANNELS)).unwrap().replay(&rows).unwrap();
-    let narrow = Watch::<f32>::new(Settings::new(CHANNELS)).unwrap().replay(&rows).unwrap();
-    let differing = wide.alarm.iter().zip(&narrow.alarm).filter(|(a, b)| a != b).count();
-    assert!(differing <= 2, "{differing}");
-}
-
-#[test]
-fn a_constant_channel_has_no_say_until_it_has_moved() {
-    let mut rows = healthy(2_400, 25);
-    for (tick, row) in rows.chunks_exact_mut(CHANNELS).enumerate() {
-        if tick < 1_000 {
-            row[3] = 53.724;
-        }
-        // Arrives late.
-        if tick < 1_200 {
-            row[8] = f64::NAN;
-        }
-    }
-    let settings = Settings { settle: 300, ..Settings::new(CHANNELS) };
-    let mut watch = Watch::<f64>::new(settings).unwrap();
-    let mut alarmed = 0;
-    for (tick, row) in each(&rows).enumerate() {
-        let reading = watch.tick(row).unwrap();
-        alarmed += usize::from(reading.alarm);
-        if (300..1_000).contains(&tick) {
-            assert!(reading.spe.is_finite() && reading.contributions[3] == 0.0 && reading.shares[3] == 0.0);
-        }
-    }
-    assert!(watch.moves(3) && watch.moves(8));
-    assert!(alarmed < 30, "{alarmed} alarmed rows while two channels joined");
-    let mut row = rows[2_399 * CHANNELS..].to_vec();
-    row[3] += 40.0;
-    let reading = watch.tick(&row).unwrap();
-    assert!(reading.exceeds_any() && reading.shares[3] > 0.5, "{:?}", reading.shares);
-}
-
-#[test]
-fn stuck_and_vanished_channels_are_named_as_such() {
-    let mut watch = settled(26);
-    let rows = healthy(60, 27);
-    for (tick, row) in each(&rows).enumerate() {
-        let mut row = row.to_vec();
-        row[2] = rows[2];
-        row[9] = f64::NAN;
-        let reading = watch.tick(&row).unwrap();
-        assert_eq!(reading.conditions[2].stuck, tick >= 12, "{tick}");
-        assert_eq!(reading.conditions[9].vanished, tick >= 10, "{tick}");
-        assert!(reading.conditions[9].missing && !reading.conditions[0].stuck);
-    }
-}
-
-#[test]
 fn the_channel_that_is_wrong_is_the_first_suspect() {
     for channel in 0..CHANNELS {
         let mut watch = settled(28);
@@ -352,20 +153,6 @@ fn what_cannot_be_settled_on_is_refused_or_waited_out() {
     assert_eq!(waiting.phase(), Phase::Settling);
     waiting.replay(&healthy(200, 64)).unwrap();
     assert_ne!(waiting.phase(), Phase::Settling);
-}
-
-#[test]
-fn fewer_settling_rows_than_channels_will_do() {
-    let mut watch = Watch::<f64>::new(Settings { settle: 30, ..Settings::new(40) }).unwrap();
-    let mut normal = Normal::new(65);
-    let mixing: Vec<f64> = (0..40).map(|_| normal.draw()).collect();
-    for tick in 0..400 {
-        let shared = 3.0 * normal.draw();
-        let row: Vec<f64> = mixing.iter().map(|m| m * shared + 0.3 * normal.draw()).collect();
-        let reading = watch.tick(&row).unwrap();
-        assert!(tick < 30 || reading.spe.is_finite());
-        assert!(!reading.alarm, "{tick}");
-    }
 }
 
 #[test]

@@ -51,6 +51,11 @@ MISTAKES = {
         "1 row, fewer than the 500 to settle on.*--learn FILE or a smaller --settle",
     ),
     "too few rows": (GOOD, [], "60 rows, fewer than the 500 to settle on"),
+    "rows that never move": (
+        "flow,speed,torque\n" + "4.5,1200,31\n" * 80,
+        ["--settle", "50"],
+        "80 rows, and no 50 of them to settle on: .*two channels or more must move",
+    ),
     "time goes back": (
         "time,flow,speed\n2026-03-01 10:05,1,2\n2026-03-01 10:00,1,2\n",
         [],

@@ -69,6 +69,8 @@ def test_replay_gives_arrays_named_as_the_readings():
     rows = healthy(600, 4)
     rows[500:, 1] += 5
     rows[550, 2] = np.nan
+    rows[300:340, 3] = rows[300, 3]
+    rows[400:440, 4] = np.nan
     arrays = Watch(CHANNELS, settle=100).replay(rows)
     watch = Watch(CHANNELS, settle=100)
     readings = [watch.tick(row) for row in rows]
@@ -80,6 +82,9 @@ def test_replay_gives_arrays_named_as_the_readings():
     np.testing.assert_array_equal(arrays["drift"], drift)
     assert arrays["missing"].tolist() == [len(reading.missing) for reading in readings]
     assert arrays["contributions"].shape == (600, CHANNELS)
+    for name in ("stuck", "vanished"):
+        flags = [[channel in getattr(reading, name) for channel in watch.names] for reading in readings]
+        np.testing.assert_array_equal(arrays[name], flags)
     assert arrays["exceeds"].shape == (600, 4)
     np.testing.assert_array_equal(arrays["exceeds"].any(axis=1), [bool(r.exceeds) for r in readings])
 
