@@ -59,6 +59,14 @@ impl Mean {
         }
     }
 
+    /// Back to having seen nothing.
+    pub(super) fn clear(&mut self) {
+        for numbers in [&mut self.high, &mut self.low, &mut self.seen] {
+            numbers.fill(0.0);
+        }
+        (self.total, self.even) = (0.0, true);
+    }
+
     /// The mean, rounded.
     pub(super) fn values(&self) -> &[f64] {
         &self.high

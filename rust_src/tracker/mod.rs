@@ -98,6 +98,14 @@ impl<T: Scalar> Tracker<T> {
         })
     }
 
+    /// Forgets all that was learned, as if made anew. Nothing is allocated.
+    pub fn start_over(&mut self) {
+        self.mean.clear();
+        self.subspace.clear();
+        self.principal.clear();
+        (self.samples, self.skipped, self.clock) = (0, 0, 0.0);
+    }
+
     /// What it was made with.
     #[must_use]
     pub fn settings(&self) -> &Settings {

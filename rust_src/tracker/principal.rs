@@ -67,6 +67,12 @@ impl<T: Scalar> Principal<T> {
         }
     }
 
+    /// Back to having found nothing.
+    pub(super) fn clear(&mut self) {
+        self.energies.fill(0.0);
+        (self.count, self.total, self.lost, self.stale) = (0, 0.0, 0.0, true);
+    }
+
     /// The factor has changed.
     pub(super) fn outdate(&mut self) {
         self.stale = true;
@@ -200,6 +206,13 @@ impl<T: Scalar> Tracker<T> {
     #[must_use]
     pub fn total_energy(&self) -> f64 {
         self.principal.total
+    }
+
+    /// Variance of all channels together, of all rows learned so far. `O((rank + guard)^2)`.
+    #[must_use]
+    pub fn variance(&self) -> f64 {
+        let total = self.mean.total();
+        if total > 0.0 { (self.subspace.factor().energy() + self.subspace.lost()) / total } else { 0.0 }
     }
 
     /// Variance outside the reported axes, in all channels together, as of the last refresh.

@@ -60,6 +60,12 @@ impl<T: Scalar> Subspace<T> {
         }
     }
 
+    /// Back to having taken in nothing.
+    pub(super) fn clear(&mut self) {
+        self.factor.restore(0, &[]);
+        (self.lost, self.cuts) = (0.0, 0);
+    }
+
     /// Directions held.
     pub(super) fn count(&self) -> usize {
         self.factor.size()

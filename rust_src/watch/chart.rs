@@ -1,7 +1,7 @@
 //! A statistic with its limits: the value itself, and its smoothed form.
 
 use super::allowance::Allowance;
-use super::limits::histogram::Histogram;
+use super::learned::{Learned, Sample};
 use super::limits::moments::Moments;
 use super::limits::quantile::ChiSquare;
 use super::limits::{Limits, MomentLimit};
@@ -28,17 +28,16 @@ pub struct Verdict {
     pub smooth_exceeds: bool,
 }
 
-/// SPE or T2: moments, limits, smoothed form.
+/// SPE or T2: what was learned of it, limits, smoothed form.
 #[derive(Clone, Debug)]
 pub struct Chart {
     source: Limits,
     tail: f64,
-    moments: Moments,
-    /// Moments of the cube root of the statistic over its mean: what is smoothed.
-    roots: Moments,
+    now: Learned,
+    /// What is learned from nothing after adopting ([`super::recovery`]).
+    next: Learned,
     smooth: Smooth,
     bound: MomentLimit,
-    histogram: Option<Histogram>,
     /// Values beyond the limit that the histogram may count.
     counted: Allowance,
     /// Values below this are rounding.
@@ -51,41 +50,39 @@ impl Chart {
     /// value keeps a row.
     #[must_use]
     pub fn settle(source: Limits, tail: f64, values: &[f64], keep: f64, floor: f64) -> Self {
+        let mut moments = Moments::default();
+        let mut bound = MomentLimit::new(tail);
+        let mut limit = f64::INFINITY;
+        for _ in 0..PASSES {
+            moments = Moments::default();
+            for value in values {
+                moments.learn(value.max(floor).min(limit), keep);
+            }
+            limit = bound.follow(&moments);
+        }
+        let reference = (source == Limits::Empirical).then_some(moments.mean());
         let mut chart = Self {
             source,
             tail,
-            moments: Moments::default(),
-            roots: Moments::default(),
+            now: Learned { moments, ..Learned::new(reference) },
+            next: Learned::new(reference),
             smooth: Smooth::new(SHARE, tail),
-            bound: MomentLimit::new(tail),
-            histogram: None,
+            bound,
             counted: Allowance::of_quantile(tail),
             floor,
-            limit: f64::INFINITY,
+            limit: limit.max(floor),
         };
-        for _ in 0..PASSES {
-            chart.moments = Moments::default();
-            for value in values {
-                chart.moments.learn(value.max(floor).min(chart.limit), keep);
-            }
-            chart.limit = chart.bound.follow(&chart.moments);
-        }
-        chart.limit = chart.limit.max(floor);
-        if source == Limits::Empirical {
-            let mut histogram = Histogram::new(chart.moments.mean());
-            for value in values {
+        for value in values {
+            if let Some(histogram) = &mut chart.now.histogram {
                 histogram.learn(*value, keep);
             }
-            chart.histogram = Some(histogram);
-        }
-        for value in values {
             let root = chart.root(*value, chart.limit);
-            chart.roots.learn(root, keep);
+            chart.now.roots.learn(root, keep);
         }
-        chart.smooth.start(chart.roots.mean(), &chart.roots);
+        chart.smooth.start(&chart.now.roots);
         for value in values {
             chart.smooth.take(chart.root(*value, chart.limit));
-            chart.smooth.learn(keep);
+            chart.now.levels.learn(chart.smooth.winsorised(), keep);
         }
         chart.refresh_smooth();
         chart.smooth.reset();
@@ -104,20 +101,57 @@ impl Chart {
     /// Learns the value last judged as healthy, winsorised at the limit it was judged by. The quantile counts a value
     /// beyond as far as its allowance goes, or while `adopting`.
     pub fn learn(&mut self, value: f64, verdict: Verdict, keep: f64, adopting: bool) {
-        let limit = verdict.limit;
-        self.moments.learn(value.max(self.floor).min(limit), keep);
-        self.roots.learn(self.root(value, limit), keep);
-        self.smooth.learn(keep);
-        if let Some(histogram) = &mut self.histogram
-            && (self.counted.take(verdict.exceeds) || adopting)
-        {
-            histogram.learn(value.min(CREEP * limit), keep);
+        let counts = self.counted.take(verdict.exceeds) || adopting;
+        let sample = self.sample(value, verdict.limit, counts);
+        self.now.learn(sample, keep);
+    }
+
+    /// Learns it a second time, from nothing.
+    pub fn learn_anew(&mut self, value: f64, verdict: Verdict, keep: f64) {
+        let sample = self.sample(value, verdict.limit, !verdict.exceeds);
+        // In unit 1: its own mean is not known before the end.
+        let unit = self.unit();
+        self.next.learn(Sample { root: sample.root * unit, level: sample.level * unit, ..sample }, keep);
+    }
+
+    fn sample(&self, value: f64, limit: f64, counts: bool) -> Sample {
+        Sample {
+            value: value.max(self.floor).min(limit),
+            root: self.root(value, limit),
+            level: self.smooth.winsorised(),
+            counted: counts.then_some(value.min(CREEP * limit)),
         }
+    }
+
+    /// Begins to learn anew; the limits stay those of what was learned before.
+    pub fn begin_anew(&mut self) {
+        self.next.clear(self.now.moments.mean());
+    }
+
+    /// Mean of what was learned anew.
+    #[must_use]
+    pub fn mean_anew(&self) -> f64 {
+        self.next.moments.mean()
+    }
+
+    /// Lets what was learned anew take the place of what was learned before, and begins anew. Returns the new limit over
+    /// the old one.
+    pub fn take_anew(&mut self) -> f64 {
+        let (before, unit) = (self.limit, self.unit());
+        std::mem::swap(&mut self.now, &mut self.next);
+        self.smooth.scale(unit * self.now.take_unit());
+        for _ in 0..PASSES {
+            self.bound.follow(&self.now.moments);
+        }
+        self.refresh_limit();
+        self.refresh_smooth();
+        self.begin_anew();
+        self.limit / before
     }
 
     /// Moves the limit to the present moments. Not where the limit is set from the model's energies.
     pub fn refresh_limit(&mut self) {
-        let matched = self.bound.follow(&self.moments);
+        let matched = self.bound.follow(&self.now.moments);
         match self.source {
             Limits::Spectrum => return,
             Limits::Moments => self.limit = matched,
@@ -128,7 +162,7 @@ impl Chart {
 
     /// Moves the smoothed statistic's centre, spread and limit to the present moments.
     pub fn refresh_smooth(&mut self) {
-        self.smooth.refresh(&self.roots);
+        self.smooth.refresh(&self.now.roots, &self.now.levels);
     }
 
     /// Sets the limit, where it comes from the model's energies.
@@ -140,8 +174,8 @@ impl Chart {
 
     /// The quantile counted; beyond what the rows can tell, prolonged in the shape of the matched chi-square.
     fn empirical(&mut self) -> Option<f64> {
-        let n = self.moments.independent();
-        let (value, level) = self.histogram.as_mut()?.quantile(self.tail, n)?;
+        let n = self.now.moments.independent();
+        let (value, level) = self.now.histogram.as_mut()?.quantile(self.tail, n)?;
         if level <= self.tail {
             return Some(value);
         }
@@ -151,7 +185,12 @@ impl Chart {
 
     /// The cube root of `value` over the mean, winsorised at `limit`.
     fn root(&self, value: f64, limit: f64) -> f64 {
-        (value.max(self.floor).min(limit) / self.moments.mean().max(f64::MIN_POSITIVE)).cbrt()
+        (value.max(self.floor).min(limit) / self.now.moments.mean().max(f64::MIN_POSITIVE)).cbrt()
+    }
+
+    /// Cube root of the mean: the unit of [`Chart::root`].
+    fn unit(&self) -> f64 {
+        self.now.moments.mean().max(f64::MIN_POSITIVE).cbrt()
     }
 
     /// The smoothed statistic goes back to its healthy centre.
@@ -161,14 +200,14 @@ impl Chart {
 
     /// A channel joined that is expected to add this much to mean and variance.
     pub fn widen_for_newcomer(&mut self, mean: f64, variance: f64) {
-        self.moments.shift(mean, variance);
+        self.now.moments.shift(mean, variance);
         self.refresh_limit();
     }
 
     /// Winsorised mean of the healthy statistic.
     #[must_use]
     pub fn mean(&self) -> f64 {
-        self.moments.mean()
+        self.now.moments.mean()
     }
 
     /// The limit of a complete row.
@@ -180,7 +219,7 @@ impl Chart {
     /// How many rows of equal weight its moments are worth.
     #[must_use]
     pub fn count(&self) -> f64 {
-        self.moments.count()
+        self.now.moments.count()
     }
 
     /// How much wider than its healthy moments say the limit is, for resting on few rows: 1 or more.

@@ -6,15 +6,14 @@
 //! limit/statistic, until rows stay within the limits of themselves.
 //!
 //! The count is of rows beyond in succession, and a succession ends with `of` rows within in a row: a new regime
-//! that shows beyond the limits nine times in ten must be adopted too. While it adopts, and for three times `hold`
-//! rows after, the limits forget with time constant `hold`: else the rows met while adopting would leave
-//! them wide for a whole memory. So they do after a channel has joined, whose residual shrinks as it is learned.
+//! that shows beyond the limits nine times in ten must be adopted too. How the limits find back from it is
+//! [`super::recovery`]'s.
 //!
 //! Somebody may say that what is seen now is healthy. Rows beyond are then adopted from the next one on, and do not
 //! count for the alarm until `of` rows in a row were within, or for three times `hold` rows at most.
 
-/// How long, in `hold`s, limits forget quickly after adopting: three time constants leave 5 % of what was met.
-const SETTLING: u64 = 3;
+/// How long, in `hold`s, rows beyond are forgiven at most once somebody has said that they are healthy.
+const FORGIVEN: u64 = 3;
 
 /// Counts rows beyond the limits.
 #[derive(Clone, Debug)]
@@ -23,7 +22,6 @@ pub struct Gate {
     calm_needed: u64,
     beyond: u64,
     calm: u64,
-    recent: u64,
     /// Rows for which those beyond do not count for the alarm.
     forgiven: u64,
 }
@@ -32,12 +30,11 @@ impl Gate {
     /// Opens after `hold` rows beyond; `of` rows within end a succession.
     #[must_use]
     pub fn new(hold: u64, of: u64) -> Self {
-        Self { hold, calm_needed: of, beyond: 0, calm: 0, recent: 0, forgiven: 0 }
+        Self { hold, calm_needed: of, beyond: 0, calm: 0, forgiven: 0 }
     }
 
     /// Takes in whether the newest row exceeds a limit; returns whether it is to be adopted.
     pub fn take(&mut self, exceeds: bool) -> bool {
-        self.recent = self.recent.saturating_sub(1);
         self.forgiven = self.forgiven.saturating_sub(1);
         if exceeds {
             self.beyond = (self.beyond + 1).min(self.hold + 1);
@@ -49,28 +46,13 @@ impl Gate {
                 self.forgiven = 0;
             }
         }
-        let adopting = exceeds && self.beyond > self.hold;
-        if adopting {
-            self.hurry();
-        }
-        adopting
-    }
-
-    /// Limits are to forget quickly for a while.
-    pub fn hurry(&mut self) {
-        self.recent = self.hold.saturating_mul(SETTLING);
-    }
-
-    /// Whether limits are to forget quickly.
-    #[must_use]
-    pub fn hasty(&self) -> bool {
-        self.recent > 0
+        exceeds && self.beyond > self.hold
     }
 
     /// Lets rows beyond in from the next one on: somebody has said that they are healthy.
     pub fn open(&mut self) {
         self.beyond = self.hold;
-        self.forgiven = self.hold.saturating_mul(SETTLING);
+        self.forgiven = self.hold.saturating_mul(FORGIVEN);
     }
 
     /// Whether rows beyond do not count for the alarm.
@@ -95,7 +77,7 @@ mod tests {
     fn nothing_is_adopted_before_hold_rows_in_succession() {
         let mut gate = Gate::new(20, 5);
         assert!((0..20).all(|_| !gate.take(true)));
-        assert!(gate.take(true) && gate.hasty());
+        assert!(gate.take(true));
     }
 
     #[test]

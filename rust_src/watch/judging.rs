@@ -15,6 +15,7 @@ use super::limits::hotelling;
 use super::model::Model;
 use super::newcomer::Newcomer;
 use super::reading::{Phase, Reading};
+use super::recovery::Recovery;
 use super::settings::Settings;
 use super::settle::Settled;
 use super::suspects::{Lasting, share_of};
@@ -26,6 +27,10 @@ const TURN: u64 = 16;
 /// sparser rows spread too widely.
 const SHOWN: f64 = 0.5;
 
+/// A limit that falls below this share of itself from one window of the recovery to the next is still falling: the
+/// moments of so many rows err by less.
+const FALLING: f64 = 0.9;
+
 /// Everything a settled watch judges and learns with.
 #[derive(Clone)]
 pub(super) struct Judging<T: Scalar> {
@@ -34,6 +39,7 @@ pub(super) struct Judging<T: Scalar> {
     /// SPE and T2.
     charts: [Chart; 2],
     gate: Gate,
+    recovery: Recovery,
     allowance: Allowance,
     alarm: Alarm,
     lasting: Lasting,
@@ -54,6 +60,7 @@ impl<T: Scalar> Judging<T> {
         let baseline = Baseline::of(present(&model, &charts));
         let mut judging = Self {
             gate: Gate::new(settings.hold, settings.of as u64),
+            recovery: Recovery::new(settings.hold, model.tracker.settings().directions()),
             allowance: Allowance::of_rows(settings.false_alarm),
             alarm: Alarm::new(settings.confirm, settings.of),
             lasting: Lasting::new(settings.channels),
@@ -166,19 +173,54 @@ impl<T: Scalar> Judging<T> {
     ) -> Result<(), Error> {
         let exceeds = reading.exceeds_any();
         let adopting = reading.phase == Phase::Adopting;
+        if reading.weight > 0.0 {
+            self.model.learn(reading.weight)?;
+        }
         // A row beyond counts in the limits' moments as one at the limit, or they would feed on their own success; but not
         // while an alarm lasts, nor oftener than chance has it: a fault would lift them.
         let counts = (self.allowance.take(exceeds) && !(exceeds && self.alarm.on())) || adopting;
         if counts && judged.share >= SHOWN {
-            let keep = if self.gate.hasty() { self.settings.hasty_keep() } else { self.settings.keep() };
-            self.charts[0].learn(judged.spe, verdicts[0], keep, adopting);
-            self.charts[1].learn(judged.t2, verdicts[1], keep, adopting);
+            if adopting {
+                self.recover();
+            }
+            let recovering = self.recovery.active();
+            let keep = self.settings.keep();
+            let now = if recovering { self.settings.hasty_keep() } else { keep };
+            for ((chart, value), verdict) in self.charts.iter_mut().zip([judged.spe, judged.t2]).zip(verdicts)
+            {
+                chart.learn(value, *verdict, now, adopting);
+                if recovering && !adopting {
+                    chart.learn_anew(value, *verdict, keep);
+                }
+            }
+            if recovering && !exceeds {
+                self.model.learn_anew()?;
+            }
             self.take_turn();
+            if self.recovery.take() {
+                self.end_window()?;
+            }
         }
         if reading.weight > 0.0 {
-            self.model.learn(reading.weight)?;
             self.admit(row)?;
         }
+        Ok(())
+    }
+
+    /// The limits are to find back, from the next row on.
+    fn recover(&mut self) {
+        self.recovery.begin();
+        self.charts.iter_mut().for_each(Chart::begin_anew);
+        self.model.begin_anew();
+    }
+
+    /// What was learned since the window began takes the place of what was known; another follows where limits fell.
+    fn end_window(&mut self) -> Result<(), Error> {
+        let [spe, t2] = self.charts.each_ref().map(Chart::mean_anew);
+        self.model.take_anew(spe, t2)?;
+        self.follow_lens();
+        let least = self.charts.iter_mut().map(Chart::take_anew).fold(1.0, f64::min);
+        self.recovery.go_on(least < FALLING);
         Ok(())
     }
 
@@ -246,7 +288,7 @@ impl<T: Scalar> Judging<T> {
             }
         }
         if joined {
-            self.gate.hurry();
+            self.recover();
             self.renew();
         }
         Ok(())

@@ -21,6 +21,9 @@ use super::units::Units;
 const LAG: f64 = 0.01;
 /// Rows between two beginnings, at least.
 const LEAST_AGE: u32 = 16;
+/// How much more residual than a model of their own would leave, or how much other scores than its own rows, recent rows
+/// may show before a model is given up: their own model flatters itself by a tenth or two.
+const AMISS: f64 = 1.5;
 /// Roundings of a scaled value that a residual may carry without meaning anything.
 const ROUNDINGS: f64 = 8.0;
 
@@ -31,6 +34,8 @@ pub struct Model<T: Scalar> {
     pub units: Units,
     /// What the model has learned.
     pub tracker: Tracker<T>,
+    /// What is learned from nothing after adopting ([`super::recovery`]).
+    next: Tracker<T>,
     /// What rows are judged by.
     pub lens: Lens<T>,
     renewal: Renewal<T>,
@@ -53,6 +58,7 @@ impl<T: Scalar> Model<T> {
         let floor = rounding_energy::<T>(&units);
         Ok(Self {
             tracker: Tracker::new(settings)?,
+            next: Tracker::new(settings)?,
             lens: Lens::new(channels, rank),
             renewal: Renewal::with_room(channels, rank, settings.directions()),
             units,
@@ -67,13 +73,9 @@ impl<T: Scalar> Model<T> {
     }
 
     /// Forgets what was learned; the lens stays.
-    ///
-    /// # Errors
-    /// None that the tracker's settings did not give before.
-    pub fn start_over(&mut self) -> Result<(), Error> {
-        self.tracker = Tracker::new(*self.tracker.settings())?;
+    pub fn start_over(&mut self) {
+        self.tracker.start_over();
         (self.learned, self.recent, self.age) = (0.0, 0.0, 0);
-        Ok(())
     }
 
     /// Looks at a raw row: scales it and takes it from the mean. Returns whether it can be judged, and how.
@@ -100,6 +102,38 @@ impl<T: Scalar> Model<T> {
         self.learned = self.keep * self.learned + weight;
         self.recent += weight;
         self.age += 1;
+        Ok(())
+    }
+
+    /// Learns the row learned last a second time, from nothing.
+    ///
+    /// # Errors
+    /// As [`Model::learn`].
+    pub fn learn_anew(&mut self) -> Result<(), Error> {
+        self.next.update(&self.scaled, 1.0).map(|_| ())
+    }
+
+    /// Begins to learn anew; rows are judged by what was learned before.
+    pub fn begin_anew(&mut self) {
+        self.next.start_over();
+    }
+
+    /// Ends what was learned anew, from rows whose mean SPE and T2 are `spe` and `t2` by what was learned before: where that
+    /// describes them badly, the new takes its place. The past is let go then: a step of the mean is a direction of great
+    /// energy to it, and would take an axis for as long as it is remembered.
+    ///
+    /// # Errors
+    /// [`Error::NoConvergence`], never seen.
+    pub fn take_anew(&mut self, spe: f64, t2: f64) -> Result<(), Error> {
+        self.next.refresh()?;
+        let rank = self.lens.axes().count() as f64;
+        let left = self.next.noise_energy().max(self.floor);
+        if spe > AMISS * left || t2 > AMISS * rank || t2 < rank / AMISS {
+            std::mem::swap(&mut self.tracker, &mut self.next);
+            (self.learned, self.recent) = (self.tracker.total_weight(), 0.0);
+            self.renew();
+        }
+        self.next.start_over();
         Ok(())
     }
 

@@ -78,7 +78,7 @@ impl<T: Scalar> Renewal<T> {
         let directions = tracker.directions();
         self.size = directions.count();
         self.weight = tracker.total_weight();
-        self.total = tracker.total_energy();
+        self.total = tracker.variance();
         for index in 0..self.size {
             self.basis.row_mut(index).copy_from_slice(directions.row(index));
             let row = self.turning.rows.row_mut(index);

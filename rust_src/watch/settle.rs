@@ -142,7 +142,7 @@ fn learn<T: Scalar>(
     let passes = if rows.iter().any(|value| value.is_nan()) { PASSES } else { 1 };
     for pass in 0..passes {
         if pass > 0 {
-            model.start_over()?;
+            model.start_over();
         }
         for (row, _) in rows.chunks_exact(channels).zip(kept).filter(|(_, keep)| **keep) {
             model.judge(row);

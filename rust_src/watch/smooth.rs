@@ -27,7 +27,6 @@ const MOST_SKEWED: f64 = 1.0;
 pub struct Smooth {
     share: f64,
     level: f64,
-    moments: Moments,
     centre: f64,
     spread: f64,
     /// What skewness adds to the limit.
@@ -40,13 +39,13 @@ impl Smooth {
     #[must_use]
     pub fn new(share: f64, tail: f64) -> Self {
         let widening = Widening::new(tail);
-        Self { share, level: 0.0, moments: Moments::default(), centre: 0.0, spread: 1.0, skew: 0.0, widening }
+        Self { share, level: 0.0, centre: 0.0, spread: 1.0, skew: 0.0, widening }
     }
 
-    /// Starts at `level`, healthy centre and spread being those of a series `u` with these moments.
-    pub fn start(&mut self, level: f64, series: &Moments) {
-        self.level = level;
-        self.refresh(series);
+    /// Starts at the mean of a series `u` with these moments.
+    pub fn start(&mut self, series: &Moments) {
+        self.level = series.mean();
+        self.refresh(series, &Moments::default());
     }
 
     /// Takes in the newest value.
@@ -66,27 +65,32 @@ impl Smooth {
         (self.widening.normal() + self.skew) * self.widening.factor()
     }
 
-    /// Learns the present level as healthy, winsorised at the limit.
-    pub fn learn(&mut self, keep: f64) {
-        let bound = self.centre + self.limit() * self.spread;
-        let level = if self.moments.count() > 0.0 { self.level.min(bound) } else { self.level };
-        self.moments.learn(level, keep);
+    /// The present level, winsorised at the limit: what is to be learned of it.
+    #[must_use]
+    pub fn winsorised(&self) -> f64 {
+        self.level.min(self.centre + self.limit() * self.spread)
     }
 
-    /// Moves centre, spread and limit to the present moments; `series` are those of the values taken in.
-    pub fn refresh(&mut self, series: &Moments) {
-        let known = self.moments.count() > 1.0;
-        self.centre = if known { self.moments.mean() } else { series.mean() };
-        let own = if known { self.moments.variance() } else { 0.0 };
+    /// Moves centre, spread and limit to the present moments: `series` of the values taken in, `levels` of what became of
+    /// them.
+    pub fn refresh(&mut self, series: &Moments, levels: &Moments) {
+        let known = levels.count() > 1.0;
+        self.centre = if known { levels.mean() } else { series.mean() };
+        let own = if known { levels.variance() } else { 0.0 };
         let variance = own.max(averaged(series.variance(), series.correlation(), self.share));
         // A series that never moves: any finite spread will do, its value is zero.
         self.spread = if variance > 0.0 { variance.sqrt() } else { 1.0 };
-        let independent = if known { self.moments.independent() } else { series.independent() * self.share };
+        let independent = if known { levels.independent() } else { series.independent() * self.share };
         self.widening.follow(independent, 0.0);
         let z = self.widening.normal();
         let counted = independent / (independent + SKEWED);
-        let skewness = if known { self.moments.skewness().clamp(0.0, MOST_SKEWED) * counted } else { 0.0 };
+        let skewness = if known { levels.skewness().clamp(0.0, MOST_SKEWED) * counted } else { 0.0 };
         self.skew = (z * z - 1.0) / 6.0 * skewness;
+    }
+
+    /// As if all values had been `factor` times what they were; centre and spread follow with the next refresh.
+    pub fn scale(&mut self, factor: f64) {
+        self.level *= factor;
     }
 
     /// Back to the healthy centre.
@@ -180,15 +184,15 @@ mod tests {
     fn the_limit_is_wide_while_few_rows_are_known() {
         let mut normal = Normal(9);
         let mut smooth = Smooth::new(SHARE, 1e-3);
-        let mut series = Moments::default();
+        let (mut series, mut levels) = (Moments::default(), Moments::default());
         let mut limits = Vec::new();
         for i in 1..=20_000 {
             let u = normal.draw();
             series.learn(u, 1.0);
             smooth.take(u);
-            smooth.learn(1.0);
+            levels.learn(if i > 300 { smooth.winsorised() } else { smooth.level }, 1.0);
             if i == 300 || i == 20_000 {
-                smooth.refresh(&series);
+                smooth.refresh(&series, &levels);
                 limits.push(smooth.limit());
             }
         }

@@ -186,3 +186,27 @@ fn bad_rows_and_settings_are_refused_and_change_nothing() {
         assert!(matches!(refused, Some(Error::Parameter { name: got, .. }) if got == name), "{refused:?}");
     }
 }
+
+#[test]
+fn limits_from_energies_count_those_that_are_not_tracked() {
+    // Rank 3 and 8 guard directions of 60: most of the noise is in none of them.
+    let channels = 60;
+    let settings = Settings { limits: Limits::Spectrum, rank: Some(3), ..Settings::new(channels) };
+    let mut watch = Watch::<f64>::new(settings).unwrap();
+    let mut normal = Normal::new(68);
+    let mixing: Vec<f64> = (0..3 * channels).map(|_| normal.draw()).collect();
+    let mut beyond = 0;
+    for tick in 0..4_000 {
+        let movement = [normal.draw(), normal.draw(), normal.draw()];
+        let row: Vec<f64> = (0..channels)
+            .map(|channel| {
+                let shared: f64 = (0..3).map(|k| movement[k] * mixing[3 * channel + k]).sum();
+                shared + 0.5 * normal.draw()
+            })
+            .collect();
+        let reading = watch.tick(&row).unwrap();
+        beyond += usize::from(tick >= 500 && reading.exceeds[0]);
+    }
+    // One in four thousand is asked for.
+    assert!(beyond < 8, "{beyond} of 3500");
+}

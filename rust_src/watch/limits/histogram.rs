@@ -36,6 +36,13 @@ impl Histogram {
         Self { counts: vec![0.0; BUCKETS], reference, weight: 1.0, total: 0.0, cursor: 0, above: 0.0 }
     }
 
+    /// Forgets all counts; `reference` is a typical value from here on.
+    pub fn clear(&mut self, reference: f64) {
+        self.counts.fill(0.0);
+        self.reference = if reference > 0.0 { reference } else { f64::MIN_POSITIVE };
+        (self.weight, self.total, self.cursor, self.above) = (1.0, 0.0, 0, 0.0);
+    }
+
     /// Takes in `value`; what came before keeps the share `keep` of its weight.
     pub fn learn(&mut self, value: f64, keep: f64) {
         self.weight /= keep;

@@ -38,6 +38,15 @@ impl Moments {
         self.last = value;
     }
 
+    /// As if all values had been `factor` times what they were.
+    pub fn scale(&mut self, factor: f64) {
+        self.mean *= factor;
+        self.variance *= factor * factor;
+        self.third *= factor.powi(3);
+        self.covariance *= factor * factor;
+        self.last *= factor;
+    }
+
     /// Adds to mean and variance what a newly joined part of the statistic is expected to bring.
     pub fn shift(&mut self, mean: f64, variance: f64) {
         self.mean += mean;

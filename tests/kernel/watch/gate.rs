@@ -114,6 +114,24 @@ fn accepting_in_an_alarm_adopts_at_once_and_moves_the_baseline() {
     assert!(watch.tick(&row).unwrap().drift.mean_shift.is_some_and(|shift| shift < 0.2));
 }
 
+#[test]
+fn limits_find_back_after_a_regime_was_adopted() {
+    for limits in [Limits::Moments, Limits::Empirical] {
+        let mut watch = Watch::<f64>::new(Settings { limits, ..Settings::new(CHANNELS) }).unwrap();
+        let mut rows = healthy(6_000, 53);
+        for row in rows.chunks_exact_mut(CHANNELS).skip(2_000) {
+            row[0] += 15.0;
+            row[5] -= 9.0;
+        }
+        let replay = watch.replay(&rows).unwrap();
+        assert!(replay.phase.contains(&Phase::Adopting));
+        for (name, column) in [("SPE", 1), ("T2", 3)] {
+            let (before, after) = (replay.numbers[column][1_999], replay.numbers[column][5_999]);
+            assert!((0.7..1.4).contains(&(after / before)), "{limits:?} {name}: {before} became {after}");
+        }
+    }
+}
+
 /// Healthy rows, of which from row 2000 on one in `every` has a fault far beyond the limits.
 fn now_and_then(every: usize) -> Vec<f64> {
     let mut rows = healthy(12_000, 40);
