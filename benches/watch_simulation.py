@@ -222,7 +222,9 @@ def tables() -> None:
             f"| {d.first:.0%} |",
             flush=True,
         )
-    print("\nRows until a lasting change of regime is taken up, `hold` of 300 among them, and the SPE limit 2000 to 4000 rows after\n")
+    print(
+        "\nRows until a lasting change of regime is taken up, `hold` of 300 among them, and the SPE limit 2000 to 4000 rows after\n"
+    )
     print("| change | rows | limit over that of a fresh watch |\n|---|---|---|")
     for change in CHANGES:
         rows, width = recovery(change, 12)
