@@ -170,8 +170,8 @@ LATER = 2_000
 def recovery(change: str, seeds: int, memory: float = 5_000) -> tuple[float, float]:
     """What becomes of a change of regime: medians over machines.
 
-    Rows until 200 in a row hold at most four beyond a limit, and the SPE limit 2000 to 4000 rows after the change, in means of
-    the SPE, over that of a watch that has seen none but the new regime (and has its units from it).
+    Rows until 200 in a row hold at most four beyond a limit, and the SPE limit 2000 to 4000 rows after the change, in
+    means of the SPE, over that of a watch that has seen none but the new regime (and has its units from it).
     """
     rows_needed, widths = [], []
     for seed in range(seeds):
@@ -223,7 +223,7 @@ def tables() -> None:
             flush=True,
         )
     print(
-        "\nRows until a lasting change of regime is taken up, `hold` of 300 among them, and the SPE limit 2000 to 4000 rows after\n"
+        "\nRows until a lasting change of regime is taken up, `hold` of 300 among them; SPE limit 2000 to 4000 rows on\n"
     )
     print("| change | rows | limit over that of a fresh watch |\n|---|---|---|")
     for change in CHANGES:
