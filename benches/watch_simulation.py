@@ -223,7 +223,7 @@ def tables() -> None:
             flush=True,
         )
     print(
-        "\nRows until a lasting change of regime is taken up, `hold` of 300 among them; SPE limit 2000 to 4000 rows on\n"
+        "\nRows until a lasting change of regime is taken up, `hold` of 300 among them; SPE limit after 2000\n"
     )
     print("| change | rows | limit over that of a fresh watch |\n|---|---|---|")
     for change in CHANGES:

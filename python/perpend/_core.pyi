@@ -909,6 +909,88 @@ class Watch:
         or for three times `hold` rows at most.
         """
 
+    def copy(self) -> Watch:
+        """Copy the watch; the two go separate ways."""
+
+    def __copy__(self) -> Watch: ...
+    def __deepcopy__(self, _memo: object, /) -> Watch: ...
+    def to_bytes(self) -> bytes:
+        """Give the state as bytes: all that what the watch does next depends on.
+
+        A safetensors container, which any reader of that format opens: ``watch.model.lens.axes`` and their energies, the
+        tracker as ``watch.model.tracker...``, moments of the statistics, alarms, names; settings and counters in the
+        metadata. The same state gives the same bytes. Only the last reading is no part of it.
+
+        Returns
+        -------
+        bytes
+            About as long as the arrays; as much again is taken while they are made.
+
+        Raises
+        ------
+        StateError
+            Where a number has grown beyond the finite ones.
+        """
+
+    @classmethod
+    def from_bytes(cls, data: Buffer) -> Watch:
+        """Make the watch whose state `to_bytes` gave; on the same kernel path it goes on bit for bit.
+
+        Sizes, checksum, finiteness, ranges, triangularity and orthonormality are checked, the latter by
+        ``2 * (rank + guard) * channels`` flops a row. Takes a small multiple of the length of the data, whatever the
+        data says.
+
+        Parameters
+        ----------
+        data : bytes-like
+            Neither modified nor kept.
+
+        Raises
+        ------
+        StateError
+            Where `data` is anything else: the message says what is wrong.
+        TypeError
+            Where it has no bytes.
+        """
+
+    def save(self, path: str | os.PathLike[str]) -> None:
+        """Write the state to a file, at once and for good.
+
+        The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
+        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
+        meanwhile.
+
+        Parameters
+        ----------
+        path : path-like
+            A file, to be made or replaced; where it is a link, what that points to.
+
+        Raises
+        ------
+        OSError
+            Where it cannot be written; the old file is then as it was.
+        StateError
+            As `to_bytes`.
+        """
+
+    @classmethod
+    def load(cls, path: str | os.PathLike[str]) -> Watch:
+        """Make the watch whose state a file holds; as `from_bytes`.
+
+        Parameters
+        ----------
+        path : path-like
+            What `save` wrote, in this release or an earlier one.
+
+        Raises
+        ------
+        StateError
+            Where the file holds anything else.
+        OSError
+            Where it cannot be read.
+        """
+
+    def __reduce__(self) -> tuple[Any, ...]: ...
     @property
     def names(self) -> list[str]:
         """Names of the channels."""

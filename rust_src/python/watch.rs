@@ -5,18 +5,20 @@ use std::sync::Arc;
 use numpy::PyArray1;
 use pyo3::exceptions::PyValueError;
 use pyo3::prelude::*;
-use pyo3::types::{PyDict, PyList};
+use pyo3::types::{PyBytes, PyDict, PyList, PyType};
 
 use super::convert::{Count, Stored, block, matrix, row};
 use super::errors::fenced;
 use super::guarded::Guarded;
 use super::reading::{PyReading, passed};
+use super::state::{self, kept};
 use crate::Scalar;
 use crate::watch::event::Event;
 use crate::watch::replay::{NUMBERS, Replay};
 use crate::watch::{Limits, Settings, Watch};
 
 /// A watch in one of the stored types.
+#[derive(Clone)]
 enum Inner {
     Float64(Watch<f64>),
     Float32(Watch<f32>),
@@ -32,6 +34,8 @@ macro_rules! either {
     };
 }
 
+kept!(Inner);
+
 #[doc = stub_doc!("Watch")]
 #[pyclass(frozen, module = "perpend", name = "Watch")]
 pub(super) struct PyWatch {
@@ -41,6 +45,11 @@ pub(super) struct PyWatch {
 }
 
 impl PyWatch {
+    fn around(inner: Inner) -> Self {
+        let names: Vec<String> = either!(&inner, watch => watch.names().to_vec());
+        Self { channels: names.len(), names: Arc::new(names), inner: Guarded::new(inner) }
+    }
+
     fn event<'py>(&self, py: Python<'py>, event: &Event) -> PyResult<Bound<'py, PyDict>> {
         let dict = PyDict::new(py);
         dict.set_item("start", event.start)?;
@@ -58,35 +67,17 @@ impl PyWatch {
 
 /// Reads the `limits` argument.
 fn limits(name: &str) -> PyResult<Limits> {
-    match name {
-        "moments" => Ok(Limits::Moments),
-        "empirical" => Ok(Limits::Empirical),
-        "spectrum" => Ok(Limits::Spectrum),
-        other => Err(PyValueError::new_err(format!(
-            "limits: expected \"moments\", \"empirical\" or \"spectrum\", got \"{other}\""
-        ))),
-    }
+    Limits::named(name).ok_or_else(|| {
+        let names = Limits::ALL.map(|limits| format!("\"{}\"", limits.name()));
+        PyValueError::new_err(format!("limits: expected one of {}, got \"{name}\"", names.join(", ")))
+    })
 }
 
-/// Names given, or made; as many as there are channels, each once.
-fn names(given: Option<Vec<String>>, channels: usize) -> PyResult<Vec<String>> {
-    let Some(names) = given else {
-        return Ok((0..channels).map(|channel| format!("channel_{channel}")).collect());
-    };
-    if names.len() != channels {
-        let got = names.len();
-        return Err(PyValueError::new_err(format!("names: expected {channels}, got {got}")));
-    }
-    let mut sorted: Vec<&String> = names.iter().collect();
-    sorted.sort();
-    match sorted.windows(2).find(|pair| pair[0] == pair[1]) {
-        Some(pair) => Err(PyValueError::new_err(format!("names: expected each once, got {} twice", pair[0]))),
-        None => Ok(names),
-    }
-}
-
-fn make<T: Scalar>(settings: Settings) -> PyResult<Watch<T>> {
-    fenced(|| Watch::new(settings))
+fn make<T: Scalar>(settings: Settings, names: Option<Vec<String>>) -> PyResult<Watch<T>> {
+    fenced(|| match names {
+        Some(names) => Watch::with_names(settings, names),
+        None => Watch::new(settings),
+    })
 }
 
 /// The readings as arrays.
@@ -147,13 +138,10 @@ impl PyWatch {
             hold: hold.0 as u64,
             limits,
         };
-        let channels = channels.0;
-        let inner = match dtype {
-            Stored::Float64 => Inner::Float64(make(settings)?),
-            Stored::Float32 => Inner::Float32(make(settings)?),
-        };
-        let names = Arc::new(self::names(names, channels)?);
-        Ok(Self { inner: Guarded::new(inner), channels, names })
+        Ok(Self::around(match dtype {
+            Stored::Float64 => Inner::Float64(make(settings, names)?),
+            Stored::Float32 => Inner::Float32(make(settings, names)?),
+        }))
     }
 
     #[doc = stub_doc!("Watch.tick")]
@@ -210,6 +198,49 @@ impl PyWatch {
             either!(inner, watch => watch.accept());
             Ok(())
         })
+    }
+
+    #[doc = stub_doc!("Watch.copy")]
+    fn copy(&self, py: Python<'_>) -> Self {
+        Self {
+            inner: Guarded::new(self.inner.read(py, Inner::clone)),
+            channels: self.channels,
+            names: Arc::clone(&self.names),
+        }
+    }
+
+    fn __copy__(&self, py: Python<'_>) -> Self {
+        self.copy(py)
+    }
+
+    fn __deepcopy__(&self, py: Python<'_>, _memo: &Bound<'_, PyAny>) -> Self {
+        self.copy(py)
+    }
+
+    #[doc = stub_doc!("Watch.to_bytes")]
+    fn to_bytes<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyBytes>> {
+        Ok(PyBytes::new(py, &state::to_bytes(py, &self.inner)?))
+    }
+
+    #[doc = stub_doc!("Watch.from_bytes")]
+    #[classmethod]
+    fn from_bytes(_class: &Bound<'_, PyType>, data: &Bound<'_, PyAny>) -> PyResult<Self> {
+        Ok(Self::around(state::from_bytes(data)?))
+    }
+
+    #[doc = stub_doc!("Watch.save")]
+    fn save(&self, path: &Bound<'_, PyAny>) -> PyResult<()> {
+        state::save(&self.inner, path)
+    }
+
+    #[doc = stub_doc!("Watch.load")]
+    #[classmethod]
+    fn load(_class: &Bound<'_, PyType>, path: &Bound<'_, PyAny>) -> PyResult<Self> {
+        Ok(Self::around(state::load(path)?))
+    }
+
+    fn __reduce__<'py>(slf: &Bound<'py, Self>) -> PyResult<(Bound<'py, PyAny>, (Bound<'py, PyBytes>,))> {
+        Ok((slf.get_type().getattr("from_bytes")?, (slf.get().to_bytes(slf.py())?,)))
     }
 
     #[doc = stub_doc!("Watch.names")]

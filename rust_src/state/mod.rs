@@ -7,7 +7,7 @@
 //!
 //! | word | says |
 //! |---|---|
-//! | `class` | `Basis`, `Tracker` |
+//! | `class` | `Basis`, `Tracker`, `Watch` |
 //! | `schema` | [`SCHEMA`] of the release that wrote it |
 //! | `dtype` | the type rows are stored in, `float64` or `float32` |
 //! | `checksum` | CRC-32 of all names, words, shapes and data, in the order of their names |
@@ -22,12 +22,14 @@
 //!
 //! Bytes are taken for hostile. Before any room is made, sizes are held against the length of what was given, so reading
 //! takes a small multiple of it, and a header is at most [`MOST_HEADER`] bytes. The checksum finds what rotted; the checks
-//! behind it (settings in range, finite numbers, a triangle that is one, orthonormal rows) find what was made up.
+//! behind it (settings in range, finite numbers, a triangle that is one, orthonormal rows, indices within) find what was
+//! made up.
 //!
 //! # How a class joins
 //!
 //! It implements [`State`] in a file `state.rs` beside it. Its `write` takes the object apart field by field, naming each, so
-//! that the compiler asks about a new one; what has a state of its own is written [`Writer::within`] it.
+//! that the compiler asks about a new one; what has a state of its own is written [`Writer::within`] it. A part of a class
+//! whose fields are its own affair implements [`Part`] where it is defined.
 
 mod read;
 mod write;
@@ -94,6 +96,15 @@ pub trait State: Sized {
     fn from_bytes(bytes: &[u8]) -> Result<Self, Error> {
         Reader::open(bytes)?.restore()
     }
+}
+
+/// What is made with its room and settings, and then filled with the rest of its state.
+pub(crate) trait Part {
+    /// Writes all that what it does next depends on.
+    fn write(&self, to: &mut Writer);
+
+    /// Reads what [`Part::write`] wrote, and checks it. What was there counts for nothing, on an error as well.
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error>;
 }
 
 /// A state error.

@@ -6,7 +6,7 @@ use std::str::FromStr;
 use safetensors::tensor::TensorView;
 use safetensors::{Dtype, SafeTensorError, SafeTensors};
 
-use super::{MOST_HEADER, SCHEMA, State, checksum, stored, wrong};
+use super::{MOST_HEADER, Part, SCHEMA, State, checksum, stored, wrong};
 use crate::error::Error;
 use crate::rows::RowStore;
 use crate::scalar::Scalar;
@@ -119,6 +119,11 @@ impl<'a> Reader<'a> {
         outcome
     }
 
+    /// Fills a part that was written under its own name.
+    pub(crate) fn part(&mut self, name: &str, part: &mut (impl Part + ?Sized)) -> Result<(), Error> {
+        self.within(name, |from| part.restore(from))
+    }
+
     /// A setting, flag or single number.
     ///
     /// # Errors
@@ -160,6 +165,15 @@ impl<'a> Reader<'a> {
         Err(self.unlike(name, "a finite number, 0 or more", &amount.to_string()))
     }
 
+    /// A number that is not NaN.
+    ///
+    /// # Errors
+    /// As [`Reader::parse`].
+    pub fn number(&mut self, name: &str) -> Result<f64, Error> {
+        let number: f64 = self.parse(name)?;
+        if number.is_nan() { Err(self.unlike(name, "a number", "NaN")) } else { Ok(number) }
+    }
+
     /// An index or length of at most `most`.
     ///
     /// # Errors
@@ -170,6 +184,19 @@ impl<'a> Reader<'a> {
             return Ok(value);
         }
         Err(self.unlike(name, &format!("at most {most}"), &value.to_string()))
+    }
+
+    /// Refuses where there is no array of that name and shape; it stays to be read. Asked before room is made for what
+    /// goes with it.
+    ///
+    /// # Errors
+    /// [`Error::State`].
+    pub fn expect(&self, name: &str, shape: &[usize]) -> Result<(), Error> {
+        match self.arrays.get(&self.name(name)) {
+            Some(view) if view.shape() == shape => Ok(()),
+            Some(view) => Err(self.unlike(name, &format!("shape {shape:?}"), &format!("{:?}", view.shape()))),
+            None => Err(wrong(format!("{}: expected an array of that name, got none", self.name(name)))),
+        }
     }
 
     /// `count` finite numbers.
@@ -190,6 +217,50 @@ impl<'a> Reader<'a> {
         match amounts.iter().find(|amount| **amount < 0.0) {
             None => Ok(amounts),
             Some(amount) => Err(self.unlike(name, "numbers of 0 or more", &amount.to_string())),
+        }
+    }
+
+    /// Rows of `columns` numbers each, `most` of them at most, in which NaN stands for none.
+    ///
+    /// # Errors
+    /// [`Error::State`].
+    pub fn table(&mut self, name: &str, columns: usize, most: usize) -> Result<Vec<f64>, Error> {
+        let view = self.array(name, Dtype::F64, &[None, Some(columns)])?;
+        let rows = view.shape()[0];
+        if rows > most {
+            return Err(self.unlike(name, &format!("at most {most} rows"), &rows.to_string()));
+        }
+        let values: Vec<f64> = entries(view.data()).collect();
+        match values.iter().find(|value| value.is_infinite()) {
+            None => Ok(values),
+            Some(value) => Err(self.unlike(name, "finite numbers, or NaN for none", &value.to_string())),
+        }
+    }
+
+    /// `count` texts.
+    ///
+    /// # Errors
+    /// [`Error::State`].
+    pub fn texts(&mut self, name: &str, count: usize) -> Result<Vec<String>, Error> {
+        let lengths = self.numbers(&format!("{name}.lengths"), count)?;
+        let view = self.array(name, Dtype::U8, &[None])?;
+        let mut data = view.data();
+        let mut texts = Vec::with_capacity(count);
+        for length in lengths {
+            #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "compared after")]
+            let whole = length as usize;
+            let text = data.split_at_checked(whole).filter(|_| length >= 0.0 && length.fract() == 0.0);
+            let Some((text, rest)) = text else {
+                return Err(self.unlike(name, "texts as long as their lengths say", "others"));
+            };
+            let text = std::str::from_utf8(text).map_err(|_| self.unlike(name, "text", "other bytes"))?;
+            texts.push(text.to_owned());
+            data = rest;
+        }
+        if data.is_empty() {
+            Ok(texts)
+        } else {
+            Err(self.unlike(name, "no more than its texts", "more bytes"))
         }
     }
 

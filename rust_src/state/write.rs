@@ -6,7 +6,7 @@ use std::fmt::Debug;
 
 use safetensors::{Dtype, View};
 
-use super::{MOST_HEADER, SCHEMA, checksum, stored, wrong};
+use super::{MOST_HEADER, Part, SCHEMA, checksum, stored, wrong};
 use crate::error::Error;
 use crate::rows::Rows;
 use crate::scalar::Scalar;
@@ -60,6 +60,11 @@ impl Writer {
         self.within = outer;
     }
 
+    /// A part under its own name.
+    pub(crate) fn part(&mut self, name: &str, part: &(impl Part + ?Sized)) {
+        self.within(name, |to| part.write(to));
+    }
+
     /// A setting, counter, flag or single number. The debug form of a number reads back to the same bits.
     pub fn word(&mut self, name: &str, value: impl Debug) {
         self.words.insert(self.name(name), format!("{value:?}"));
@@ -81,6 +86,24 @@ impl Writer {
     /// A list of finite numbers.
     pub fn numbers(&mut self, name: &str, values: &[f64]) {
         self.array::<f64>(name, vec![values.len()], values.iter().copied());
+    }
+
+    /// Rows of `columns` numbers each, row-major, in which NaN stands for none.
+    pub fn table(&mut self, name: &str, columns: usize, values: &[f64]) {
+        if let Some(index) = values.iter().position(|value| value.is_infinite()) {
+            self.check(name, index, values[index]);
+        }
+        let data = values.iter().flat_map(|value| value.to_le_bytes()).collect();
+        let shape = vec![values.len().checked_div(columns).unwrap_or(0), columns];
+        self.arrays.insert(self.name(name), Array { dtype: Dtype::F64, shape, data });
+    }
+
+    /// Texts: their bytes one after another, and the length of each.
+    pub fn texts(&mut self, name: &str, texts: &[String]) {
+        let lengths: Vec<f64> = texts.iter().map(|text| text.len() as f64).collect();
+        self.numbers(&format!("{name}.lengths"), &lengths);
+        let data: Vec<u8> = texts.iter().flat_map(|text| text.bytes()).collect();
+        self.arrays.insert(self.name(name), Array { dtype: Dtype::U8, shape: vec![data.len()], data });
     }
 
     /// A square upper triangle, given by its entries on and above the diagonal; zeros below.

@@ -4,6 +4,9 @@
 //! buys silence. Off is likewise: `confirm` of the last `of` rows within the limits. The window starts empty after
 //! each switch, so that the rows that switched it on do not also keep it on, and it does not flutter.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// The switch and the rows it looks at.
 #[derive(Clone, Debug)]
 pub struct Alarm {
@@ -51,6 +54,27 @@ impl Alarm {
     fn restart(&mut self) {
         self.next = 0;
         self.filled = 0;
+    }
+}
+
+/// The rows looked at, in their ring, as zeros and ones.
+impl Part for Alarm {
+    fn write(&self, to: &mut Writer) {
+        let Self { confirm: _, window, next, filled, on } = self;
+        let rows: Vec<f64> = window.iter().map(|row| f64::from(u8::from(*row))).collect();
+        to.numbers("window", &rows);
+        to.word("next", next);
+        to.word("filled", filled);
+        to.word("on", on);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let of = self.window.len();
+        self.window = from.numbers("window", of)?.iter().map(|row| *row > 0.0).collect();
+        self.next = from.at_most("next", of - 1)?;
+        self.filled = from.at_most("filled", of)?;
+        self.on = from.parse("on")?;
+        Ok(())
     }
 }
 

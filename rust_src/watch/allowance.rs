@@ -6,6 +6,9 @@
 //! learned. What tells the two apart is how often they come: chance gives `false_alarm` of all rows. So rows beyond count
 //! as long as they come no oftener than a few times that, with some to spare for the bursts that correlated rows make.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// Rows beyond that count in moments, in shares of what was asked for: heavy tails and correlation of healthy rows give up
 /// to three times that.
 const OFTENER: f64 = 2.5;
@@ -49,6 +52,18 @@ impl Allowance {
             self.left -= 1.0;
         }
         granted
+    }
+}
+
+impl Part for Allowance {
+    fn write(&self, to: &mut Writer) {
+        let Self { rate: _, most: _, left } = self;
+        to.number("left", *left);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.left = from.amount("left")?.min(self.most);
+        Ok(())
     }
 }
 

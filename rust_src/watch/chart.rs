@@ -6,6 +6,8 @@ use super::limits::moments::Moments;
 use super::limits::quantile::ChiSquare;
 use super::limits::{Limits, MomentLimit};
 use super::smooth::{SHARE, Smooth};
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
 
 /// Passes over the settling rows until limit and winsorised moments agree; each gains about two digits.
 const PASSES: usize = 12;
@@ -60,18 +62,9 @@ impl Chart {
             }
             limit = bound.follow(&moments);
         }
-        let reference = (source == Limits::Empirical).then_some(moments.mean());
-        let mut chart = Self {
-            source,
-            tail,
-            now: Learned { moments, ..Learned::new(reference) },
-            next: Learned::new(reference),
-            smooth: Smooth::new(SHARE, tail),
-            bound,
-            counted: Allowance::of_quantile(tail),
-            floor,
-            limit: limit.max(floor),
-        };
+        let mut chart = Self { bound, floor, limit: limit.max(floor), ..Self::new(source, tail) };
+        chart.now.clear(moments.mean());
+        chart.now.moments = moments;
         for value in values {
             if let Some(histogram) = &mut chart.now.histogram {
                 histogram.learn(*value, keep);
@@ -88,6 +81,23 @@ impl Chart {
         chart.smooth.reset();
         chart.refresh_limit();
         chart
+    }
+
+    /// To be restored: nothing learned.
+    #[must_use]
+    pub fn new(source: Limits, tail: f64) -> Self {
+        let reference = (source == Limits::Empirical).then_some(1.0);
+        Self {
+            source,
+            tail,
+            now: Learned::new(reference),
+            next: Learned::new(reference),
+            smooth: Smooth::new(SHARE, tail),
+            bound: MomentLimit::new(tail),
+            counted: Allowance::of_quantile(tail),
+            floor: f64::MIN_POSITIVE,
+            limit: f64::INFINITY,
+        }
     }
 
     /// Judges a value of which the `share` of its degrees of freedom was observed. The smoothed statistic moves.
@@ -226,5 +236,37 @@ impl Chart {
     #[must_use]
     pub fn widening(&self) -> f64 {
         if self.source == Limits::Spectrum { 1.0 } else { self.bound.widening() }
+    }
+}
+
+impl Part for Chart {
+    fn write(&self, to: &mut Writer) {
+        let Self { source: _, tail: _, now, next, smooth, bound, counted, floor, limit } = self;
+        to.part("now", now);
+        to.part("next", next);
+        to.part("smooth", smooth);
+        to.part("bound", bound);
+        to.part("counted", counted);
+        to.number("floor", *floor);
+        // Infinite where the rows are too few for one.
+        to.word("limit", limit);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        from.part("now", &mut self.now)?;
+        from.part("next", &mut self.next)?;
+        from.part("smooth", &mut self.smooth)?;
+        from.part("bound", &mut self.bound)?;
+        from.part("counted", &mut self.counted)?;
+        self.floor = from.amount("floor")?;
+        self.limit = from.number("limit")?;
+        if self.floor <= 0.0 || self.limit < self.floor {
+            return Err(from.unlike(
+                "limit",
+                "a limit not below the positive floor",
+                &self.limit.to_string(),
+            ));
+        }
+        Ok(())
     }
 }

@@ -11,9 +11,11 @@
 //!
 //! The comparison is made once for each renewal of the axes, an axis or a few rotations a tick.
 
+use crate::error::Error;
 use crate::ops;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
+use crate::state::{Part, Reader, Writer};
 
 use super::turning::Turning;
 
@@ -174,6 +176,66 @@ fn told<T: Scalar>(present: Present<'_, T>) -> bool {
         square += count as f64 * energy * next / (gap * gap * present.rows);
     }
     square.sqrt() <= UNTOLD
+}
+
+impl Part for Drift {
+    fn write(&self, to: &mut Writer) {
+        let Self { angle, captured, mean_shift } = *self;
+        let numbers = [angle, captured, mean_shift].map(|figure| figure.unwrap_or(f64::NAN));
+        to.table("figures", 3, &numbers);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let figures: Vec<Option<f64>> =
+            from.table("figures", 3, 1)?.iter().map(|figure| (!figure.is_nan()).then_some(*figure)).collect();
+        let [angle, captured, mean_shift] = figures[..] else {
+            return Err(from.unlike("figures", "one row of three", "none"));
+        };
+        *self = Self { angle, captured, mean_shift };
+        Ok(())
+    }
+}
+
+/// The step of a comparison under way is the axis to be compared next, or how many there are.
+impl<T: Scalar> Part for Baseline<T> {
+    fn write(&self, to: &mut Writer) {
+        let Self { axes, energies, mean, stage, captured, residuals, scores: _, vector: _ } = self;
+        let rank = energies.len();
+        to.rows("axes", axes.view(rank), rank);
+        to.numbers("energies", energies);
+        to.numbers("mean", mean);
+        let step = match stage {
+            Stage::Idle => None,
+            Stage::Axis(index) => Some(*index),
+            Stage::Turning => Some(rank),
+        };
+        to.optional("step", step);
+        if step.is_some() {
+            to.number("captured", *captured);
+            to.part("residuals", residuals);
+            // Rows compared so far that the turning does not know of yet.
+            to.rows("compared", residuals.rows.view(rank), rank);
+        }
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let (rank, channels) = (self.energies.len(), self.mean.len());
+        self.axes = from.rows("axes", rank, channels)?;
+        self.energies = from.amounts("energies", rank)?;
+        self.mean = from.numbers("mean", channels)?;
+        self.stage = match from.optional::<usize>("step")? {
+            None => Stage::Idle,
+            Some(step) if step < rank => Stage::Axis(step),
+            Some(step) if step == rank => Stage::Turning,
+            Some(step) => return Err(from.unlike("step", &format!("at most {rank}"), &step.to_string())),
+        };
+        if self.stage != Stage::Idle {
+            self.captured = from.amount("captured")?;
+            from.part("residuals", &mut self.residuals)?;
+            self.residuals.rows = from.rows("compared", rank, channels)?;
+        }
+        Ok(())
+    }
 }
 
 #[cfg(test)]

@@ -1,5 +1,7 @@
 //! Alarms, from on to off, in a bounded list.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
 use std::collections::VecDeque;
 
 use super::suspects::three_foremost;
@@ -83,6 +85,52 @@ impl Events {
     /// Oldest first.
     pub fn iter(&self) -> impl Iterator<Item = &Event> {
         self.list.iter()
+    }
+}
+
+/// Numbers of an event in its row: start, end, peak, ratio, four limits, three suspects with their shares.
+const COLUMNS: usize = 14;
+
+/// A row an event; no end while it lasts.
+impl Part for Events {
+    fn write(&self, to: &mut Writer) {
+        let Self { list, shares, rows } = self;
+        let mut table = Vec::with_capacity(COLUMNS * list.len());
+        for event in list {
+            let Event { start, end, peak, peak_ratio, exceeds, suspects } = *event;
+            table.extend([start as f64, end.map_or(f64::NAN, |end| end as f64), peak as f64, peak_ratio]);
+            table.extend(exceeds.map(|passed| f64::from(u8::from(passed))));
+            table.extend(suspects.iter().flat_map(|(channel, share)| [*channel as f64, *share]));
+        }
+        to.table("events", COLUMNS, &table);
+        to.numbers("shares", shares);
+        to.number("rows", *rows);
+    }
+
+    #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "as saturates, NaN is 0")]
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let channels = self.shares.len();
+        let table = from.table("events", COLUMNS, KEPT)?;
+        self.list.clear();
+        for row in table.chunks_exact(COLUMNS) {
+            let suspect = |place: usize| (row[8 + 2 * place] as usize, row[9 + 2 * place]);
+            let event = Event {
+                start: row[0] as u64,
+                end: (!row[1].is_nan()).then_some(row[1] as u64),
+                peak: row[2] as u64,
+                peak_ratio: row[3],
+                exceeds: std::array::from_fn(|limit| row[4 + limit] > 0.0),
+                suspects: std::array::from_fn(suspect),
+            };
+            let known = event.suspects.iter().all(|(channel, share)| *channel < channels && !share.is_nan());
+            if event.peak_ratio.is_nan() || !known {
+                return Err(from.unlike("events", "a peak, and suspects among the channels", "others"));
+            }
+            self.list.push_back(event);
+        }
+        self.shares = from.numbers("shares", channels)?;
+        self.rows = from.amount("rows")?;
+        Ok(())
     }
 }
 

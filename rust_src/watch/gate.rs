@@ -12,6 +12,9 @@
 //! Somebody may say that what is seen now is healthy. Rows beyond are then adopted from the next one on, and do not
 //! count for the alarm until `of` rows in a row were within, or for three times `hold` rows at most.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// How long, in `hold`s, rows beyond are forgiven at most once somebody has said that they are healthy.
 const FORGIVEN: u64 = 3;
 
@@ -37,7 +40,7 @@ impl Gate {
     pub fn take(&mut self, exceeds: bool) -> bool {
         self.forgiven = self.forgiven.saturating_sub(1);
         if exceeds {
-            self.beyond = (self.beyond + 1).min(self.hold + 1);
+            self.beyond = (self.beyond + 1).min(self.hold.saturating_add(1));
             self.calm = 0;
         } else {
             self.calm = (self.calm + 1).min(self.calm_needed);
@@ -66,6 +69,22 @@ impl Gate {
         self.beyond = 0;
         self.calm = 0;
         self.forgiven = 0;
+    }
+}
+
+impl Part for Gate {
+    fn write(&self, to: &mut Writer) {
+        let Self { hold: _, calm_needed: _, beyond, calm, forgiven } = self;
+        to.word("beyond", beyond);
+        to.word("calm", calm);
+        to.word("forgiven", forgiven);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.beyond = from.counter("beyond")?.min(self.hold.saturating_add(1));
+        self.calm = from.counter("calm")?.min(self.calm_needed);
+        self.forgiven = from.counter("forgiven")?;
+        Ok(())
     }
 }
 

@@ -34,20 +34,20 @@ const FALLING: f64 = 0.9;
 /// Everything a settled watch judges and learns with.
 #[derive(Clone)]
 pub(super) struct Judging<T: Scalar> {
-    settings: Settings,
-    model: Model<T>,
+    pub(super) settings: Settings,
+    pub(super) model: Model<T>,
     /// SPE and T2.
-    charts: [Chart; 2],
-    gate: Gate,
-    recovery: Recovery,
-    allowance: Allowance,
-    alarm: Alarm,
-    lasting: Lasting,
-    baseline: Baseline<T>,
-    drift: Drift,
-    newcomers: Vec<Newcomer>,
-    learned: u64,
-    dropped: usize,
+    pub(super) charts: [Chart; 2],
+    pub(super) gate: Gate,
+    pub(super) recovery: Recovery,
+    pub(super) allowance: Allowance,
+    pub(super) alarm: Alarm,
+    pub(super) lasting: Lasting,
+    pub(super) baseline: Baseline<T>,
+    pub(super) drift: Drift,
+    pub(super) newcomers: Vec<Newcomer>,
+    pub(super) learned: u64,
+    pub(super) dropped: usize,
 }
 
 impl<T: Scalar> Judging<T> {
@@ -315,7 +315,7 @@ impl<T: Scalar> Judging<T> {
 }
 
 /// The model as the comparison with a baseline needs it.
-fn present<'a, T: Scalar>(model: &'a Model<T>, charts: &[Chart; 2]) -> Present<'a, T> {
+pub(super) fn present<'a, T: Scalar>(model: &'a Model<T>, charts: &[Chart; 2]) -> Present<'a, T> {
     Present {
         axes: model.lens.axes(),
         energies: model.lens.energies(),
@@ -336,7 +336,7 @@ fn ratio(reading: &Reading) -> f64 {
     pairs.iter().zip(reading.exceeds).filter(|(_, exceeds)| *exceeds).fold(
         1.0,
         |most, ((value, limit), _)| {
-            let ratio = value / limit;
+            let ratio = (value / limit).min(f64::MAX);
             if ratio > most { ratio } else { most }
         },
     )

@@ -2,6 +2,8 @@
 
 use super::limits::histogram::Histogram;
 use super::limits::moments::Moments;
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
 
 /// What there is to learn of one value.
 #[derive(Clone, Copy, Debug)]
@@ -60,5 +62,24 @@ impl Learned {
         if let Some(histogram) = &mut self.histogram {
             histogram.clear(reference);
         }
+    }
+}
+
+impl Part for Learned {
+    fn write(&self, to: &mut Writer) {
+        let Self { moments, roots, levels, histogram } = self;
+        to.part("statistic", moments);
+        to.part("roots", roots);
+        to.part("levels", levels);
+        if let Some(histogram) = histogram {
+            to.part("histogram", histogram);
+        }
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        from.part("statistic", &mut self.moments)?;
+        from.part("roots", &mut self.roots)?;
+        from.part("levels", &mut self.levels)?;
+        self.histogram.as_mut().map_or(Ok(()), |histogram| from.part("histogram", histogram))
     }
 }

@@ -13,9 +13,11 @@
 //! `channels - rank` degrees of freedom of the SPE the share `(observed - k) / (channels - rank)` is left, `k` being
 //! the trace of the fit; the SPE is scaled up by it.
 
+use crate::error::Error;
 use crate::ops;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
+use crate::state::{Part, Reader, Writer, check_orthonormal};
 
 use super::cholesky::Cholesky;
 
@@ -215,5 +217,49 @@ impl<T: Scalar> Lens<T> {
             *value = if observed && curvature > 0.0 { phi * phi / curvature } else { 0.0 };
         }
         &self.blame
+    }
+}
+
+/// The axes are zero from where the rows so far did not fill them.
+impl<T: Scalar> Part for Lens<T> {
+    fn write(&self, to: &mut Writer) {
+        let Self {
+            axes,
+            rank,
+            moving,
+            energies,
+            noise,
+            left: _,
+            told: _,
+            deviation: _,
+            scores: _,
+            residual: _,
+            weights: _,
+            blame: _,
+            fit: _,
+        } = self;
+        to.rows("axes", axes.view(*rank), *rank);
+        to.numbers("energies", energies);
+        to.number("noise", *noise);
+        to.word("moving", moving);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let (rank, channels) = (self.rank, self.deviation.len());
+        let axes = from.rows::<T>("axes", rank, channels)?;
+        let energies = from.amounts("energies", rank)?;
+        let is_zero = |index: usize| axes.row(index).iter().all(|entry| *entry == T::default());
+        let filled = (0..rank).find(|index| is_zero(*index)).unwrap_or(rank);
+        check_orthonormal(&from.name("axes"), axes.view(filled))?;
+        if !(filled..rank).all(is_zero) || energies.contains(&0.0) {
+            return Err(from.unlike("axes", "axes with energies, zeros after them", "others"));
+        }
+        // Energies are not below the floor already.
+        self.take(axes.view(rank), &energies, from.at_most("moving", channels)?, 0.0);
+        self.noise = from.amount("noise")?;
+        if self.noise <= 0.0 {
+            return Err(from.unlike("noise", "a positive number", "0"));
+        }
+        Ok(())
     }
 }

@@ -41,6 +41,7 @@ pub mod runs;
 mod settings;
 mod settle;
 pub mod smooth;
+mod state;
 pub mod suspects;
 mod turning;
 pub mod units;
@@ -71,6 +72,7 @@ enum Stage<T: Scalar> {
 #[derive(Clone)]
 pub struct Watch<T: Scalar> {
     settings: Settings,
+    names: Vec<String>,
     stage: Stage<T>,
     runs: Runs,
     events: Events,
@@ -88,9 +90,25 @@ impl<T: Scalar> Watch<T> {
     /// window of the alarm, cannot be held.
     pub fn new(settings: Settings) -> Result<Self, Error> {
         settings.check()?;
-        let channels = settings.channels;
-        check_room(channels, settings.settle)?;
+        check_room(settings.channels, settings.settle)?;
         check_room(settings.of, 1)?;
+        let names = (0..settings.channels).map(|channel| format!("channel_{channel}")).collect();
+        Self::blank(settings, names)
+    }
+
+    /// The same with the names of the channels, each once.
+    ///
+    /// # Errors
+    /// As [`Watch::new`], and [`Error::Parameter`] for the names.
+    pub fn with_names(settings: Settings, names: Vec<String>) -> Result<Self, Error> {
+        check_names(&names, settings.channels)?;
+        Ok(Self { names, ..Self::new(settings)? })
+    }
+
+    /// Of settings that have been checked.
+    fn blank(settings: Settings, names: Vec<String>) -> Result<Self, Error> {
+        let channels = settings.channels;
+        check_names(&names, channels)?;
         Ok(Self {
             stage: Stage::Settling(Vec::new()),
             runs: Runs::new(channels),
@@ -99,6 +117,7 @@ impl<T: Scalar> Watch<T> {
             phase: Phase::Settling,
             ticks: 0,
             frozen: false,
+            names,
             settings,
         })
     }
@@ -244,6 +263,12 @@ impl<T: Scalar> Watch<T> {
         &self.settings
     }
 
+    /// Names of the channels.
+    #[must_use]
+    pub fn names(&self) -> &[String] {
+        &self.names
+    }
+
     /// Where it stands.
     #[must_use]
     pub fn phase(&self) -> Phase {
@@ -321,5 +346,19 @@ impl<T: Scalar> Watch<T> {
         rows.chunks_exact(channels)
             .enumerate()
             .try_for_each(|(index, row)| self.check(row).map_err(|error| error.in_row(index)))
+    }
+}
+
+/// Refuses names that are not one a channel, each once.
+fn check_names(names: &[String], channels: usize) -> Result<(), Error> {
+    let refuse = |expected: String, got: String| Err(Error::Parameter { name: "names", expected, got });
+    if names.len() != channels {
+        return refuse(channels.to_string(), names.len().to_string());
+    }
+    let mut sorted: Vec<&String> = names.iter().collect();
+    sorted.sort_unstable();
+    match sorted.windows(2).find(|pair| pair[0] == pair[1]) {
+        Some(pair) => refuse("each once".into(), format!("{} twice", pair[0])),
+        None => Ok(()),
     }
 }

@@ -9,6 +9,7 @@
 
 use crate::error::Error;
 use crate::scalar::Scalar;
+use crate::state::{Part, Reader, State, Writer};
 use crate::tracker::{self, Tracker};
 
 use super::lens::{Judged, Lens};
@@ -101,7 +102,7 @@ impl<T: Scalar> Model<T> {
         self.tracker.update(&self.scaled, weight)?;
         self.learned = self.keep * self.learned + weight;
         self.recent += weight;
-        self.age += 1;
+        self.age = self.age.saturating_add(1);
         Ok(())
     }
 
@@ -211,4 +212,64 @@ fn rounding_energy<T: Scalar>(units: &Units) -> f64 {
     let stored = ROUNDINGS * T::EPSILON;
     let offset = ROUNDINGS * f64::EPSILON * units.offset();
     units.moving().max(1) as f64 * (stored * stored + offset * offset)
+}
+
+/// The model that is learned anew is written only where it has learned something.
+impl<T: Scalar> Part for Model<T> {
+    fn write(&self, to: &mut Writer) {
+        let Self {
+            units,
+            tracker,
+            next,
+            lens,
+            renewal,
+            scaled: _,
+            observed: _,
+            floor,
+            keep: _,
+            learned,
+            recent,
+            age,
+        } = self;
+        to.part("units", units);
+        to.within("tracker", |to| tracker.write(to));
+        let anew = next.samples() > 0;
+        to.word("anew", anew);
+        if anew {
+            to.within("next", |to| next.write(to));
+        }
+        to.part("lens", lens);
+        to.part("renewal", renewal);
+        to.number("floor", *floor);
+        to.number("learned", *learned);
+        to.number("recent", *recent);
+        to.word("age", age);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        from.part("units", &mut self.units)?;
+        if self.units.moving() <= self.lens.axes().count() {
+            return Err(from.unlike("units", "more channels that move than axes", "fewer"));
+        }
+        let settings = *self.tracker.settings();
+        let trackers = [("tracker", true, &mut self.tracker), ("next", from.parse("anew")?, &mut self.next)];
+        for (name, there, tracker) in trackers {
+            if there {
+                *tracker = from.within(name, Tracker::read)?;
+                if *tracker.settings() != settings {
+                    return Err(from.unlike(name, "the settings of the watch", "others"));
+                }
+            }
+        }
+        from.part("lens", &mut self.lens)?;
+        from.part("renewal", &mut self.renewal)?;
+        self.floor = from.amount("floor")?;
+        if self.floor <= 0.0 {
+            return Err(from.unlike("floor", "a positive number", "0"));
+        }
+        self.learned = from.amount("learned")?;
+        self.recent = from.amount("recent")?;
+        self.age = from.parse("age")?;
+        Ok(())
+    }
 }

@@ -6,8 +6,10 @@
 //! movement in the residual for as long as the past is remembered.
 
 use super::units::{ROUNDINGS, moves};
+use crate::error::Error;
 use crate::rows::Rows;
 use crate::scalar::Scalar;
+use crate::state::{Part, Reader, Writer};
 
 /// What is known of a channel that takes no part.
 #[derive(Clone, Debug, Default)]
@@ -55,7 +57,7 @@ impl Newcomer {
             let zeros = vec![0.0; deviations.len()];
             *self = Self { stirred: true, products: zeros.clone(), others: zeros, ..Self::default() };
         }
-        self.count += 1;
+        self.count = self.count.saturating_add(1);
         let share = (self.count as f64).recip();
         let step = value - self.mean;
         self.mean += step * share;
@@ -67,6 +69,11 @@ impl Newcomer {
             *other += away * share;
         }
         let spread = self.spread();
+        if !self.square.is_finite() {
+            // Beyond all numbers that a channel can be judged by: from the beginning.
+            *self = Self::default();
+            return false;
+        }
         let known = self.count >= enough && spread >= f64::MIN_POSITIVE && spread.is_finite();
         known && spread > ROUNDINGS * f64::EPSILON * self.mean.abs()
     }
@@ -95,6 +102,49 @@ impl Newcomer {
 
     fn spread(&self) -> f64 {
         (self.square / self.count as f64).sqrt()
+    }
+}
+
+/// A row of five numbers a channel; for those that have stirred two rows each, products and others, one after another.
+impl Part for [Newcomer] {
+    fn write(&self, to: &mut Writer) {
+        let mut values = Vec::with_capacity(5 * self.len());
+        let mut with_others = Vec::new();
+        for newcomer in self {
+            let Newcomer { count, mean, square, first, stirred, products, others } = newcomer;
+            values.extend([*count as f64, *mean, *square, *first, f64::from(u8::from(*stirred))]);
+            with_others.extend_from_slice(products);
+            with_others.extend_from_slice(others);
+        }
+        to.table("values", 5, &values);
+        to.table("with_others", self.len(), &with_others);
+    }
+
+    #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "as saturates, NaN is 0")]
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let channels = self.len();
+        let values = from.table("values", 5, channels)?;
+        let with_others = from.table("with_others", channels, 2 * channels)?;
+        let mut pairs = with_others.chunks_exact(2 * channels);
+        let mut rows = values.chunks_exact(5);
+        for newcomer in self {
+            let Some(&[count, mean, square, first, stirred]) = rows.next() else {
+                return Err(from.unlike("values", "a row a channel", "fewer"));
+            };
+            *newcomer = Newcomer { count: count as u64, mean, square, first, ..Newcomer::default() };
+            if stirred > 0.0 {
+                let Some(pair) = pairs.next() else {
+                    return Err(from.unlike("with_others", "two rows for each that stirred", "fewer"));
+                };
+                let (products, others) = pair.split_at(channels);
+                (newcomer.stirred, newcomer.products, newcomer.others) =
+                    (true, products.to_vec(), others.to_vec());
+            }
+        }
+        if values.iter().chain(&with_others).any(|value| value.is_nan()) || pairs.next().is_some() {
+            return Err(from.unlike("values", "numbers, and no rows of others that did not stir", "others"));
+        }
+        Ok(())
     }
 }
 

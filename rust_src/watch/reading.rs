@@ -19,6 +19,10 @@ pub enum Phase {
 }
 
 impl Phase {
+    /// All of them.
+    pub const ALL: [Self; 5] =
+        [Self::Settling, Self::Healthy, Self::Exceeding, Self::Alarmed, Self::Adopting];
+
     /// Its name.
     #[must_use]
     pub fn name(self) -> &'static str {

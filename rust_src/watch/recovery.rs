@@ -7,6 +7,9 @@
 //! that, or because the model is still taking up the regime: three windows follow one another, and more until the limits no
 //! longer fall. A limit that rests on one window is widened for it.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// Shortest window: the moments of fewer rows say little.
 const LEAST: u64 = 100;
 /// Rows of a window for each direction tracked: a model of fewer fits them too well.
@@ -55,6 +58,20 @@ impl Recovery {
         let was_active = self.active();
         self.left = self.left.saturating_sub(1);
         was_active && self.left == 0
+    }
+}
+
+impl Part for Recovery {
+    fn write(&self, to: &mut Writer) {
+        let Self { window: _, left, ended } = self;
+        to.word("left", left);
+        to.word("ended", ended);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.left = from.counter("left")?.min(self.window);
+        self.ended = from.parse("ended")?;
+        Ok(())
     }
 }
 

@@ -5,9 +5,11 @@
 //! basis and factor are copied, the rows of the copied factor turned pair by pair ([`super::turning`]), and the axes put
 //! together one by one, `Pace` pairs or one axis a tick. The axes in use meanwhile are the last ones.
 
+use crate::error::Error;
 use crate::ops;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
+use crate::state::{Part, Reader, Writer, check_orthonormal};
 use crate::tracker::Tracker;
 
 use super::turning::Turning;
@@ -154,5 +156,77 @@ impl<T: Scalar> Renewal<T> {
         let basis = self.basis.view(self.size);
         ops::subtract(basis, &self.coefficients[..self.size], &self.zero, &mut self.sum);
         ops::scale_into(1.0, &self.sum, axis);
+    }
+}
+
+/// The step of work under way is 0 while turning, then one more than the axis to be put together next.
+impl<T: Scalar> Part for Renewal<T> {
+    fn write(&self, to: &mut Writer) {
+        let Self {
+            stage,
+            rank,
+            basis,
+            size,
+            turning,
+            order,
+            energies,
+            total,
+            weight,
+            axes,
+            pace: _,
+            coefficients: _,
+            sum: _,
+            zero: _,
+        } = self;
+        to.numbers("energies", energies);
+        to.number("total", *total);
+        let step = match stage {
+            Stage::Idle => None,
+            Stage::Turning => Some(0),
+            Stage::Axis(index) => Some(1 + *index),
+            Stage::Ready => Some(1 + *rank),
+        };
+        to.optional("step", step);
+        if step.is_none() {
+            return;
+        }
+        to.number("weight", *weight);
+        to.rows("basis", basis.view(*size), basis.rows());
+        to.word("size", size);
+        to.part("turning", turning);
+        let order: Vec<f64> = order.iter().map(|row| *row as f64).collect();
+        to.numbers("order", if step > Some(0) { &order } else { &[] });
+        to.rows("axes", axes.view(*rank), *rank);
+    }
+
+    #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "compared after")]
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let (limit, channels) = (self.basis.rows(), self.basis.dim());
+        self.energies = from.amounts("energies", limit)?;
+        self.total = from.amount("total")?;
+        self.stage = match from.optional::<usize>("step")? {
+            None => Stage::Idle,
+            Some(0) => Stage::Turning,
+            Some(step) if step <= self.rank => Stage::Axis(step - 1),
+            Some(step) => {
+                return Err(from.unlike("step", &format!("at most {}", self.rank), &step.to_string()));
+            }
+        };
+        if self.stage == Stage::Idle {
+            return Ok(());
+        }
+        self.weight = from.amount("weight")?;
+        self.size = from.at_most("size", limit)?;
+        self.basis = from.rows("basis", limit, channels)?;
+        check_orthonormal(&from.name("basis"), self.basis.view(self.size))?;
+        from.part("turning", &mut self.turning)?;
+        let ordered = if self.stage == Stage::Turning { 0 } else { self.size };
+        self.order.clear();
+        self.order.extend(from.numbers("order", ordered)?.iter().map(|row| *row as usize));
+        if self.turning.squares().len() != self.size || self.order.iter().any(|row| *row >= self.size) {
+            return Err(from.unlike("order", "an order of the rows that are turned", "others"));
+        }
+        self.axes = from.rows("axes", self.rank, channels)?;
+        Ok(())
     }
 }

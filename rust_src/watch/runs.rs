@@ -4,6 +4,9 @@
 //! goes without one. The chance of a run falls geometrically with its length: one twice as long as the longest among
 //! `n` rows comes about once in `n^2`. A channel is stuck, or vanished, when its run is that long and a few rows more.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// Rows beyond twice the longest healthy run: a sensor that never repeats a value is stuck at its twelfth.
 const MARGIN: u32 = 10;
 
@@ -66,6 +69,33 @@ impl Runs {
 
 fn usual(longest: u32) -> u32 {
     longest.saturating_mul(2).saturating_add(MARGIN)
+}
+
+/// A row a property, a column a channel.
+impl Part for Runs {
+    fn write(&self, to: &mut Writer) {
+        let Self { last, still, silent, longest_still, longest_silent } = self;
+        to.table("last", last.len(), last);
+        let counts = [still, silent, longest_still, longest_silent];
+        let counts: Vec<f64> = counts.into_iter().flatten().map(|count| f64::from(*count)).collect();
+        to.table("lengths", last.len(), &counts);
+    }
+
+    #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "as saturates, NaN is 0")]
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let channels = self.last.len();
+        let last = from.table("last", channels, 1)?;
+        let counts = from.table("lengths", channels, 4)?;
+        if last.len() != channels || counts.len() != 4 * channels {
+            return Err(from.unlike("lengths", "four rows, and one of last values", "fewer"));
+        }
+        self.last = last;
+        let into = [&mut self.still, &mut self.silent, &mut self.longest_still, &mut self.longest_silent];
+        for (target, row) in into.into_iter().zip(counts.chunks_exact(channels)) {
+            target.iter_mut().zip(row).for_each(|(target, count)| *target = *count as u32);
+        }
+        Ok(())
+    }
 }
 
 #[cfg(test)]

@@ -14,6 +14,8 @@
 
 use super::limits::moments::Moments;
 use super::limits::{SKEWED, Widening};
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
 
 /// Weight of the newest value. A tenth sits where the published run lengths are shortest for lasting shifts of half a
 /// spread to one spread, the shifts that single rows do not show.
@@ -104,6 +106,28 @@ impl Smooth {
 pub fn averaged(variance: f64, r: f64, share: f64) -> f64 {
     let kept = (1.0 - share) * r;
     variance * share / (2.0 - share) * (1.0 + kept) / (1.0 - kept)
+}
+
+impl Part for Smooth {
+    fn write(&self, to: &mut Writer) {
+        let Self { share: _, level, centre, spread, skew, widening } = self;
+        to.number("level", *level);
+        to.number("centre", *centre);
+        to.number("spread", *spread);
+        to.number("skew", *skew);
+        to.part("widening", widening);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.level = from.amount("level")?;
+        self.centre = from.amount("centre")?;
+        self.spread = from.amount("spread")?;
+        if self.spread <= 0.0 {
+            return Err(from.unlike("spread", "a positive number", "0"));
+        }
+        self.skew = from.amount("skew")?;
+        from.part("widening", &mut self.widening)
+    }
 }
 
 #[cfg(test)]

@@ -15,6 +15,8 @@
 //! says little; then the average over the last tens of rows stands for it.
 
 use super::smooth::SHARE;
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
 
 /// Reconstruction shares of the last tens of rows.
 #[derive(Clone, Debug)]
@@ -76,6 +78,20 @@ pub fn three_foremost(shares: &[f64], foremost: &mut [(usize, f64); 3]) {
                 foremost.swap(0, 1);
             }
         }
+    }
+}
+
+impl Part for Lasting {
+    fn write(&self, to: &mut Writer) {
+        let Self { blame, total } = self;
+        to.numbers("blame", blame);
+        to.number("total", *total);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.blame = from.numbers("blame", self.blame.len())?;
+        self.total = from.number("total")?;
+        Ok(())
     }
 }
 

@@ -4,8 +4,10 @@
 //! the singular values, their directions the right singular vectors, small ones as accurate as large ones. Unlike a
 //! decomposition by a library it can stop after any pair and go on at the next tick.
 
+use crate::error::Error;
 use crate::ops;
 use crate::rows::RowStore;
+use crate::state::{Part, Reader, Writer};
 
 /// Cosine between two rows, in units of eps a row, up to which they count as orthogonal.
 const ORTHOGONAL: f64 = 2.0;
@@ -39,6 +41,11 @@ impl Turning {
         }
     }
 
+    /// Rows it has room for, and their entries.
+    fn room(&self) -> (usize, usize) {
+        (self.squares.len(), self.rows.dim())
+    }
+
     /// Starts on the first `count` rows, which the caller has written.
     pub(super) fn begin(&mut self, count: usize) {
         self.count = count;
@@ -69,8 +76,8 @@ impl Turning {
             if self.second < self.count {
                 continue;
             }
-            self.sweeps += 1;
-            let done = !self.turned || self.sweeps == SWEEPS;
+            self.sweeps = self.sweeps.saturating_add(1);
+            let done = !self.turned || self.sweeps >= SWEEPS;
             (self.first, self.second, self.turned) = (0, 1, false);
             if done {
                 // Norms updated through many rotations have lost digits where they became small.
@@ -98,6 +105,36 @@ impl Turning {
         ops::rotate(x, y, c, -t * c);
         self.squares[first] = (a - t * product).max(0.0);
         self.squares[second] = (b + t * product).max(0.0);
+    }
+}
+
+impl Part for Turning {
+    fn write(&self, to: &mut Writer) {
+        let Self { rows, count, squares, first, second, turned, sweeps } = self;
+        to.rows("rows", rows.view(*count), squares.len());
+        to.word("count", count);
+        to.numbers("squares", &squares[..*count]);
+        to.word("first", first);
+        to.word("second", second);
+        to.word("turned", turned);
+        to.word("sweeps", sweeps);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let (limit, dim) = self.room();
+        self.rows = from.rows("rows", limit, dim)?;
+        self.count = from.at_most("count", limit)?;
+        let squares = from.amounts("squares", self.count)?;
+        self.squares[..self.count].copy_from_slice(&squares);
+        // The next pair: two rows, the second after the first.
+        self.second = from.at_most("second", self.count.saturating_sub(1).max(1))?;
+        self.first = from.at_most("first", self.second - self.second.min(1))?;
+        if self.second == 0 {
+            return Err(from.unlike("second", "a row after the first", "0"));
+        }
+        self.turned = from.parse("turned")?;
+        self.sweeps = from.parse("sweeps")?;
+        Ok(())
     }
 }
 

@@ -4,6 +4,9 @@
 //! then on: verdicts do not depend on the units the channels come in. A channel that did not move, or had no values,
 //! stays out of the model: its scaled value is zero, neither judged nor suspected.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// A channel moves if its range exceeds this many roundings of its magnitude. A constant that went through a
 /// computation carries a few; its standard deviation is then not zero, only meaningless.
 pub(super) const ROUNDINGS: f64 = 16.0;
@@ -21,15 +24,21 @@ pub struct Units {
 }
 
 impl Units {
-    /// Units of the rows for which `keep` holds: `rows` is row-major. A channel needs at least `enough` values.
+    /// Of channels that do not move.
     #[must_use]
-    pub fn of(rows: &[f64], channels: usize, keep: &[bool], enough: usize) -> Self {
-        let mut units = Self {
+    pub fn new(channels: usize) -> Self {
+        Self {
             mean: vec![0.0; channels],
             spread: vec![1.0; channels],
             moves: vec![false; channels],
             moving: 0,
-        };
+        }
+    }
+
+    /// Units of the rows for which `keep` holds: `rows` is row-major. A channel needs at least `enough` values.
+    #[must_use]
+    pub fn of(rows: &[f64], channels: usize, keep: &[bool], enough: usize) -> Self {
+        let mut units = Self::new(channels);
         for channel in 0..channels {
             let values = || {
                 let column = rows.chunks_exact(channels).zip(keep).filter(|(_, keep)| **keep);
@@ -120,6 +129,28 @@ impl Summary {
 /// Whether values between `least` and `most`, none larger than `largest`, move by more than rounding.
 pub(super) fn moves(least: f64, most: f64, largest: f64) -> bool {
     0.5 * most - 0.5 * least > 0.5 * ROUNDINGS * f64::EPSILON * largest
+}
+
+impl Part for Units {
+    fn write(&self, to: &mut Writer) {
+        let Self { mean, spread, moves, moving: _ } = self;
+        to.numbers("mean", mean);
+        to.numbers("spread", spread);
+        let moves: Vec<f64> = moves.iter().map(|moves| f64::from(u8::from(*moves))).collect();
+        to.numbers("moves", &moves);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let channels = self.mean.len();
+        self.mean = from.numbers("mean", channels)?;
+        self.spread = from.numbers("spread", channels)?;
+        if let Some(spread) = self.spread.iter().find(|spread| **spread < f64::MIN_POSITIVE) {
+            return Err(from.unlike("spread", "positive numbers", &spread.to_string()));
+        }
+        self.moves = from.numbers("moves", channels)?.iter().map(|moves| *moves > 0.0).collect();
+        self.moving = self.moves.iter().filter(|moves| **moves).count();
+        Ok(())
+    }
 }
 
 #[cfg(test)]

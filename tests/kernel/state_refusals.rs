@@ -9,14 +9,14 @@ use safetensors::{Dtype, SafeTensors};
 use crate::state::{basis, small, tracker};
 
 /// What was wrong.
-fn refusal<S: State>(bytes: &[u8]) -> String {
+pub fn refusal<S: State>(bytes: &[u8]) -> String {
     let error = S::from_bytes(bytes).err().expect("a refusal");
     let Error::State { what } = &error else { unreachable!("expected a state error, got {error:?}") };
     what.clone()
 }
 
 /// Reads bytes that may be anything: an object with the very same state, or a state error.
-fn same_or_refused<S: State>(bytes: &[u8], state: &[u8]) {
+pub fn same_or_refused<S: State>(bytes: &[u8], state: &[u8]) {
     match S::from_bytes(bytes) {
         Ok(object) => assert_eq!(object.to_bytes().unwrap(), state),
         Err(error) => assert!(matches!(error, Error::State { .. }), "{error:?}"),
@@ -125,18 +125,32 @@ impl Forgery {
         self
     }
 
-    fn array(mut self, name: &str, forge: impl FnOnce(&mut Dtype, &mut Vec<usize>, &mut Vec<u8>)) -> Self {
+    pub fn array(
+        mut self,
+        name: &str,
+        forge: impl FnOnce(&mut Dtype, &mut Vec<usize>, &mut Vec<u8>),
+    ) -> Self {
         let (_, dtype, shape, data) = self.arrays.iter_mut().find(|(known, ..)| known == name).unwrap();
         forge(dtype, shape, data);
         self
     }
 
     /// Sets a number of a `float64` array.
-    fn number(self, name: &str, index: usize, value: f64) -> Self {
+    pub fn number(self, name: &str, index: usize, value: f64) -> Self {
         self.array(name, |_, _, data| data[8 * index..][..8].copy_from_slice(&value.to_le_bytes()))
     }
 
-    fn without(mut self, name: &str) -> Self {
+    /// Sets any number of any `float64` array.
+    pub fn any_number(self, array: prop::sample::Index, place: prop::sample::Index, value: f64) -> Self {
+        let numbers =
+            self.arrays.iter().filter(|(_, dtype, _, data)| *dtype == Dtype::F64 && !data.is_empty());
+        let numbers: Vec<(String, usize)> =
+            numbers.map(|(name, .., data)| (name.clone(), data.len() / 8)).collect();
+        let (name, length) = array.get(&numbers).clone();
+        self.number(&name, place.index(length), value)
+    }
+
+    pub fn without(mut self, name: &str) -> Self {
         self.words.retain(|(known, _)| known != name);
         self.arrays.retain(|(known, ..)| known != name);
         self

@@ -7,6 +7,7 @@ use std::cell::Cell;
 
 use perpend::state::MOST_HEADER;
 use perpend::tracker::Settings;
+use perpend::watch::{self, Watch};
 use perpend::{Basis, Scalar, State, Tracker};
 
 /// The system's allocator, adding up what the thread holds.
@@ -60,6 +61,9 @@ const TIMES_BASIS: usize = 12;
 /// is read takes as much again, before the constructor asks whether it can have (n + 6 n) (n + 2 n) numbers, 168 n^2
 /// bytes, which it gives back untouched: 22 times, and 2 for what goes with n alone.
 const TIMES_TRACKER: usize = 24;
+/// The same for a watch that has settled. The worst is a `float32` one of as many axes as can be: the tracker in it, a second
+/// one, and a copy of either on the way to new axes.
+const TIMES_WATCH: usize = 48;
 /// What parsing may take beside, per byte of header.
 const HEADER_TIMES: usize = 64;
 
@@ -81,6 +85,15 @@ fn check_classes<T: Scalar>() {
     for (channels, rank) in [(1, 1), (300, 1), (300, 20), (100, 100)] {
         let tracker = Tracker::<T>::new(Settings::new(channels, rank)).unwrap();
         check::<Tracker<T>>(&tracker.to_bytes().unwrap(), TIMES_TRACKER);
+    }
+    for (channels, rank) in [(2, 1), (300, 1), (60, 59)] {
+        let settings = watch::Settings { rank: Some(rank), ..watch::Settings::new(channels) };
+        let mut watch = Watch::<T>::new(settings).unwrap();
+        check::<Watch<T>>(&watch.to_bytes().unwrap(), TIMES_WATCH);
+        let entry = |index: usize| ((index * index % 1009) as f64).sin() + (index % channels) as f64;
+        let rows: Vec<f64> = (0..120 * channels).map(entry).collect();
+        watch.settle_on(&rows).unwrap();
+        check::<Watch<T>>(&watch.to_bytes().unwrap(), TIMES_WATCH);
     }
 }
 

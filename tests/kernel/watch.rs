@@ -2,6 +2,7 @@
 
 mod gate;
 mod input;
+mod state;
 
 use faer::Mat;
 use perpend::Error;

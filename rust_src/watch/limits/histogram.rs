@@ -4,6 +4,9 @@
 //! distribution. Forgetting costs nothing: instead of the old counts shrinking, each new one weighs more, and all are
 //! scaled down before they grow too large. A cursor stands in the bucket of the quantile and moves by a bucket or two.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// Buckets a doubling of the value.
 const PER_OCTAVE: f64 = 128.0;
 /// Sixteen octaves: up to 2^14 times the reference value. What is below counts in the first bucket, what is above in the
@@ -98,6 +101,32 @@ impl Histogram {
         }
         self.total = self.counts.iter().sum();
         self.above = self.counts[self.cursor + 1..].iter().sum();
+    }
+}
+
+impl Part for Histogram {
+    fn write(&self, to: &mut Writer) {
+        let Self { counts, reference, weight, total, cursor, above } = self;
+        to.numbers("counts", counts);
+        to.number("reference", *reference);
+        to.number("weight", *weight);
+        to.number("total", *total);
+        to.word("cursor", cursor);
+        to.number("above", *above);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.counts = from.amounts("counts", BUCKETS)?;
+        self.reference = from.amount("reference")?;
+        self.weight = from.amount("weight")?;
+        if self.reference <= 0.0 || !(1.0..=LARGE).contains(&self.weight) {
+            return Err(from.unlike("reference", "a positive one, and a weight of 1 or more", "others"));
+        }
+        self.total = from.amount("total")?;
+        self.cursor = from.at_most("cursor", BUCKETS - 1)?;
+        // Differences of sums: a rounding below zero is what they may come to.
+        self.above = from.number("above")?;
+        Ok(())
     }
 }
 

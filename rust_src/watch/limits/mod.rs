@@ -26,6 +26,9 @@ pub mod spectrum;
 use moments::Moments;
 use quantile::ChiSquare;
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// Relative change of the degrees of freedom below which the widening is left as it is: it moves the factor by less
 /// than a thousandth from 10 degrees of freedom on.
 const WIDENING_STEP: f64 = 0.01;
@@ -46,6 +49,27 @@ pub enum Limits {
     Empirical,
     /// The model's energies: Jackson and Mudholkar for the SPE, F for T2.
     Spectrum,
+}
+
+impl Limits {
+    /// All of them.
+    pub const ALL: [Self; 3] = [Self::Moments, Self::Empirical, Self::Spectrum];
+
+    /// Its name.
+    #[must_use]
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Moments => "moments",
+            Self::Empirical => "empirical",
+            Self::Spectrum => "spectrum",
+        }
+    }
+
+    /// The one of that name.
+    #[must_use]
+    pub fn named(name: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|limits| limits.name() == name)
+    }
 }
 
 /// Factor by which a limit is widened for resting on few rows.
@@ -163,6 +187,41 @@ impl MomentLimit {
         let whole = quantile::wilson_hilferty(self.plain, z);
         let part = quantile::wilson_hilferty(self.plain * share, z);
         if whole > 0.0 && part.is_finite() { (part / whole).max(1.0) } else { 1.0 }
+    }
+}
+
+impl Part for Widening {
+    fn write(&self, to: &mut Writer) {
+        let Self { tail: _, normal: _, nu, factor } = self;
+        to.number("nu", *nu);
+        to.number("factor", *factor);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        self.nu = from.amount("nu")?;
+        self.factor = from.amount("factor")?;
+        if self.factor < 1.0 {
+            return Err(from.unlike("factor", "1 or more", &self.factor.to_string()));
+        }
+        Ok(())
+    }
+}
+
+impl Part for MomentLimit {
+    fn write(&self, to: &mut Writer) {
+        let Self { shape, widening, value, plain } = self;
+        to.part("shape", shape);
+        to.part("widening", widening);
+        to.number("value", *value);
+        to.number("plain", *plain);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        from.part("shape", &mut self.shape)?;
+        from.part("widening", &mut self.widening)?;
+        self.value = from.amount("value")?;
+        self.plain = from.amount("plain")?;
+        Ok(())
     }
 }
 

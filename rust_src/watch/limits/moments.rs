@@ -1,5 +1,8 @@
 //! Running mean, variance, skewness and lag-one correlation of a statistic, with forgetting.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
+
 /// Lag-one correlation above which a series says no more of its own spread than this.
 const STIFFEST: f64 = 0.999;
 
@@ -29,6 +32,10 @@ impl Moments {
         let (far, near) = ((1.0 - share) * step, share * step);
         self.third =
             (1.0 - share) * (self.third - 3.0 * near * self.variance - near.powi(3)) + share * far.powi(3);
+        if !self.third.is_finite() {
+            // Values beyond 1e100: no limit asks for the skewness of such.
+            self.third = 0.0;
+        }
         self.mean += near;
         self.variance = (1.0 - share) * (self.variance + near * step);
         if !first {
@@ -91,6 +98,24 @@ impl Moments {
     pub fn independent(&self) -> f64 {
         let r = self.correlation();
         self.count() * (1.0 - r) / (1.0 + r)
+    }
+}
+
+/// Seven numbers: weight, its square sum, mean, variance, third moment, covariance, last value.
+impl Part for Moments {
+    fn write(&self, to: &mut Writer) {
+        let Self { weight, square, mean, variance, third, covariance, last } = *self;
+        to.numbers("moments", &[weight, square, mean, variance, third, covariance, last]);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let numbers = from.numbers("moments", 7)?;
+        let [weight, square, mean, variance, third, covariance, last] = numbers[..] else { return Ok(()) };
+        if weight < 0.0 || square < 0.0 || variance < 0.0 {
+            return Err(from.unlike("moments", "weights and a variance of 0 or more", "others"));
+        }
+        *self = Self { weight, square, mean, variance, third, covariance, last };
+        Ok(())
     }
 }
 

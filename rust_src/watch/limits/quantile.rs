@@ -4,6 +4,8 @@
 //! by Newton steps on the logarithm of the tail, from the last answer or from Wilson and Hilferty's approximation
 //! (Proc. Natl. Acad. Sci. 17 (1931) 684-688), in one to four evaluations of the incomplete gamma function.
 
+use crate::error::Error;
+use crate::state::{Part, Reader, Writer};
 use statrs::distribution::{Beta, ContinuousCDF, FisherSnedecor, StudentsT};
 use statrs::function::erf::erfc_inv;
 use statrs::function::gamma::{checked_gamma_ur, ln_gamma};
@@ -161,6 +163,24 @@ pub fn student(nu: f64, tail: f64) -> f64 {
         ((((79.0 * s + 776.0) * s + 1482.0) * s - 1920.0) * s - 945.0) * z / 92_160.0,
     ];
     z + terms.iter().rev().fold(0.0, |sum, term| (sum + term) / nu)
+}
+
+/// Five numbers: degrees of freedom, quantile, and what winsorising leaves of mean, variance and third moment.
+impl Part for ChiSquare {
+    fn write(&self, to: &mut Writer) {
+        let Self { h, tail: _, value, mean_left, variance_left, third_left } = *self;
+        to.numbers("chi_square", &[h, value, mean_left, variance_left, third_left]);
+    }
+
+    fn restore(&mut self, from: &mut Reader<'_>) -> Result<(), Error> {
+        let numbers = from.numbers("chi_square", 5)?;
+        let [h, value, mean_left, variance_left, third_left] = numbers[..] else { return Ok(()) };
+        if h < FEW || value < 0.0 || variance_left <= 0.0 {
+            return Err(from.unlike("chi_square", "degrees of freedom, quantile and variance", "others"));
+        }
+        *self = Self { h, tail: self.tail, value, mean_left, variance_left, third_left };
+        Ok(())
+    }
 }
 
 #[cfg(test)]
