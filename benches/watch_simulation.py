@@ -222,9 +222,7 @@ def tables() -> None:
             f"| {d.first:.0%} |",
             flush=True,
         )
-    print(
-        "\nRows until a lasting change of regime is taken up, `hold` of 300 among them; SPE limit after 2000\n"
-    )
+    print("\nRows until a lasting change of regime is taken up, `hold` of 300 among them; SPE limit after 2000\n")
     print("| change | rows | limit over that of a fresh watch |\n|---|---|---|")
     for change in CHANGES:
         rows, width = recovery(change, 12)

@@ -114,8 +114,10 @@ def test_watches_of_earlier_releases_load_with_their_figures(path):
     eps = float(np.finfo(path.stem.split("-")[1]).eps)
     for name, figure in figures(Watch.load(path)).items():
         # The row is projected anew, on another kernel path perhaps: some hundred roundings of it at most.
-        assert figure == pytest.approx(expected[name], rel=1024 * eps) if isinstance(figure, float) else (
-            figure == expected[name]
+        assert (
+            figure == pytest.approx(expected[name], rel=1024 * eps)
+            if isinstance(figure, float)
+            else (figure == expected[name])
         ), name
 
 
