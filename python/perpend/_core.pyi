@@ -1000,6 +1000,10 @@ class Watch:
         """Channels a row."""
 
     @property
+    def settings(self) -> dict[str, Any]:
+        """What it was made with, named as the arguments; `rank` is None where it was to be chosen."""
+
+    @property
     def phase(self) -> _Phase:
         """Where the watch stands."""
 

@@ -190,6 +190,11 @@ def _add_watch(commands: Any) -> None:
     add("--readings", metavar="FILE", help="write every reading, .csv or .jsonl")
     add("--report", metavar="FILE", help="write one self-contained HTML page with plots")
     add(
+        "--state",
+        metavar="FILE",
+        help="resume from it, and keep it current; the rows given follow those it has seen",
+    )
+    add(
         "--separator",
         choices=[*SEPARATORS.values()],
         help="between cells; what the header shows if not given",
@@ -259,6 +264,7 @@ def _run_watch(found: argparse.Namespace) -> int:
             dialect=Dialect(separators.get(found.separator), "," if found.decimal == "comma" else "."),
             readings=found.readings,
             report=found.report,
+            state=found.state,
             settings=settings,
         )
     )

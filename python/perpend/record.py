@@ -3,6 +3,7 @@
 import csv
 import json
 import math
+import os
 from pathlib import Path
 from typing import Any, TextIO
 
@@ -13,6 +14,7 @@ from perpend.tally import STATISTICS
 
 FORMATS = (".csv", ".jsonl")
 SUSPECTS = 3
+BLOCK = 1 << 16
 FIELDS = (
     *("row", "time", "phase", "alarm"),
     *(field for name in STATISTICS for field in (name, f"{name}_limit")),
@@ -40,6 +42,8 @@ class ReadingsFile:
         File to write, ``.csv`` or ``.jsonl``.
     live : bool
         Whether each line is to be out before the next row is read.
+    follows : bool
+        Whether the readings follow those that the file holds; else it is begun anew.
 
     Raises
     ------
@@ -47,15 +51,18 @@ class ReadingsFile:
         Where the name says neither format or the file cannot be written.
     """
 
-    def __init__(self, name: str, *, live: bool) -> None:
+    def __init__(self, name: str, *, live: bool, follows: bool = False) -> None:
         self._live = live
         self._json = format_of(name) == ".jsonl"
         try:
-            self._out: TextIO = Path(name).open("w", encoding="utf-8", newline="")  # noqa: SIM115 - closed by `close`
+            held = _whole_lines(Path(name)) if follows else 0
+            self._out: TextIO = Path(name).open("r+" if held else "w", encoding="utf-8", newline="")  # noqa: SIM115
+            self._out.seek(held)
+            self._out.truncate()
         except OSError as error:
             raise InputError(f"--readings: cannot be written: {error.strerror or error}", name) from None
         self._table = csv.writer(self._out, lineterminator="\n")
-        if not self._json:
+        if not self._json and not held:
             self._table.writerow(FIELDS)
             self._out.flush()
 
@@ -72,6 +79,22 @@ class ReadingsFile:
     def close(self) -> None:
         """Finish the file."""
         self._out.close()
+
+
+def _whole_lines(path: Path) -> int:
+    """Bytes up to the end of the last whole line: a run that was killed may have left half of one."""
+    if not path.exists():
+        return 0
+    with path.open("rb") as file:
+        end = file.seek(0, os.SEEK_END)
+        while end > 0:
+            start = max(0, end - BLOCK)
+            file.seek(start)
+            place = file.read(end - start).rfind(b"\n")
+            if place >= 0:
+                return start + place + 1
+            end = start
+    return 0
 
 
 def format_of(name: str) -> str:

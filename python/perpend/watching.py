@@ -14,6 +14,7 @@ from perpend._core import Watch
 from perpend.intake import Layout, Table, arrange, open_table
 from perpend.intake.delimited import SEPARATORS, Dialect
 from perpend.intake.layout import NO_CLOCK
+from perpend.keeping import Keeper, asked_to_end, resume
 from perpend.loop import Observer, judge
 from perpend.narrator import Narrator, counted, summary
 from perpend.progress import Progress
@@ -47,6 +48,8 @@ class WatchRequest:
         File for every reading.
     report : str or None
         File for the report.
+    state : str or None
+        File to resume from, and to keep current.
     settings : dict
         Arguments of `Watch` as far as they were given.
     """
@@ -58,6 +61,7 @@ class WatchRequest:
     dialect: Dialect = field(default_factory=Dialect)
     readings: str | None = None
     report: str | None = None
+    state: str | None = None
     settings: dict[str, Any] = field(default_factory=dict)
 
 
@@ -80,11 +84,16 @@ def run_watch(request: WatchRequest) -> int:
     if request.report is not None:
         need_plots(request.report)
     learned, like, ignored = None, None, list(request.ignored)
-    if request.learn is not None:
+    resuming = request.state is not None and Path(request.state).exists()
+    if request.learn is not None and not resuming:
         learned, like, ignored = _learn(request)
     with open_table(request.source, request.dialect) as table:
         layout = arrange(table, time=request.time, ignored=ignored, like=like)
         _say(_guesses(table) + layout.said)
+        watch = resume(request.state, layout.channels, request.settings) if request.state is not None else None
+        if watch is not None:
+            _say([f"{request.state}: resumed after row {watch.ticks:,}, with all that was learned until then"])
+            return _run(request, table, layout, watch, f"resumed from {request.state}", resumed=True)
         watch = _make_watch(layout.channels, request, table)
         settled_on = f"the first {request.settings.get('settle', SETTLE):,} rows"
         if learned is not None:
@@ -96,7 +105,9 @@ def run_watch(request: WatchRequest) -> int:
         return _run(request, table, layout, watch, settled_on)
 
 
-def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, settled_on: str) -> int:
+def _run(
+    request: WatchRequest, table: Table, layout: Layout, watch: Watch, settled_on: str, *, resumed: bool = False
+) -> int:
     rows = table.rows(layout.channels, layout.clock)
     first = next(rows, None)
     if first is None:
@@ -108,17 +119,28 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
     if request.report is not None:
         history = History()
         observers.append(history)
+    keeper = None
+    if request.state is not None:
+        keeper = Keeper(watch, request.state)
+        # At once: a folder that cannot be written is found now, not after hours.
+        keeper.save()
+        observers.append(keeper)
     interrupted = False
     with ExitStack() as stack:
+        if keeper is not None:
+            stack.enter_context(asked_to_end())
         if request.readings is not None:
             live = table.opened.size is None
-            observers.append(stack.enter_context(closing(ReadingsFile(request.readings, live=live))))
+            observers.append(stack.enter_context(closing(ReadingsFile(request.readings, live=live, follows=resumed))))
         stack.enter_context(closing(progress))
         try:
             judge(watch, chain([first], rows), observers)
         except KeyboardInterrupt:
             interrupted = True
-    if watch.phase == "settling" and not interrupted:
+        finally:
+            if keeper is not None:
+                keeper.save()
+    if watch.phase == "settling" and not interrupted and keeper is None:
         raise InputError(_unsettled(tally.rows, request.settings.get("settle", SETTLE)), table.label)
     for line in summary(tally, len(layout.channels), settled_on):
         print(line)
@@ -186,14 +208,18 @@ def _make_watch(channels: list[str], request: WatchRequest, table: Table) -> Wat
 
 
 def _keep_input(request: WatchRequest) -> None:
-    for option, target in (("--readings", request.readings), ("--report", request.report)):
+    written = (("--readings", request.readings), ("--report", request.report), ("--state", request.state))
+    for option, target in written:
         for name in (request.source, request.learn):
             if target is None or name in (None, "-"):
                 continue
             if Path(target).exists() and Path(name).exists() and Path(target).samefile(name):
                 raise InputError(f"{option}: this would overwrite the input; give another name", target)
-    if request.readings is not None and request.report is not None and _same(request.readings, request.report):
-        raise InputError("--report: this would overwrite the readings; give another name", request.report)
+    outputs = (("readings", request.readings), ("report", request.report), ("state", request.state))
+    for place, (_, name) in enumerate(outputs):
+        for other, later in outputs[place + 1 :]:
+            if name is not None and later is not None and _same(name, later):
+                raise InputError(f"--{other}: this would overwrite the {outputs[place][0]}; give another name", later)
 
 
 def _same(one: str, other: str) -> bool:

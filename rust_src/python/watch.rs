@@ -255,6 +255,26 @@ impl PyWatch {
         self.channels
     }
 
+    #[doc = stub_doc!("Watch.settings")]
+    #[getter]
+    fn settings<'py>(&self, py: Python<'py>) -> PyResult<Bound<'py, PyDict>> {
+        let (settings, dtype) = self.inner.read(py, |inner| match inner {
+            Inner::Float64(watch) => (watch.settings().clone(), <f64 as Scalar>::NAME),
+            Inner::Float32(watch) => (watch.settings().clone(), <f32 as Scalar>::NAME),
+        });
+        let dict = PyDict::new(py);
+        dict.set_item("rank", settings.rank)?;
+        dict.set_item("memory", settings.memory)?;
+        dict.set_item("settle", settings.settle)?;
+        dict.set_item("false_alarm", settings.false_alarm)?;
+        dict.set_item("confirm", settings.confirm)?;
+        dict.set_item("of", settings.of)?;
+        dict.set_item("hold", settings.hold)?;
+        dict.set_item("limits", settings.limits.name())?;
+        dict.set_item("dtype", dtype)?;
+        Ok(dict)
+    }
+
     #[doc = stub_doc!("Watch.phase")]
     #[getter]
     fn phase(&self, py: Python<'_>) -> &'static str {
