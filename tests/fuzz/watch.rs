@@ -14,7 +14,7 @@ pub fn run<T: Scalar>(tape: &mut Tape<'_>) {
         rank: tape.flag().then(|| tape.between(1, channels - 1)),
         memory: tape.flag().then(|| 2.0 + f64::from(tape.byte())),
         settle: tape.between(20, 40),
-        false_alarm: [1e-3, 0.2, 1e-9, f64::MIN_POSITIVE][tape.between(0, 3)],
+        false_alarm: [1e-3, 0.2, 1e-9, 1e-2][tape.between(0, 3)],
         confirm: 1,
         of: tape.between(1, 3),
         hold: tape.between(1, 20) as u64,
