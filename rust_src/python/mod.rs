@@ -9,6 +9,7 @@ macro_rules! stub_doc {
 }
 
 mod basis;
+mod beside;
 mod convert;
 mod errors;
 mod fork;
