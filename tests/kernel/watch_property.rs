@@ -119,3 +119,20 @@ proptest! {
         prop_assert!(healthy > 900, "{healthy} of 1000 healthy after {trouble:?}");
     }
 }
+
+#[test]
+#[ignore = "a minute long; run with `--release -- --ignored`"]
+fn orthonormality_holds_after_1e7_ticks() {
+    let mut watch = Watch::<f64>::new(Settings { memory: Some(500.0), ..Settings::new(CHANNELS) }).unwrap();
+    let rows = healthy(5_000, 3);
+    let mut worst = 0.0_f64;
+    for _ in 0..2_000 {
+        for row in each(&rows) {
+            watch.tick(row).unwrap();
+        }
+        worst = worst.max(watch.orthogonality_error().unwrap());
+    }
+    assert_eq!(watch.ticks(), 10_000_000);
+    println!("worst |I - Q Q^T| at 2000 looks: {worst:e}");
+    assert!(worst <= 10.0 * f64::EPSILON * (CHANNELS as f64).sqrt(), "{worst:e}");
+}
