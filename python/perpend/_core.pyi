@@ -262,8 +262,8 @@ class Basis:
         """Write the state to a file, at once and for good.
 
         The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
-        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
-        meanwhile.
+        whose mode is kept: after a power cut there is the old state or the new one. What a save that was killed has left
+        beside is removed by the next to the same file. The interpreter is released meanwhile.
 
         Parameters
         ----------
@@ -561,8 +561,8 @@ class Tracker:
         """Write the state to a file, at once and for good.
 
         The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
-        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
-        meanwhile.
+        whose mode is kept: after a power cut there is the old state or the new one. What a save that was killed has left
+        beside is removed by the next to the same file. The interpreter is released meanwhile.
 
         Parameters
         ----------

@@ -1,6 +1,7 @@
 //! Fuzz target: a sequence of calls with any bit patterns; after each, what the class promises holds.
 #![no_main]
 #![allow(missing_docs, reason = "a program, not a library")]
+#![allow(clippy::expect_used, clippy::panic, reason = "a panic is what a fuzzer looks for")]
 
 mod basis;
 mod tape;

@@ -4,6 +4,7 @@
 //! once more, so that what lies behind is reached.
 #![no_main]
 #![allow(missing_docs, reason = "a program, not a library")]
+#![allow(clippy::expect_used, clippy::panic, reason = "a panic is what a fuzzer looks for")]
 
 use libfuzzer_sys::fuzz_target;
 use perpend::{Basis, Error, Scalar, State, Tracker};
