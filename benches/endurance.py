@@ -113,6 +113,13 @@ def rows_of(count: int, channels: int, seed: int) -> np.ndarray:
     return 20.0 + rng.standard_normal((count, 2)) @ mixing + 0.3 * rng.standard_normal((count, channels))
 
 
+def pace(call: Callable[[np.ndarray], object], rows: np.ndarray) -> float:
+    """Microseconds a row."""
+    begun = time.perf_counter()
+    call(rows)
+    return 1e6 * (time.perf_counter() - begun) / len(rows)
+
+
 def track(count: int) -> None:
     """A tracker fed with blocks of rows."""
     tracker, rows = perpend.Tracker(16, 3, memory=1000), rows_of(5000, 16, 2)
@@ -123,6 +130,10 @@ def track(count: int) -> None:
 
     watched(count, step, tracker.orthogonality_error).report("Tracker.update_rows, 16 x 3", 1e-14)
     assert tracker.samples == count // LOOKS * LOOKS
+    # The machine has other work at times: old and new in turn, the best of each.
+    new = perpend.Tracker(16, 3, memory=1000)
+    best = {owner: min(pace(owner.update_rows, rows) for _ in range(20)) for owner in (tracker, new, tracker, new)}
+    print(f"    us a row: {best[tracker]:.2f} for this one, {best[new]:.2f} for a new one", flush=True)
 
 
 def tick(count: int) -> None:
@@ -151,11 +162,6 @@ def silence(count: int) -> None:
     rows = rows_of(20_000, 8, 4)
     still = np.tile(rows.mean(axis=0), (10_000, 1))
     tracker, watch = perpend.Tracker(8, 3, memory=500), perpend.Watch(8, memory=500, settle=500, hold=200)
-
-    def pace(call: Callable[[np.ndarray], object], rows: np.ndarray) -> float:
-        begun = time.perf_counter()
-        call(rows)
-        return 1e6 * (time.perf_counter() - begun) / len(rows)
 
     for name, call in (("Tracker.update_rows", tracker.update_rows), ("Watch.replay", watch.replay)):
         moving = pace(call, rows)
