@@ -7,6 +7,7 @@
 #![allow(clippy::expect_used, clippy::panic, reason = "a panic is what a fuzzer looks for")]
 
 use libfuzzer_sys::fuzz_target;
+use perpend::watch::Watch;
 use perpend::{Basis, Error, Scalar, State, Tracker};
 
 fuzz_target!(|bytes: &[u8]| {
@@ -30,6 +31,12 @@ fn read(bytes: &[u8]) {
     }
     if let Some(tracker) = accepted::<Tracker<f32>>(bytes) {
         work_on_tracker(tracker);
+    }
+    if let Some(watch) = accepted::<Watch<f64>>(bytes) {
+        work_on_watch(watch);
+    }
+    if let Some(watch) = accepted::<Watch<f32>>(bytes) {
+        work_on_watch(watch);
     }
 }
 
@@ -77,6 +84,21 @@ fn work_on_tracker<T: Scalar>(mut tracker: Tracker<T>) {
         assert!(tracker.directions().iter().flatten().all(|entry| entry.to_f64().is_finite()));
         assert!(tracker.mean().iter().all(|value| value.is_finite()));
     }
+}
+
+fn work_on_watch<T: Scalar>(mut watch: Watch<T>) {
+    let channels = watch.settings().channels;
+    let mut row: Vec<f64> = (0..channels).map(|index| ((index * index + 7) % 23) as f64 - 11.0).collect();
+    for tick in 0..40 {
+        row[tick % channels] += 0.25;
+        let _ = watch.tick(&row);
+        if tick == 20 {
+            row[0] = f64::NAN;
+            watch.accept();
+        }
+    }
+    let _ = watch.settle_on(&row.repeat(30));
+    let _ = watch.orthogonality_error();
 }
 
 /// Sets the length of the header to where its brackets close.

@@ -1,7 +1,7 @@
 //! A watch, and what each of its readings promises.
 
 use perpend::watch::{Limits, Phase, Reading, Settings, Watch};
-use perpend::{Error, Scalar};
+use perpend::{Error, Scalar, State};
 
 use super::tape::Tape;
 
@@ -24,7 +24,8 @@ pub fn run<T: Scalar>(tape: &mut Tape<'_>) {
     let mut watch = Watch::<T>::new(settings).expect("settings within their ranges");
     let mut ticks = 0;
     while !tape.is_empty() {
-        match tape.byte() % 8 {
+        let before = watch.to_bytes().expect("a finite state");
+        match tape.byte() % 9 {
             0 | 1 => {
                 let row = tape.row(channels);
                 match watch.tick(&row) {
@@ -35,6 +36,11 @@ pub fn run<T: Scalar>(tape: &mut Tape<'_>) {
                     Err(error) => {
                         assert!(matches!(error, Error::NonFinite { .. }), "{error:?}");
                         assert!(row.iter().any(|value| value.is_infinite()));
+                        assert_eq!(
+                            watch.to_bytes().expect("a finite state"),
+                            before,
+                            "an error changes nothing"
+                        );
                     }
                 }
             }
@@ -51,9 +57,11 @@ pub fn run<T: Scalar>(tape: &mut Tape<'_>) {
             4 => watch.freeze(),
             5 => watch.resume(),
             6 => watch.accept(),
+            7 => watch = Watch::from_bytes(&before).expect("its own state"),
             _ => {
-                // Refused where they do not do; the watch is then as it was.
-                let _ = watch.settle_on(&tape.rows(channels, 200));
+                if watch.settle_on(&tape.rows(channels, 200)).is_err() {
+                    assert_eq!(watch.to_bytes().expect("a finite state"), before, "an error changes nothing");
+                }
             }
         }
         assert_eq!(watch.ticks(), ticks);

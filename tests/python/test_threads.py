@@ -105,7 +105,8 @@ def healthy(rng, count):
     return movement @ np.random.default_rng(1).standard_normal((2, 6)) + 0.3 * rng.standard_normal((count, 6))
 
 
-def test_ticks_of_a_watch_are_those_of_the_serial_stream_in_the_order_of_their_numbers():
+def test_ticks_of_a_watch_are_those_of_the_serial_stream_in_the_order_of_their_numbers(tmp_path):
+    probe = healthy(np.random.default_rng(77), 1)[0]
     watch, serial = Watch(6, settle=100), Watch(6, settle=100)
     readings, stop = {}, threading.Event()
 
@@ -117,7 +118,7 @@ def test_ticks_of_a_watch_are_those_of_the_serial_stream_in_the_order_of_their_n
             if reading.phase != "settling":
                 np.testing.assert_allclose(reading.contributions().sum(), reading.spe, rtol=24 * EPS)
 
-    def read():
+    def read(path):
         before = 0
         while not stop.is_set():
             ticks, phase, rank = watch.ticks, watch.phase, watch.rank
@@ -126,12 +127,19 @@ def test_ticks_of_a_watch_are_those_of_the_serial_stream_in_the_order_of_their_n
             assert 0 <= rank < 6
             repr(watch)
             before = ticks
+            # Each a state of some moment, whole.
+            copied = watch.copy()
+            watch.save(path)
+            restored = Watch.load(path)
+            assert ticks <= copied.ticks <= restored.ticks <= watch.ticks
+            for one in (copied, restored):
+                assert one.tick(probe).tick == one.ticks - 1
 
     def all_ticks():
         together(*(lambda seed=seed: tick(seed) for seed in range(6)))
         stop.set()
 
-    together(all_ticks, read, read)
+    together(all_ticks, lambda: read(tmp_path / "one"), lambda: read(tmp_path / "other"))
     assert watch.ticks == len(readings) == 2400
     for number in range(2400):
         row, reading = readings[number]
