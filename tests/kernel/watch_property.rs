@@ -133,7 +133,7 @@ fn a_fault_after_a_silence_that_outlasts_every_memory_names_its_channel() {
         assert!(reading.shares.iter().all(|share| (0.0..=1.0).contains(share)), "{reading:?}");
     }
     let mut faulty = still.clone();
-    faulty[7] += 3.0;
+    faulty[7] += 30.0;
     for _ in 0..10 {
         let reading = watch.tick(&faulty).unwrap().clone();
         assert!(reading.exceeds_any(), "{reading:?}");
