@@ -262,8 +262,8 @@ class Basis:
         """Write the state to a file, at once and for good.
 
         The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
-        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
-        meanwhile.
+        whose mode is kept: after a power cut there is the old state or the new one. What a killed save has left beside
+        is removed by the next to the same file. The interpreter is released meanwhile.
 
         Parameters
         ----------
@@ -561,8 +561,8 @@ class Tracker:
         """Write the state to a file, at once and for good.
 
         The bytes of `to_bytes` go to a new file beside, are synced to the disk, and take the place of the old file,
-        whose mode is kept: after a power cut there is the old state or the new one. The interpreter is released
-        meanwhile.
+        whose mode is kept: after a power cut there is the old state or the new one. What a killed save has left beside
+        is removed by the next to the same file. The interpreter is released meanwhile.
 
         Parameters
         ----------
@@ -917,9 +917,9 @@ class Watch:
     def to_bytes(self) -> bytes:
         """Give the state as bytes: all that what the watch does next depends on.
 
-        A safetensors container, which any reader of that format opens: ``watch.model.lens.axes`` and their energies, the
-        tracker as ``watch.model.tracker...``, moments of the statistics, alarms, names; settings and counters in the
-        metadata. The same state gives the same bytes. Only the last reading is no part of it.
+        A safetensors container, which any reader of that format opens: ``watch.model.lens.axes`` and their energies,
+        the tracker as ``watch.model.tracker...``, moments of the statistics, alarms, names; settings and counters
+        in the metadata. The same state gives the same bytes. Only the last reading is no part of it.
 
         Returns
         -------

@@ -1,11 +1,12 @@
 //! One object, many threads: calls take turns, and a panic stays inside.
 
-use std::sync::{Mutex, PoisonError};
+use std::sync::{Mutex, MutexGuard, PoisonError, TryLockError};
 
 use pyo3::prelude::*;
 use pyo3::sync::MutexExt;
 
 use super::errors::fenced;
+use super::fork;
 use crate::Error;
 
 /// A kernel object that is worked on by one call at a time.
@@ -18,12 +19,26 @@ impl<T> Guarded<T> {
 
     /// Runs `call` on the object, holding the interpreter: for work too short to let it go.
     pub fn with<R>(&self, py: Python<'_>, call: impl FnOnce(&mut T) -> Result<R, Error>) -> PyResult<R> {
-        let mut object = self.0.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner);
+        let (_share, mut object) = self.turn(py);
         fenced(|| call(&mut object))
+    }
+
+    /// This thread's turn. Nobody forks while the interpreter is held, which it is throughout where the object is free;
+    /// where it has to be waited for, the fork has to be put off.
+    fn turn(&self, py: Python<'_>) -> (fork::Share, MutexGuard<'_, T>) {
+        match self.0.try_lock() {
+            Ok(object) => (None, object),
+            Err(TryLockError::Poisoned(error)) => (None, error.into_inner()),
+            Err(TryLockError::WouldBlock) => {
+                let share = fork::put_off_attached(py);
+                (share, self.0.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
+            }
+        }
     }
 
     /// The same without the interpreter: for work long enough that other threads should go on meanwhile.
     pub fn alone<R>(&self, call: impl FnOnce(&mut T) -> Result<R, Error>) -> PyResult<R> {
+        let _share = fork::put_off();
         let mut object = self.0.lock().unwrap_or_else(PoisonError::into_inner);
         fenced(|| call(&mut object))
     }
@@ -50,6 +65,7 @@ impl<T> Guarded<T> {
 
     /// Reads something that cannot fail.
     pub fn read<R>(&self, py: Python<'_>, call: impl FnOnce(&T) -> R) -> R {
-        call(&self.0.lock_py_attached(py).unwrap_or_else(PoisonError::into_inner))
+        let (_share, object) = self.turn(py);
+        call(&object)
     }
 }

@@ -9,8 +9,10 @@ macro_rules! stub_doc {
 }
 
 mod basis;
+mod beside;
 mod convert;
 mod errors;
+mod fork;
 mod guarded;
 mod reading;
 mod saving;
@@ -24,10 +26,10 @@ use pyo3::prelude::*;
 use crate::ops::Path;
 use errors::StateError;
 
-/// The kernel of perpend.
-#[pymodule]
+/// The kernel of perpend. It relies on the interpreter's lock: see `fork`.
+#[pymodule(gil_used = true)]
 mod _core {
-    use super::{Bound, Path, PyModule, PyModuleMethods, PyResult, StateError, pyfunction};
+    use super::{Bound, Path, PyModule, PyModuleMethods, PyResult, StateError, fork, pyfunction};
 
     #[pymodule_export]
     use super::basis::PyBasis;
@@ -50,6 +52,7 @@ mod _core {
     #[pymodule_init]
     fn init(module: &Bound<'_, PyModule>) -> PyResult<()> {
         Path::requested()?;
+        fork::register(module)?;
         module.add("StateError", module.py().get_type::<StateError>())?;
         module.add("__version__", env!("CARGO_PKG_VERSION"))
     }

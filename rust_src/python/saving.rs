@@ -3,18 +3,17 @@
 //! The bytes go into a file of their own in the same folder, are synced to the disk, and only then take the name; then the
 //! folder is synced. Until the name changes, nothing has happened to the old file; from then on all of the new one is there.
 
-use std::fs::{self, File, OpenOptions};
+use std::fs::{self, File};
 use std::io::{self, ErrorKind, Read, Write};
 use std::path::{Path, PathBuf};
-use std::process;
 
 use pyo3::exceptions::PyOSError;
 use pyo3::prelude::*;
 
+use super::beside::{Beside, folder};
+
 /// Links followed before they count as a circle, as the kernels of operating systems do.
 const MOST_LINKS: usize = 40;
-/// Names tried for the file beside: those that killed processes of the same number have left.
-const MOST_NAMES: u32 = 1000;
 
 /// Puts `bytes` in place of what `path` names; a link stays a link. Mode and, where permitted, owner of an old file are
 /// kept. On an error the old file is as it was, except where only the last sync, that of the folder, has failed.
@@ -26,13 +25,12 @@ pub(super) fn replace(path: &Path, bytes: &[u8]) -> io::Result<()> {
         Err(error) if error.kind() == ErrorKind::NotFound => None,
         Err(error) => return Err(error),
     };
-    let (beside, file) = create_beside(&target)?;
-    let written = fill(file, bytes, old.as_ref()).and_then(|()| fs::rename(&beside, &target));
-    if written.is_err() {
-        // The error that counts is the one before.
-        let _ = fs::remove_file(&beside);
-        return written;
+    let beside = Beside::create(&target)?;
+    if let Err(error) = fill(&beside.file, bytes, old.as_ref()) {
+        beside.remove();
+        return Err(error);
     }
+    beside.take_name(&target)?;
     sync_folder(folder(&target))
 }
 
@@ -76,31 +74,11 @@ fn follow(path: &Path) -> io::Result<PathBuf> {
     Err(io::Error::other("expected a file, got links in a circle"))
 }
 
-fn folder(path: &Path) -> &Path {
-    match path.parent() {
-        Some(folder) if folder != Path::new("") => folder,
-        _ => Path::new("."),
-    }
-}
-
-/// A new file in the same folder, whose name no one else has.
-fn create_beside(target: &Path) -> io::Result<(PathBuf, File)> {
-    let mut outcome = Err(io::Error::from(ErrorKind::AlreadyExists));
-    for attempt in 0..MOST_NAMES {
-        let beside = folder(target).join(format!(".perpend-{}-{attempt}", process::id()));
-        outcome = OpenOptions::new().write(true).create_new(true).open(&beside).map(|file| (beside, file));
-        if !matches!(&outcome, Err(error) if error.kind() == ErrorKind::AlreadyExists) {
-            break;
-        }
-    }
-    outcome
-}
-
 /// Writes and syncs; then gives the file the owner and mode of the old one.
-fn fill(mut file: File, bytes: &[u8], old: Option<&fs::Metadata>) -> io::Result<()> {
+fn fill(mut file: &File, bytes: &[u8], old: Option<&fs::Metadata>) -> io::Result<()> {
     file.write_all(bytes)?;
     if let Some(old) = old {
-        keep_owner(&file, old);
+        keep_owner(file, old);
         file.set_permissions(old.permissions())?;
     }
     file.sync_all()

@@ -14,7 +14,7 @@
 //! Ross, Lim, Lin, Yang, Int. J. Comput. Vision 77 (2008) 125-141.)
 //!
 //! Energies are variances, `C / w`. Principal axes are made from `R` when asked for. Rows whose deviations square out of
-//! the range of numbers are refused; deviations below `1e-150` count as zero.
+//! the range of numbers are refused; deviations below `1e-130` count as zero.
 
 mod admit;
 mod certificate;

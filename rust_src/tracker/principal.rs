@@ -96,11 +96,12 @@ impl<T: Scalar> Principal<T> {
             slot => &mut slot.insert((size, Svd::new(size, size))).1,
         };
         svd.decompose(matrix)?;
-        let per_weight = if weight > 0.0 { weight.recip() } else { 0.0 };
+        // Divided, not multiplied by the reciprocal: that of a subnormal weight is no number.
+        let weighted = |squares: f64| if weight > 0.0 { energy(squares / weight) } else { 0.0 };
         for (target, value) in self.energies.iter_mut().zip(svd.values()) {
-            *target = energy(value * value * per_weight);
+            *target = weighted(value * value);
         }
-        self.lost = energy(subspace.lost() * per_weight);
+        self.lost = weighted(subspace.lost());
         self.total = self.energies.iter().sum::<f64>() + self.lost;
         self.rank.choose(&self.energies, self.total);
         let before = self.count;

@@ -31,8 +31,10 @@ impl<T: Scalar> Tracker<T> {
         coefficients: &mut [f64],
         residual: &mut [f64],
     ) -> Result<Split, Error> {
+        // Looked at before the axes are, which are left as they were for a row that is refused.
+        self.check_split(row, coefficients, residual)?;
         self.refresh()?;
-        self.split_as_refreshed_into(row, coefficients, residual)
+        self.split_delta(coefficients, residual)
     }
 
     /// As [`Self::split_into`], with the axes of the last refresh and the mean as it stands.
@@ -45,6 +47,12 @@ impl<T: Scalar> Tracker<T> {
         coefficients: &mut [f64],
         residual: &mut [f64],
     ) -> Result<Split, Error> {
+        self.check_split(row, coefficients, residual)?;
+        self.split_delta(coefficients, residual)
+    }
+
+    /// Refuses lengths and entries, or leaves the row less the mean in `delta`.
+    fn check_split(&mut self, row: &[f64], coefficients: &[f64], residual: &[f64]) -> Result<(), Error> {
         let (channels, rank) = (self.settings.channels, self.settings.rank);
         if coefficients.len() != rank {
             return Err(Error::Length { what: "coefficients", expected: rank, got: coefficients.len() });
@@ -52,7 +60,12 @@ impl<T: Scalar> Tracker<T> {
         if residual.len() != channels {
             return Err(Error::Length { what: "residual", expected: channels, got: residual.len() });
         }
-        self.subtract_mean(row)?;
+        self.subtract_mean(row)
+    }
+
+    /// Splits `delta`.
+    fn split_delta(&mut self, coefficients: &mut [f64], residual: &mut [f64]) -> Result<Split, Error> {
+        let channels = self.settings.channels;
         let axes = self.principal.found();
         let (c, none) = coefficients.split_at_mut(axes.count());
         none.fill(0.0);
@@ -79,6 +92,9 @@ impl<T: Scalar> Tracker<T> {
             } else {
                 ops::norm_squared(residual) * channels as f64 / observed as f64
             };
+        }
+        if !squares.is_finite() {
+            return Err(Error::Overflow { what: "squared row" });
         }
         Ok(Split { residual_norm_squared: squares, missing, determined })
     }

@@ -19,6 +19,9 @@ const SLIGHT: f64 = 0.01;
 const MEASURED_EVERY: u64 = 4;
 /// Squared norms below this carry no digits.
 const NOTHING: f64 = 1e-300;
+/// Squared norms of rows below this are no rows: of what a row leaves, as little as `2^-52` of it counts, and the square of
+/// that has to be a number with all its digits, or the direction made of it is of no unit length.
+const NO_ROW: f64 = 1e-260;
 
 /// Basis and factor, with room for one direction more than is kept.
 #[derive(Clone, Debug)]
@@ -105,7 +108,7 @@ impl<T: Scalar> Subspace<T> {
         let count = self.count();
         let q = self.q.view(count);
         let squares = ops::project(q, e, &mut self.h[..count]);
-        if squares < NOTHING {
+        if squares < NO_ROW {
             return;
         }
         let tolerance = rounding + e.len() as f64 * T::EPSILON * squares.sqrt();

@@ -76,11 +76,14 @@ impl<T: Scalar> Tracker<T> {
         let kept = self.settings.kept(elapsed);
         let gain = Gain::new(kept, weight);
         self.mean.scale(gain, &self.delta, &mut self.scaled);
-        if !(self.mean.total() * kept + weight).is_finite() {
+        let total = self.mean.total() * kept + weight;
+        if !total.is_finite() {
             return Err(Error::Overflow { what: "total weight" });
         }
         let squares = ops::norm_squared(&self.scaled);
-        if !(squares + self.subspace.factor().energy()).is_finite() {
+        let held = self.subspace.factor().energy() + self.subspace.lost();
+        // Neither the sum of squares nor the variance, which a small weight makes larger, may leave the numbers.
+        if !(squares + held).is_finite() || !((squares + kept * held) / total).is_finite() {
             return Err(Error::Overflow { what: "squared row" });
         }
         self.mean.advance(gain, &self.delta, self.gaps.missing());

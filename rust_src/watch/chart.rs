@@ -14,6 +14,9 @@ const PASSES: usize = 12;
 /// How far beyond the limit a value is counted for the quantile, over the limit: what lies beyond lifts it by a tenth at a
 /// time, however far out.
 const CREEP: f64 = 1.1;
+/// A statistic more than this many times its mean, which may be nothing, counts as so many times: smoothed, it has to stay a
+/// number.
+const FARTHEST: f64 = 1e300;
 
 /// What a chart says of a row.
 #[derive(Clone, Copy, Debug, Default, PartialEq)]
@@ -195,7 +198,8 @@ impl Chart {
 
     /// The cube root of `value` over the mean, winsorised at `limit`.
     fn root(&self, value: f64, limit: f64) -> f64 {
-        (value.max(self.floor).min(limit) / self.now.moments.mean().max(f64::MIN_POSITIVE)).cbrt()
+        let ratio = value.max(self.floor).min(limit) / self.now.moments.mean().max(f64::MIN_POSITIVE);
+        ratio.min(FARTHEST).cbrt()
     }
 
     /// Cube root of the mean: the unit of [`Chart::root`].

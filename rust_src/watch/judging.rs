@@ -18,7 +18,7 @@ use super::reading::{Phase, Reading};
 use super::recovery::Recovery;
 use super::settings::Settings;
 use super::settle::Settled;
-use super::suspects::{Lasting, share_of};
+use super::suspects::{Lasting, share_of, weighing_limit};
 
 /// Learned rows between two renewals of the same limit. In as many rows the moments move by 3 % of what 500 rows have
 /// taught; the four limits take turns, so that no tick pays for two.
@@ -153,8 +153,9 @@ impl<T: Scalar> Judging<T> {
 
     /// Shares of the channels: of this row where it is itself beyond a limit, else of the last tens of rows.
     fn suspect(&mut self, judged: Judged, verdicts: &[Verdict; 2], reading: &mut Reading) {
-        let limits = verdicts.map(|verdict| verdict.limit);
-        let total = judged.spe * judged.share / limits[0] + judged.t2 / limits[1];
+        let spe = judged.spe * judged.share;
+        let limits = [weighing_limit(spe, verdicts[0].limit), weighing_limit(judged.t2, verdicts[1].limit)];
+        let total = spe / limits[0] + judged.t2 / limits[1];
         let blame = self.model.lens.blame(limits[0], limits[1]);
         self.lasting.take(blame, total);
         if verdicts.iter().any(|verdict| verdict.exceeds) {

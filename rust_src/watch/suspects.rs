@@ -18,6 +18,16 @@ use super::smooth::SHARE;
 use crate::error::Error;
 use crate::state::{Part, Reader, Writer};
 
+/// A statistic more than this many times its limit counts as so many times: after a long silence a limit is next to nothing,
+/// and squares of the ratio have to stay numbers.
+const FARTHEST: f64 = 1e100;
+
+/// The limit to weigh a statistic by.
+#[must_use]
+pub fn weighing_limit(statistic: f64, limit: f64) -> f64 {
+    limit.max(statistic / FARTHEST)
+}
+
 /// Reconstruction shares of the last tens of rows.
 #[derive(Clone, Debug)]
 pub struct Lasting {
@@ -36,7 +46,11 @@ impl Lasting {
     pub fn take(&mut self, blame: &[f64], total: f64) {
         // One row of a million times its limit must not stand for all that follow.
         let weight = SHARE / total.max(1.0);
+        if !total.is_finite() {
+            return;
+        }
         for (kept, new) in self.blame.iter_mut().zip(blame) {
+            let new = if new.is_finite() { *new } else { 0.0 };
             *kept += weight * new - SHARE * *kept;
         }
         self.total += weight * total - SHARE * self.total;
@@ -52,7 +66,9 @@ impl Lasting {
 pub fn share_of(blame: &[f64], total: f64, shares: &mut [f64]) {
     let factor = if total > 0.0 { total.recip() } else { 0.0 };
     for (share, value) in shares.iter_mut().zip(blame) {
-        *share = (value * factor).clamp(0.0, 1.0);
+        let part = value * factor;
+        // What is no number names nobody.
+        *share = if part.is_nan() { 0.0 } else { part.clamp(0.0, 1.0) };
     }
 }
 
@@ -107,6 +123,19 @@ mod tests {
         let mut three = [(9, 9.0); 3];
         three_foremost(&shares, &mut three);
         assert_eq!(three.to_vec(), foremost(&shares, 3));
+    }
+
+    #[test]
+    fn what_is_no_number_names_nobody_and_is_forgotten() {
+        let mut lasting = Lasting::new(2);
+        lasting.take(&[0.1, 0.8], 1.0);
+        lasting.take(&[f64::NAN, 1.0], f64::NAN);
+        lasting.take(&[f64::INFINITY, 1.0], f64::INFINITY);
+        let mut shares = [0.0; 2];
+        lasting.shares(&mut shares);
+        assert!(shares[1] > shares[0] && shares[0] > 0.0, "{shares:?}");
+        share_of(&[f64::NAN, 0.5], 1.0, &mut shares);
+        assert_eq!(shares.map(f64::to_bits), [0.0, 0.5].map(f64::to_bits));
     }
 
     #[test]

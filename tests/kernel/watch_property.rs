@@ -119,3 +119,42 @@ proptest! {
         prop_assert!(healthy > 900, "{healthy} of 1000 healthy after {trouble:?}");
     }
 }
+
+#[test]
+fn a_fault_after_a_silence_that_outlasts_every_memory_names_its_channel() {
+    let mut watch =
+        Watch::<f64>::new(Settings { memory: Some(50.0), hold: 40, ..Settings::new(CHANNELS) }).unwrap();
+    let rows = healthy(400, 5);
+    watch.settle_on(&rows).unwrap();
+    let still: Vec<f64> =
+        (0..CHANNELS).map(|channel| each(&rows).map(|row| row[channel]).sum::<f64>() / 400.0).collect();
+    for _ in 0..60_000 {
+        let reading = watch.tick(&still).unwrap();
+        assert!(reading.shares.iter().all(|share| (0.0..=1.0).contains(share)), "{reading:?}");
+    }
+    let mut faulty = still.clone();
+    faulty[7] += 30.0;
+    for _ in 0..10 {
+        let reading = watch.tick(&faulty).unwrap().clone();
+        assert!(reading.exceeds_any(), "{reading:?}");
+        assert!(reading.shares.iter().all(|share| (0.0..=1.0).contains(share)), "{reading:?}");
+        assert_eq!(perpend::watch::suspects::foremost(&reading.shares, 1)[0].0, 7, "{reading:?}");
+    }
+}
+
+#[test]
+#[ignore = "a minute long; run with `--release -- --ignored`"]
+fn orthonormality_holds_after_1e7_ticks() {
+    let mut watch = Watch::<f64>::new(Settings { memory: Some(500.0), ..Settings::new(CHANNELS) }).unwrap();
+    let rows = healthy(5_000, 3);
+    let mut worst = 0.0_f64;
+    for _ in 0..2_000 {
+        for row in each(&rows) {
+            watch.tick(row).unwrap();
+        }
+        worst = worst.max(watch.orthogonality_error().unwrap());
+    }
+    assert_eq!(watch.ticks(), 10_000_000);
+    println!("worst |I - Q Q^T| at 2000 looks: {worst:e}");
+    assert!(worst <= 10.0 * f64::EPSILON * (CHANNELS as f64).sqrt(), "{worst:e}");
+}

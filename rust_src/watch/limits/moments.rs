@@ -6,6 +6,9 @@ use crate::state::{Part, Reader, Writer};
 /// Lag-one correlation above which a series says no more of its own spread than this.
 const STIFFEST: f64 = 0.999;
 
+/// A value beyond this counts as this: the cubes of what is counted have to stay numbers, or the moments would stay none.
+const FARTHEST: f64 = 1e100;
+
 /// Weighted moments of a series; each new value weighs 1, older ones less.
 #[derive(Clone, Debug, Default)]
 pub struct Moments {
@@ -23,6 +26,7 @@ pub struct Moments {
 impl Moments {
     /// Takes in `value`; what came before keeps the share `keep` of its weight.
     pub fn learn(&mut self, value: f64, keep: f64) {
+        let value = value.clamp(-FARTHEST, FARTHEST);
         let first = self.weight == 0.0;
         self.weight = keep * self.weight + 1.0;
         self.square = keep * keep * self.square + 1.0;
@@ -47,11 +51,12 @@ impl Moments {
 
     /// As if all values had been `factor` times what they were.
     pub fn scale(&mut self, factor: f64) {
-        self.mean *= factor;
-        self.variance *= factor * factor;
-        self.third *= factor.powi(3);
-        self.covariance *= factor * factor;
-        self.last *= factor;
+        let within = |moment: f64, power| moment.clamp(-FARTHEST.powi(power), FARTHEST.powi(power));
+        self.mean = within(self.mean * factor, 1);
+        self.variance = within(self.variance * factor * factor, 2);
+        self.third = within(self.third * factor.powi(3), 3);
+        self.covariance = within(self.covariance * factor * factor, 2);
+        self.last = within(self.last * factor, 1);
     }
 
     /// Adds to mean and variance what a newly joined part of the statistic is expected to bring.
@@ -138,6 +143,24 @@ mod tests {
         let third = series.iter().map(|x| (x - mean).powi(3)).sum::<f64>() / n;
         assert!((moments.skewness() - third / variance.powf(1.5)).abs() < 32.0 * f64::EPSILON);
         assert!((moments.count() - n).abs() < 1e-12);
+    }
+
+    #[test]
+    fn values_beyond_all_measure_leave_numbers_that_come_back() {
+        let mut moments = Moments::default();
+        for value in [1.0, f64::INFINITY, 1e308, 0.5, f64::MAX] {
+            moments.learn(value, 0.9);
+            assert!(
+                moments.third.is_finite() && moments.variance.is_finite() && moments.covariance.is_finite()
+            );
+        }
+        let mut scaled = moments.clone();
+        scaled.scale(1e102);
+        assert!(scaled.third.is_finite() && scaled.variance.is_finite() && scaled.covariance.is_finite());
+        for i in 0..10_000 {
+            moments.learn(f64::from(i % 7), 0.9);
+        }
+        assert!((moments.mean() - 3.0).abs() < 2.0, "{moments:?}");
     }
 
     #[test]

@@ -30,6 +30,41 @@ fn rows_almost_within_the_directions_cost_no_orthonormality() {
 }
 
 #[test]
+fn rows_so_small_that_what_they_leave_squares_to_nothing_cost_no_orthonormality() {
+    for scale in (100..=152).map(|power| 10f64.powi(-power)) {
+        for left in [1e-6, 1e-10, 1e-14] {
+            let settings = Settings { center: false, ..Settings::new(6, 3) };
+            let mut tracker = Tracker::<f64>::new(settings).unwrap();
+            let mut noise = Noise(11);
+            let base: Vec<f64> = (0..6).map(|_| noise.next()).collect();
+            for _ in 0..4 {
+                let row: Vec<f64> = base.iter().map(|value| scale * (value + left * noise.next())).collect();
+                tracker.update(&row, 1.0).unwrap();
+                let error = tracker.orthogonality_error().unwrap();
+                assert!(error <= 1e-14, "scale {scale:e}, left {left:e}: orthogonality {error:e}");
+            }
+        }
+    }
+}
+
+#[test]
+fn weights_near_nothing_leave_every_energy_a_number() {
+    for weight in [f64::from_bits(1), 1e-310, f64::MIN_POSITIVE, 1e-200] {
+        let mut tracker = Tracker::<f64>::new(Settings::new(3, 2)).unwrap();
+        for row in [[0.5, -2.0, 1.25], [3.0, 0.75, -1.5], [-0.25, 4.0, 2.0]] {
+            tracker.update(&row, weight).unwrap();
+        }
+        tracker.refresh().unwrap();
+        assert!(tracker.energies().iter().all(|energy| energy.is_finite()), "{weight:e}");
+        assert!((0.0..=1.0).contains(&tracker.explained()) && tracker.noise_energy() >= 0.0, "{weight:e}");
+    }
+    // Its weighted square is a number; its variance is none.
+    let mut tracker = Tracker::<f64>::new(Settings { center: false, ..Settings::new(2, 1) }).unwrap();
+    assert!(tracker.update(&[1e160, 1.0], 1e-100).is_err());
+    assert_eq!(tracker.samples(), 0);
+}
+
+#[test]
 fn float32_rows_stay_orthonormal_to_their_type() {
     let rows = plant(41, 20_000, 20, 6, 1.0);
     let mut tracker = learn::<f32>(Settings { memory: Some(500.0), ..Settings::new(20, 4) }, &rows);

@@ -43,6 +43,21 @@ fn errors_and_rows_without_weight_leave_the_tracker_as_it_was() {
 }
 
 #[test]
+fn a_split_whose_residual_squares_to_no_number_is_an_error() {
+    let rows = plant(61, 50, 6, 3, 0.1);
+    let mut tracker = learn::<f64>(Settings::new(6, 2), &rows);
+    let before = answers(&tracker);
+    let (mut coefficients, mut residual) = (vec![0.0; 2], vec![0.0; 6]);
+    for gap in [0.5, f64::NAN] {
+        let row = [1e200, -1e190, 2.0, 0.25, gap, -1e200];
+        let split = tracker.split_into(&row, &mut coefficients, &mut residual);
+        assert!(matches!(split, Err(Error::Overflow { .. })), "{split:?}");
+        assert!(matches!(tracker.reconstruct_into(&row, &mut residual), Err(Error::Overflow { .. })));
+    }
+    assert_eq!(answers(&tracker), before);
+}
+
+#[test]
 fn settings_out_of_range_are_refused_by_name() {
     let base = Settings::new(6, 2);
     for (settings, name) in [
