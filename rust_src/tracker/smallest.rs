@@ -101,17 +101,6 @@ impl Smallest {
             }
         }
         self.assemble(steps);
-        if !self.direction.iter().all(|x| x.is_finite()) {
-            eprintln!(
-                "BAD steps {steps} size {size} alpha {:?} beta {:?} vec {:?} inv finite {} {:?}",
-                &self.alpha[..steps],
-                &self.beta[..steps],
-                self.square.vector(),
-                (0..size).all(|r| self.inverse.row(r).iter().all(|x| x.is_finite())),
-                (0..size).map(|r| factor.tail(r)[0]).collect::<Vec<_>>()
-            );
-            std::process::abort();
-        }
     }
 
     /// Forms the inverse, from the last row up, and returns the longest of its rows: the image of the direction sought
