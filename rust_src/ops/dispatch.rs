@@ -7,7 +7,7 @@ use crate::scalar::Scalar;
 
 /// Every sweep that is stamped, under one roof: the stamped names are the same.
 mod sweeps {
-    pub(super) use super::super::block::{project_block, subtract_block};
+    pub(super) use super::super::block::{combine_block, project_block, subtract_block};
     pub(super) use super::super::entries::{normalize_into, rotate, rotate_chain, scale_into};
     pub(super) use super::super::sweep::{dot, project, reflect, subtract};
 }
@@ -96,6 +96,9 @@ stamp! {
     /// `W -= H Q` and `S = W Q^T` for `count` vectors.
     fn subtract_block_in_place<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], count: usize, s: &mut [f64])
         = subtract_block(q, h, Source::Target, w, count, s);
+
+    /// `W -= H Q` for `count` vectors, and no more: a product of matrices. One read of `Q`.
+    fn combine_block<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], count: usize) = combine_block(q, h, w, count);
 
     /// `target = factor source`, rounded to the stored type.
     fn scale_into<T>(factor: f64, source: &[f64], target: &mut [T]) = scale_into(factor, source, target);

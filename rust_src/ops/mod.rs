@@ -22,8 +22,8 @@ mod portable;
 mod sweep;
 
 pub use dispatch::{
-    dot, norm_squared, normalize_into, project, project_block, reflect, reflect_along, rotate, rotate_chain,
-    scale_into, subtract, subtract_block, subtract_block_in_place, subtract_measured,
+    combine_block, dot, norm_squared, normalize_into, project, project_block, reflect, reflect_along, rotate,
+    rotate_chain, scale_into, subtract, subtract_block, subtract_block_in_place, subtract_measured,
     subtract_measured_in_place,
 };
 pub(crate) use lanes::Transfer;

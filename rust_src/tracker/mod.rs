@@ -17,6 +17,9 @@
 //! the range of numbers are refused; deviations below `1e-150` count as zero.
 
 mod admit;
+mod block;
+mod by_channels;
+mod by_rows;
 mod certificate;
 mod factor;
 mod gaps;
@@ -25,6 +28,7 @@ mod merge;
 mod normal;
 mod principal;
 mod rank;
+mod root;
 mod settings;
 mod smallest;
 mod split;
@@ -66,6 +70,8 @@ pub struct Tracker<T: Scalar> {
     /// Workspace: coefficients on the basis, and on the axes.
     coefficients: Vec<f64>,
     scores: Vec<f64>,
+    /// Workspace for rows in blocks.
+    block: block::Workspace,
 }
 
 impl<T: Scalar> Tracker<T> {
@@ -95,6 +101,7 @@ impl<T: Scalar> Tracker<T> {
             scaled: vec![0.0; channels],
             coefficients: vec![0.0; limit],
             scores: vec![0.0; settings.rank],
+            block: block::Workspace::default(),
         })
     }
 

@@ -79,6 +79,26 @@ impl<T: Scalar> Subspace<T> {
         &self.factor
     }
 
+    /// To be written together with [`Self::replace`].
+    pub(super) fn factor_mut(&mut self) -> &mut Factor {
+        &mut self.factor
+    }
+
+    /// Takes `directions`, as many as are kept, orthonormal and one after another, for the basis; of the energy lost before
+    /// the share `kept` remains, and `given_up` is added.
+    pub(super) fn replace(&mut self, directions: &[f64], kept: f64, given_up: f64) {
+        for (index, direction) in directions.chunks_exact(self.q.dim()).enumerate() {
+            ops::scale_into(1.0, direction, self.q.row_mut(index));
+        }
+        // Rounding of a difference may leave less than nothing.
+        self.lost = kept * self.lost + given_up.max(0.0);
+        if self.lost < NOTHING {
+            self.lost = 0.0;
+        }
+        self.cuts += 1;
+        self.mender.take_turn(&mut self.q, self.limit);
+    }
+
     /// Energy given up so far, weighted as the rest: the trace of what the factor lacks.
     pub(super) fn lost(&self) -> f64 {
         self.lost

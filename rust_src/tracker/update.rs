@@ -94,19 +94,6 @@ impl<T: Scalar> Tracker<T> {
         Ok(Update { skipped: None, missing })
     }
 
-    /// Learns rows, one after another in `rows`, one tick each.
-    ///
-    /// # Errors
-    /// As [`Self::update`], naming the row. An infinity is found before anything is learned, a row whose squares overflow
-    /// when it is reached.
-    pub fn update_rows(&mut self, rows: &[f64]) -> Result<(), Error> {
-        self.check_rows(rows)?;
-        for (index, row) in rows.chunks_exact(self.settings.channels).enumerate() {
-            self.update(row, 1.0).map_err(|error| error.in_row(index))?;
-        }
-        Ok(())
-    }
-
     /// Checks rows, one after another in `rows`, for a wrong length or an infinity.
     ///
     /// # Errors

@@ -89,6 +89,9 @@ fn blocks_agree<T: Scalar>(path: Path, q: &RowStore<T>, v: &[f64], u: &[f64]) {
         let mut again = vec![f64::NAN; count * rank];
         path.subtract_block_in_place(q, &factors, &mut in_place, count, &mut again);
         assert_eq!((&in_place, &again), (&w, &s));
+        let mut combined = many.clone();
+        path.combine_block(q, &factors, &mut combined, count);
+        assert_eq!(combined, w);
         for index in 0..count {
             let x = &many[index * dim..][..dim];
             for (row, &got) in h[index * rank..][..rank].iter().enumerate() {
