@@ -155,7 +155,7 @@ impl<T: Scalar> Tracker<T> {
         }
         // A block's first row is scaled by all decays but its own, what was before by all.
         let kept_of_past = share * share;
-        block.mean.clone_from(&self.mean);
+        block.mean.copy_from(&self.mean);
         let gain = Gain::new(kept, 1.0);
         let (mut energy, mut longest) = (0.0, 0.0_f64);
         let room = block.rows[limit * channels..].chunks_exact_mut(channels);

@@ -67,6 +67,14 @@ impl Mean {
         (self.total, self.even) = (0.0, true);
     }
 
+    /// Becomes a copy of `other`, of as many channels, in the room it has.
+    pub(super) fn copy_from(&mut self, other: &Self) {
+        self.high.copy_from_slice(&other.high);
+        self.low.copy_from_slice(&other.low);
+        self.seen.copy_from_slice(&other.seen);
+        (self.total, self.even, self.center) = (other.total, other.even, other.center);
+    }
+
     /// The mean, rounded.
     pub(super) fn values(&self) -> &[f64] {
         &self.high
