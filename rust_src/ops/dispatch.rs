@@ -10,6 +10,7 @@ mod sweeps {
     pub(super) use super::super::block::{combine_block, project_block, subtract_block};
     pub(super) use super::super::entries::{normalize_into, rotate, rotate_chain, scale_into};
     pub(super) use super::super::sweep::{dot, project, reflect, subtract};
+    pub(super) use super::super::triangle::invert_triangle;
 }
 
 /// Stamps a method of [`Path`] and a free function on the current path. Each instruction set gets its own copy
@@ -124,4 +125,16 @@ stamp! {
     /// some of the rows, or is no unit vector, and `along` makes up for it.
     fn reflect_along<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], along: &[f64], extra: &[f64])
         = reflect(rows, stride, count, u, along, extra);
+
+    /// `inverse = scale R^-1` for an upper triangle `R` with the diagonal `pivots` and the rest, `stride` apart, in
+    /// `triangle`; returns the longest row's index. Nothing is written left of the diagonal's register: zeros that are
+    /// there stay. `size^3 / 3` flops.
+    fn invert_triangle(
+        triangle: &[f64],
+        stride: usize,
+        pivots: &[f64],
+        scale: f64,
+        inverse: &mut [f64],
+        inverse_stride: usize
+    ) -> usize = invert_triangle(triangle, stride, pivots, scale, inverse, inverse_stride);
 }

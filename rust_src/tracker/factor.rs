@@ -96,6 +96,11 @@ impl Factor {
         self.append(row);
     }
 
+    /// The entries, row-major, and the distance between rows.
+    pub(super) fn entries(&self) -> (&[f64], usize) {
+        (&self.entries, self.stride)
+    }
+
     /// `R x`.
     pub(super) fn apply(&self, x: &[f64], image: &mut [f64]) {
         for (index, out) in image[..self.size].iter_mut().enumerate() {

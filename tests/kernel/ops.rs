@@ -180,6 +180,42 @@ proptest! {
         }
     }
 
+    /// Up to 40 rows: past every register's width. What is kept beside the triangle is no part of it.
+    #[test]
+    fn a_triangle_times_its_inverse_is_the_identity(
+        (size, more) in (1..40_usize, 0..3_usize),
+        scale in 0.5..4.0_f64,
+        seed in prop::collection::vec(-1.0..1.0_f64, 40 * 43),
+    ) {
+        let stride = size + more;
+        let triangle = &seed[..size * stride];
+        let pivots: Vec<f64> = (0..size).map(|row| 0.5 + triangle[row * stride + row]).collect();
+        prop_assume!(pivots.iter().all(|pivot| pivot.abs() > 1e-3));
+        let entry = |row: usize, column: usize| {
+            if row == column { pivots[row] } else { triangle[row * stride + column] }
+        };
+        for path in Path::available() {
+            let mut inverse = RowStore::<f64>::zeros(size, size);
+            let (out, out_stride) = inverse.parts_mut();
+            let longest = path.invert_triangle(triangle, stride, &pivots, scale, out, out_stride);
+            let norm = |row: usize| inverse.row(row).iter().map(|x| x * x).sum::<f64>();
+            for row in 0..size {
+                prop_assert!(norm(row) <= norm(longest) * (1.0 + slack(size, 1.0)));
+                for column in 0..size {
+                    if column < row {
+                        prop_assert_eq!(inverse.row(row)[column], 0.0);
+                        continue;
+                    }
+                    let terms: Vec<f64> =
+                        (row..=column).map(|k| entry(row, k) * inverse.row(k)[column]).collect();
+                    let expected = if row == column { scale } else { 0.0 };
+                    let magnitude = terms.iter().map(|term| term.abs()).sum::<f64>();
+                    prop_assert!((terms.iter().sum::<f64>() - expected).abs() <= slack(size, magnitude));
+                }
+            }
+        }
+    }
+
     #[test]
     fn normalizing_gives_unit_length_in_the_stored_type(x in prop::collection::vec(0.5..2.0_f64, 1..80)) {
         let norm = x.iter().map(|a| a * a).sum::<f64>().sqrt();
