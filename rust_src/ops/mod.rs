@@ -23,9 +23,10 @@ mod sweep;
 mod triangle;
 
 pub use dispatch::{
-    combine_block, dot, invert_triangle, norm_squared, normalize_into, project, project_block, reflect,
-    reflect_along, rotate, rotate_chain, scale_into, subtract, subtract_block, subtract_block_in_place,
-    subtract_measured, subtract_measured_in_place,
+    combine_block, dot, invert_triangle, norm_squared, normalize_into, project, project_block, project_from,
+    reflect, reflect_along, rotate, rotate_chain, scale_into, subtract, subtract_block,
+    subtract_block_in_place, subtract_measured, subtract_measured_from, subtract_measured_in_place,
 };
 pub(crate) use lanes::Transfer;
 pub use path::{Path, VARIABLE};
+pub use sweep::End;

@@ -6,7 +6,7 @@
 use super::factor::Factor;
 use super::smallest::Smallest;
 use crate::basis::{Measured, clean};
-use crate::ops;
+use crate::ops::{self, End};
 use crate::orthonormal::Mender;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
@@ -96,7 +96,7 @@ impl<T: Scalar> Subspace<T> {
             self.lost = 0.0;
         }
         self.cuts += 1;
-        self.mender.take_turn(&mut self.q, self.limit);
+        self.mender.take_turn(&mut self.q, self.limit, End::Front);
     }
 
     /// Energy given up so far, weighted as the rest: the trace of what the factor lacks.
@@ -120,11 +120,22 @@ impl<T: Scalar> Subspace<T> {
         self.lost += lost;
     }
 
+    /// Where the first sweep of the next row starts: where the last one of the row before finished. Three sweeps a row and
+    /// one more where a direction is measured, each from the other end than the one before.
+    fn end(&self) -> End {
+        if (3 * (self.cuts % 2) + self.cuts / MEASURED_EVERY).is_multiple_of(2) {
+            End::Front
+        } else {
+            End::Back
+        }
+    }
+
     /// Takes in a row `e` of finite squared norm; residuals up to `rounding` carry no direction.
     pub(super) fn absorb(&mut self, e: &[f64], rounding: f64) {
         let count = self.count();
         let q = self.q.view(count);
-        let squares = ops::project(q, e, &mut self.h[..count]);
+        let end = self.end();
+        let squares = ops::project_from(end, q, e, &mut self.h[..count]);
         if squares < NOTHING {
             return;
         }
@@ -132,7 +143,8 @@ impl<T: Scalar> Subspace<T> {
         for buffer in [&mut self.s, &mut self.correction] {
             buffer.resize(count, 0.0);
         }
-        let squares = ops::subtract_measured(q, &self.h[..count], e, &mut self.w, &mut self.s);
+        let h = &self.h[..count];
+        let squares = ops::subtract_measured_from(end.other(), q, h, e, &mut self.w, &mut self.s);
         let leftover: f64 = self.s.iter().map(|entry| entry * entry).sum();
         let full = count == self.limit && count < self.q.dim();
         let norm = if full && leftover <= SLIGHT * SLIGHT * squares {
@@ -168,6 +180,7 @@ impl<T: Scalar> Subspace<T> {
     /// for the cleaned and normalized direction.
     fn give_up(&mut self, norm: f64) {
         let count = self.limit;
+        let end = self.end();
         self.smallest.find(&self.factor);
         let z = self.smallest.direction();
         self.factor.apply(z, &mut self.image);
@@ -188,11 +201,11 @@ impl<T: Scalar> Subspace<T> {
             *out = entry - last * left;
         }
         let (rows, stride) = self.q.parts_mut();
-        ops::reflect_along(rows, stride, count, u, &self.along, &self.w);
+        ops::reflect_along(end, rows, stride, count, u, &self.along, &self.w);
         self.factor.cut(u, &mut self.image);
         self.cuts += 1;
         if self.cuts.is_multiple_of(MEASURED_EVERY) {
-            self.mender.take_turn(&mut self.q, count);
+            self.mender.take_turn(&mut self.q, count, end.other());
         }
     }
 }

@@ -1,6 +1,6 @@
 //! The sweeps on every path, against loops too plain to be wrong.
 
-use perpend::ops::Path;
+use perpend::ops::{End, Path};
 use perpend::{RowStore, Scalar};
 use proptest::prelude::*;
 
@@ -38,19 +38,32 @@ fn plain_dot<T: Scalar>(row: &[T], x: &[f64]) -> (f64, f64) {
 fn sweeps_agree<T: Scalar>(path: Path, rows: &[Vec<f64>], v: &[f64], u: &[f64]) {
     let (dim, count) = (v.len(), rows.len());
     let mut q = store::<T>(rows, dim);
-    let mut h = vec![f64::NAN; count];
-    let squares = path.project(q.view(count), v, &mut h);
-    let (plain, size) = plain_dot(v, v);
-    assert!((squares - plain).abs() <= slack(dim, size));
-    for (index, &got) in h.iter().enumerate() {
-        let (plain, size) = plain_dot(q.row(index), v);
-        assert!((got - plain).abs() <= slack(dim, size), "project: {got} against {plain}");
+    for end in [End::Back, End::Front] {
+        let mut h = vec![f64::NAN; count];
+        let squares = path.project_from(end, q.view(count), v, &mut h);
+        let (plain, size) = plain_dot(v, v);
+        assert!((squares - plain).abs() <= slack(dim, size));
+        for (index, &got) in h.iter().enumerate() {
+            let (plain, size) = plain_dot(q.row(index), v);
+            assert!((got - plain).abs() <= slack(dim, size), "project: {got} against {plain}");
+        }
     }
 
     let coefficients = &u[..count];
     let mut w = vec![f64::NAN; dim];
     let mut s = vec![f64::NAN; count];
     let measured = path.subtract_measured(q.view(count), coefficients, v, &mut w, &mut s);
+    let mut from_front = vec![f64::NAN; dim];
+    let mut left = vec![f64::NAN; count];
+    path.subtract_measured_from(End::Front, q.view(count), coefficients, v, &mut from_front, &mut left);
+    assert_eq!(from_front, w);
+    for ((index, got), back) in left.iter().enumerate().zip(&s) {
+        let (_, size) = plain_dot(q.row(index), &w);
+        assert!(
+            (got - back).abs() <= slack(dim, size),
+            "measure: {got} from the front, {back} from the back"
+        );
+    }
     for column in 0..dim {
         let terms: Vec<f64> = (0..count).map(|i| coefficients[i] * q.row(i)[column].to_f64()).collect();
         let plain = v[column] - terms.iter().sum::<f64>();
@@ -123,7 +136,7 @@ fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]
     let along: Vec<f64> = unit.iter().map(|x| 0.5 - x).collect();
     let mut other = q.clone();
     let (rows, stride) = other.parts_mut();
-    path.reflect_along(rows, stride, count, &unit, &along, extra);
+    path.reflect_along(End::Back, rows, stride, count, &unit, &along, extra);
     assert_reflected(&before, &other, extra, &unit, &along);
     let (rows, stride) = q.parts_mut();
     path.reflect(rows, stride, count, &unit, extra);
