@@ -128,11 +128,11 @@ stamp! {
     fn rotate_chain<T>(rows: &mut [T], stride: usize, dim: usize, first: usize, rotations: &[(f64, f64)])
         = rotate_chain(rows, stride, dim, first, rotations);
 
-    /// Applies the reflection `I - 2 u u^T`, `u` a unit vector over `count` rows and one more, `extra`: row `i`
+    /// Applies the reflection `I - 2 u u^T`, `u` a unit vector over the first rows and one more, `extra`: row `i`
     /// loses `2 u_i g` with `g = sum_i u_i row_i + u_last extra`. `extra`, as long as a row, stays as it is. One
-    /// read of the rows from memory and one from cache, one write, `4 count dim` flops.
-    fn reflect<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], extra: &[f64])
-        = reflect(rows, stride, count, u, u, extra, End::Front);
+    /// read of the rows from memory and one from cache, one write, 4 flops an entry.
+    fn reflect<T>(rows: &mut [T], stride: usize, u: &[f64], extra: &[f64])
+        = reflect(rows, stride, u, u, extra, End::Front);
 
     /// As `reflect`, with `g = sum_i along_i row_i + along_last extra`: the same reflection where `extra` still holds
     /// some of the rows, or is no unit vector, and `along` makes up for it. From either end.
@@ -140,11 +140,10 @@ stamp! {
         end: End,
         rows: &mut [T],
         stride: usize,
-        count: usize,
         u: &[f64],
         along: &[f64],
         extra: &[f64]
-    ) = reflect(rows, stride, count, u, along, extra, end);
+    ) = reflect(rows, stride, u, along, extra, end);
 
     /// `inverse = scale R^-1` for an upper triangle `R` with the diagonal `pivots` and the rest, `stride` apart, in
     /// `triangle`; returns the longest row's index. Nothing is written left of the diagonal's register: zeros that are

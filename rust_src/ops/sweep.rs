@@ -328,14 +328,13 @@ pub(super) fn reflect<L: Lanes, T: Scalar>(
     lanes: L,
     rows: &mut [T],
     stride: usize,
-    count: usize,
     u: &[f64],
     along: &[f64],
     extra: &[f64],
     end: End,
 ) {
-    let dim = extra.len();
-    assert!(stride >= dim && u.len() == count + 1 && along.len() == count + 1, "shapes of a reflection");
+    assert!(stride >= extra.len() && !u.is_empty() && along.len() == u.len(), "shapes of a reflection");
+    let (dim, count) = (extra.len(), u.len() - 1);
     assert!(count == 0 || rows.len() >= (count - 1) * stride + dim, "rows of a reflection");
     // Left unset until written: clearing it would cost more than a short row.
     let mut g = [const { std::mem::MaybeUninit::<f64>::uninit() }; BLOCK];

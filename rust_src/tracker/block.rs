@@ -147,11 +147,11 @@ impl<T: Scalar> Tracker<T> {
             return Done::Left(count + 1);
         }
         let kept = self.settings.kept(1.0);
-        let root = kept.sqrt();
+        let decay = kept.sqrt();
         let mut share = 1.0;
         for place in block.shares[..count].iter_mut().rev() {
             *place = share;
-            share *= root;
+            share *= decay;
         }
         // A block's first row is scaled by all decays but its own, what was before by all.
         let kept_of_past = share * share;

@@ -99,7 +99,9 @@ impl ByRows {
         // The rows kept are sigma U times the mended directions.
         for (row, value) in self.gram.chunks_exact_mut(limit).zip(self.eigen.values().iter().rev()) {
             let sigma = value.sqrt();
-            row.iter_mut().for_each(|entry| *entry *= sigma);
+            for entry in row {
+                *entry *= sigma;
+            }
         }
         let before = past.kept * subspace.factor().energy();
         subspace.factor_mut().restore(limit, &self.gram);
@@ -135,7 +137,9 @@ impl ByRows {
         for (row, (h, inside)) in new.chunks_exact_mut(order).zip(blocks) {
             let (on_basis, among) = row.split_at_mut(limit);
             factor.apply(h, on_basis);
-            on_basis.iter_mut().for_each(|entry| *entry *= scale);
+            for entry in on_basis {
+                *entry *= scale;
+            }
             among[..count].copy_from_slice(inside);
         }
     }

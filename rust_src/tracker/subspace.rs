@@ -201,7 +201,7 @@ impl<T: Scalar> Subspace<T> {
             *out = entry - last * left;
         }
         let (rows, stride) = self.q.parts_mut();
-        ops::reflect_along(end, rows, stride, count, u, &self.along, &self.w);
+        ops::reflect_along(end, rows, stride, u, &self.along, &self.w);
         self.factor.cut(u, &mut self.image);
         self.cuts += 1;
         if self.cuts.is_multiple_of(MEASURED_EVERY) {
