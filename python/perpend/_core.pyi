@@ -408,7 +408,7 @@ class Tracker:
         dtype: DTypeLike = "float64",
     ) -> Tracker: ...
     def update(self, row: ArrayLike, weight: float = 1.0, *, elapsed: float = 1.0) -> bool:
-        """Learn one row; ``12 * (rank + guard) * channels`` flops.
+        """Learn one row; ``11 * (rank + guard) * channels`` flops.
 
         Parameters
         ----------

@@ -2,8 +2,8 @@
 //!
 //! The differences of a block's rows from the running mean follow from the rows and the mean before them: they are known
 //! before anything is learned, and with the rows `R Q` they are all there is, `A^T A` being the scatter after the block.
-//! Of `A` the strongest directions are kept, once a block instead of once a row. Two ways to find
-//! them: few channels beside the directions, among the channels ([`ByChannels`]), else among the rows ([`ByRows`]).
+//! Of `A` the strongest directions are kept, once a block instead of once a row. Two ways to find them: where channels are
+//! few beside the directions, among the channels ([`ByChannels`]), else among the rows ([`ByRows`]).
 //!
 //! Both look for directions in squares, in which energies a [`LEAST_SHARE`] of the largest begin to drown. Where the
 //! weakest direction to keep is as weak as that, and where there is a gap, a channel that arrived late, or too few rows,

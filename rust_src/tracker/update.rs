@@ -40,7 +40,7 @@ impl<T: Scalar> Tracker<T> {
     /// Learns `row` with `weight`, one tick after the row before. NaN is a gap and is filled with the model's
     /// value. A weight of 0, or too few observed channels, learns nothing and forgets nothing.
     ///
-    /// `12 channels (rank + guard)` flops in four sweeps and `O((rank + guard)^2)` on the small factor; gaps
+    /// About `11 channels (rank + guard)` flops in three sweeps and `(rank + guard)^3 / 3` on the small factor; gaps
     /// add one sweep and `O((rank + guard)^2 (rank + guard + gaps))`. Nothing is allocated.
     ///
     /// # Errors
