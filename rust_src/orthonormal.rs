@@ -2,7 +2,7 @@
 
 use crate::dense::Svd;
 use crate::error::Error;
-use crate::ops;
+use crate::ops::{self, End};
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
 
@@ -73,7 +73,8 @@ impl Mender {
 
     /// Measures one of the first `count` rows, the next in turn, against the others, and makes it orthonormal to
     /// them again where rounding has added up. One sweep, `2 count dim` flops; three times that where it mends.
-    pub fn take_turn<T: Scalar>(&mut self, q: &mut RowStore<T>, count: usize) {
+    /// The sweep starts at `end`.
+    pub fn take_turn<T: Scalar>(&mut self, q: &mut RowStore<T>, count: usize, end: End) {
         if count == 0 {
             return;
         }
@@ -82,7 +83,7 @@ impl Mender {
         self.w.iter_mut().zip(q.row(index)).for_each(|(target, value)| *target = value.to_f64());
         self.h.resize(count, 0.0);
         self.s.resize(count, 0.0);
-        let squares = ops::project(q.view(count), &self.w, &mut self.h);
+        let squares = ops::project_from(end, q.view(count), &self.w, &mut self.h);
         self.h[index] = 0.0;
         let loss = self.h.iter().map(|h| h * h).sum::<f64>().sqrt();
         let limit = MEND_LIMIT * T::EPSILON;

@@ -3,6 +3,7 @@
 use super::Basis;
 use crate::error::Error;
 use crate::ops;
+use crate::ops::End;
 use crate::scalar::Scalar;
 
 impl<T: Scalar> Basis<T> {
@@ -28,7 +29,7 @@ impl<T: Scalar> Basis<T> {
         ops::rotate_chain(rows, stride, self.w.len(), index, &self.rotations);
         self.rank -= 1;
         if turned {
-            self.mender.take_turn(&mut self.q, self.rank);
+            self.mender.take_turn(&mut self.q, self.rank, End::Front);
         }
         Ok(())
     }

@@ -343,3 +343,29 @@ pub(super) fn subtract_block<L: Lanes, T: Scalar>(
         }
     }
 }
+
+/// See [`super::Path::combine_block`].
+#[inline(always)]
+pub(super) fn combine_block<L: Lanes, T: Scalar>(
+    lanes: L,
+    q: Rows<'_, T>,
+    h: &[f64],
+    w: &mut [f64],
+    count: usize,
+) {
+    let dim = q.dim();
+    assert!(w.len() == count * dim && h.len() == count * q.count(), "shapes of a block");
+    let out = w.as_mut_ptr();
+    let x = Vectors { start: out.cast_const(), dim };
+    for from in (0..dim).step_by(COLUMNS) {
+        let n = COLUMNS.min(dim - from);
+        // SAFETY: shapes asserted above, and `from + n <= dim`.
+        unsafe {
+            if L::WIDTH == 8 {
+                less_products::<L, T, 8, 3>(lanes, q, from, n, h, x, out, count);
+            } else {
+                less_products::<L, T, 4, 2>(lanes, q, from, n, h, x, out, count);
+            }
+        }
+    }
+}

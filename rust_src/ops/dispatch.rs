@@ -1,15 +1,16 @@
 //! From a path to code compiled for it: one stamp a sweep.
 
 use super::path::{Path, Set};
-use super::sweep::Source;
+use super::sweep::{End, Source};
 use crate::rows::Rows;
 use crate::scalar::Scalar;
 
 /// Every sweep that is stamped, under one roof: the stamped names are the same.
 mod sweeps {
-    pub(super) use super::super::block::{project_block, subtract_block};
+    pub(super) use super::super::block::{combine_block, project_block, subtract_block};
     pub(super) use super::super::entries::{normalize_into, rotate, rotate_chain, scale_into};
     pub(super) use super::super::sweep::{dot, project, reflect, subtract};
+    pub(super) use super::super::triangle::invert_triangle;
 }
 
 /// Stamps a method of [`Path`] and a free function on the current path. Each instruction set gets its own copy
@@ -71,20 +72,33 @@ stamp! {
     fn norm_squared(x: &[f64]) -> f64 = dot(x, x);
 
     /// `h = Q v`; returns `v . v`. One read of `Q`, `2 rank dim` flops.
-    fn project<T>(q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 = project(q, v, h);
+    fn project<T>(q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 = project(q, v, h, End::Front);
+
+    /// As [`project`], from either end.
+    fn project_from<T>(end: End, q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 = project(q, v, h, end);
 
     /// `w = v - Q^T h`; returns `w . w`. One read of `Q`, `2 rank dim` flops.
     fn subtract<T>(q: Rows<'_, T>, h: &[f64], v: &[f64], w: &mut [f64]) -> f64
-        = subtract(q, h, Source::Vector(v), w, None);
+        = subtract(q, h, Source::Vector(v), w, None, End::Back);
 
     /// `w = v - Q^T h` and `s = Q w`; returns `w . w`. One read of `Q` from memory and one from cache,
     /// `4 rank dim` flops.
     fn subtract_measured<T>(q: Rows<'_, T>, h: &[f64], v: &[f64], w: &mut [f64], s: &mut [f64]) -> f64
-        = subtract(q, h, Source::Vector(v), w, Some(s));
+        = subtract(q, h, Source::Vector(v), w, Some(s), End::Back);
+
+    /// As [`subtract_measured`], which starts at the back, from either end.
+    fn subtract_measured_from<T>(
+        end: End,
+        q: Rows<'_, T>,
+        h: &[f64],
+        v: &[f64],
+        w: &mut [f64],
+        s: &mut [f64]
+    ) -> f64 = subtract(q, h, Source::Vector(v), w, Some(s), end);
 
     /// `w -= Q^T h` and `s = Q w`; returns `w . w`. As [`subtract_measured`].
     fn subtract_measured_in_place<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], s: &mut [f64]) -> f64
-        = subtract(q, h, Source::Target, w, Some(s));
+        = subtract(q, h, Source::Target, w, Some(s), End::Back);
 
     /// `H = V Q^T` for `count` vectors, one after another in `v`; `h` has a row a vector. One read of `Q`.
     fn project_block<T>(q: Rows<'_, T>, v: &[f64], count: usize, h: &mut [f64]) = project_block(q, v, count, h);
@@ -96,6 +110,9 @@ stamp! {
     /// `W -= H Q` and `S = W Q^T` for `count` vectors.
     fn subtract_block_in_place<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], count: usize, s: &mut [f64])
         = subtract_block(q, h, Source::Target, w, count, s);
+
+    /// `W -= H Q` for `count` vectors, and no more: a product of matrices. One read of `Q`.
+    fn combine_block<T>(q: Rows<'_, T>, h: &[f64], w: &mut [f64], count: usize) = combine_block(q, h, w, count);
 
     /// `target = factor source`, rounded to the stored type.
     fn scale_into<T>(factor: f64, source: &[f64], target: &mut [T]) = scale_into(factor, source, target);
@@ -111,14 +128,32 @@ stamp! {
     fn rotate_chain<T>(rows: &mut [T], stride: usize, dim: usize, first: usize, rotations: &[(f64, f64)])
         = rotate_chain(rows, stride, dim, first, rotations);
 
-    /// Applies the reflection `I - 2 u u^T`, `u` a unit vector over `count` rows and one more, `extra`: row `i`
+    /// Applies the reflection `I - 2 u u^T`, `u` a unit vector over the first rows and one more, `extra`: row `i`
     /// loses `2 u_i g` with `g = sum_i u_i row_i + u_last extra`. `extra`, as long as a row, stays as it is. One
-    /// read of the rows from memory and one from cache, one write, `4 count dim` flops.
-    fn reflect<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], extra: &[f64])
-        = reflect(rows, stride, count, u, u, extra);
+    /// read of the rows from memory and one from cache, one write, 4 flops an entry.
+    fn reflect<T>(rows: &mut [T], stride: usize, u: &[f64], extra: &[f64])
+        = reflect(rows, stride, u, u, extra, End::Front);
 
     /// As `reflect`, with `g = sum_i along_i row_i + along_last extra`: the same reflection where `extra` still holds
-    /// some of the rows, or is no unit vector, and `along` makes up for it.
-    fn reflect_along<T>(rows: &mut [T], stride: usize, count: usize, u: &[f64], along: &[f64], extra: &[f64])
-        = reflect(rows, stride, count, u, along, extra);
+    /// some of the rows, or is no unit vector, and `along` makes up for it. From either end.
+    fn reflect_along<T>(
+        end: End,
+        rows: &mut [T],
+        stride: usize,
+        u: &[f64],
+        along: &[f64],
+        extra: &[f64]
+    ) = reflect(rows, stride, u, along, extra, end);
+
+    /// `inverse = scale R^-1` for an upper triangle `R` with the diagonal `pivots` and the rest, `stride` apart, in
+    /// `triangle`; returns the longest row's index. Nothing is written left of the diagonal's register: zeros that are
+    /// there stay. `size^3 / 3` flops.
+    fn invert_triangle(
+        triangle: &[f64],
+        stride: usize,
+        pivots: &[f64],
+        scale: f64,
+        inverse: &mut [f64],
+        inverse_stride: usize
+    ) -> usize = invert_triangle(triangle, stride, pivots, scale, inverse, inverse_stride);
 }

@@ -27,6 +27,34 @@ fn block_for<T>(count: usize) -> usize {
     (entries / BLOCK_LEAST * BLOCK_LEAST).clamp(BLOCK_LEAST, BLOCK)
 }
 
+/// Where a sweep starts. A basis as large as the cache, swept again and again from the same end, is never there when it is
+/// needed; swept to and fro, its last part is still there each time.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum End {
+    /// At the first column.
+    Front,
+    /// At the last column.
+    Back,
+}
+
+impl End {
+    /// The other end: where the sweep that starts here finishes.
+    #[must_use]
+    pub fn other(self) -> Self {
+        match self {
+            Self::Front => Self::Back,
+            Self::Back => Self::Front,
+        }
+    }
+
+    /// First columns of the blocks, `length` columns each, of `dim` columns, in the order of a sweep from this end.
+    #[inline(always)]
+    fn blocks(self, dim: usize, length: usize) -> impl Iterator<Item = usize> {
+        let count = dim.div_ceil(length);
+        (0..count).map(move |step| length * if self == Self::Front { step } else { count - 1 - step })
+    }
+}
+
 /// Calls `$on` with a group size as constant until `$count` rows are done: eights, then what is left.
 macro_rules! in_groups {
     ($count:expr, |$first:ident, $rows:ident, $chains:ident| $body:expr) => {{
@@ -223,16 +251,23 @@ pub(super) fn dot<L: Lanes>(lanes: L, x: &[f64], y: &[f64]) -> f64 {
 
 /// See [`super::Path::project`].
 #[inline(always)]
-pub(super) fn project<L: Lanes, T: Scalar>(lanes: L, q: Rows<'_, T>, v: &[f64], h: &mut [f64]) -> f64 {
+pub(super) fn project<L: Lanes, T: Scalar>(
+    lanes: L,
+    q: Rows<'_, T>,
+    v: &[f64],
+    h: &mut [f64],
+    end: End,
+) -> f64 {
     assert!(v.len() == q.dim() && h.len() == q.count(), "shapes of a projection");
     h.fill(0.0);
     let mut squares = 0.0;
     let length = block_for::<T>(q.count());
-    for (index, block) in v.chunks(length).enumerate() {
+    for from in end.blocks(v.len(), length) {
+        let block = &v[from..(from + length).min(q.dim())];
         // SAFETY: `block` holds its length and lies inside `v`, which is as long as a row.
         unsafe {
             squares += dots::<L, f64, 1, 8>(lanes, [block.as_ptr()], block.as_ptr(), block.len())[0];
-            add_dots(lanes, q, index * length, block.as_ptr(), block.len(), h);
+            add_dots(lanes, q, from, block.as_ptr(), block.len(), h);
         }
     }
     squares
@@ -256,6 +291,7 @@ pub(super) fn subtract<L: Lanes, T: Scalar>(
     source: Source<'_>,
     w: &mut [f64],
     mut s: Option<&mut [f64]>,
+    end: End,
 ) -> f64 {
     assert!(w.len() == q.dim() && h.len() == q.count(), "shapes of a subtraction");
     if let Source::Vector(v) = source {
@@ -267,7 +303,7 @@ pub(super) fn subtract<L: Lanes, T: Scalar>(
     }
     let block = block_for::<T>(q.count());
     let mut squares = 0.0;
-    for from in (0..w.len()).step_by(block).rev() {
+    for from in end.blocks(w.len(), block) {
         let here = &mut w[from..(from + block).min(q.dim())];
         let (out, n) = (here.as_mut_ptr(), here.len());
         let x = match source {
@@ -292,19 +328,19 @@ pub(super) fn reflect<L: Lanes, T: Scalar>(
     lanes: L,
     rows: &mut [T],
     stride: usize,
-    count: usize,
     u: &[f64],
     along: &[f64],
     extra: &[f64],
+    end: End,
 ) {
-    let dim = extra.len();
-    assert!(stride >= dim && u.len() == count + 1 && along.len() == count + 1, "shapes of a reflection");
+    assert!(stride >= extra.len() && !u.is_empty() && along.len() == u.len(), "shapes of a reflection");
+    let (dim, count) = (extra.len(), u.len() - 1);
     assert!(count == 0 || rows.len() >= (count - 1) * stride + dim, "rows of a reflection");
     // Left unset until written: clearing it would cost more than a short row.
     let mut g = [const { std::mem::MaybeUninit::<f64>::uninit() }; BLOCK];
     let g = g.as_mut_ptr().cast::<f64>();
     let block = block_for::<T>(count);
-    for from in (0..dim).step_by(block) {
+    for from in end.blocks(dim, block) {
         let n = block.min(dim - from);
         // g = -(a_last extra + sum_i a_i row_i), so that row_i + 2 u_i g is the reflected row.
         // SAFETY: `g` holds `BLOCK >= n` entries, written by `scaled` before they are read; `extra` has `n` from

@@ -11,6 +11,11 @@ use crate::scalar::Scalar;
 /// the sine of the largest angle between the reported and the exact subspace is at most `lost / (gap - lost)` where
 /// that is positive, `gap` being the energy between the last reported and the next direction (Davis and Kahan, SIAM J.
 /// Numer. Anal. 7 (1970) 1-46).
+///
+/// All of it rests on the tracked scatter never exceeding the exact one, and that has a price. An axis leans toward a new
+/// direction by their common energy over the difference of theirs; what was given up of the new direction's is not there
+/// to be subtracted, so axes lean too little, by its share of their energy. Assuming that what was given up is spread evenly
+/// would mend most of that, where it is so, and void the bounds (`benches/drift.py` shows both).
 #[derive(Clone, Debug, PartialEq)]
 pub struct Certificate {
     /// Energy that is the most by which any tracked energy is too low.

@@ -32,6 +32,21 @@ impl Factor {
         }
     }
 
+    /// All zero, of the same size.
+    pub(super) fn clear(&mut self) {
+        self.entries.fill(0.0);
+    }
+
+    /// Writes it, times `scale`, as a full square, row-major.
+    pub(super) fn write(&self, scale: f64, square: &mut [f64]) {
+        square.fill(0.0);
+        for (row, out) in square.chunks_exact_mut(self.size.max(1)).enumerate() {
+            for (target, entry) in out[row..].iter_mut().zip(self.tail(row)) {
+                *target = scale * entry;
+            }
+        }
+    }
+
     /// Rows, which are also columns.
     pub(super) fn size(&self) -> usize {
         self.size
@@ -79,6 +94,11 @@ impl Factor {
             self.entries[index * self.stride + last] = 0.0;
         }
         self.append(row);
+    }
+
+    /// The entries, row-major, and the distance between rows.
+    pub(super) fn entries(&self) -> (&[f64], usize) {
+        (&self.entries, self.stride)
     }
 
     /// `R x`.
@@ -148,7 +168,7 @@ impl Factor {
 }
 
 /// Sum of products of two short vectors of equal length, in chains that do not wait for one another.
-fn dot(x: &[f64], y: &[f64]) -> f64 {
+pub(super) fn dot(x: &[f64], y: &[f64]) -> f64 {
     if x.len() >= WIDE {
         return ops::dot(x, y);
     }

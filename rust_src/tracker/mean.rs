@@ -67,6 +67,14 @@ impl Mean {
         (self.total, self.even) = (0.0, true);
     }
 
+    /// Becomes a copy of `other`, of as many channels, in the room it has.
+    pub(super) fn copy_from(&mut self, other: &Self) {
+        self.high.copy_from_slice(&other.high);
+        self.low.copy_from_slice(&other.low);
+        self.seen.copy_from_slice(&other.seen);
+        (self.total, self.even, self.center) = (other.total, other.even, other.center);
+    }
+
     /// The mean, rounded.
     pub(super) fn values(&self) -> &[f64] {
         &self.high
@@ -83,15 +91,20 @@ impl Mean {
         }
     }
 
+    /// Whether all channels rest on the same weight, and there is some.
+    pub(super) fn is_even(&self) -> bool {
+        self.even && self.total > 0.0
+    }
+
+    /// What scales a delta to what the scatter gains by it, while the mean is even.
+    pub(super) fn root(&self, gain: Gain) -> f64 {
+        if self.center { gain.scale(self.total) } else { gain.weight.sqrt() }
+    }
+
     /// Scales `delta` to what the scatter gains by it, in `scaled`. Channels never seen gain nothing.
     pub(super) fn scale(&self, gain: Gain, delta: &[f64], scaled: &mut [f64]) {
-        if !self.center {
-            let root = gain.weight.sqrt();
-            for (out, value) in scaled.iter_mut().zip(delta) {
-                *out = root * value;
-            }
-        } else if self.even {
-            let root = gain.scale(self.total);
+        if self.even || !self.center {
+            let root = self.root(gain);
             for (out, value) in scaled.iter_mut().zip(delta) {
                 *out = root * value;
             }

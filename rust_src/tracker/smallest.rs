@@ -1,7 +1,7 @@
 //! The direction to give up: the right singular vector of the bordered factor that belongs to its smallest value.
 //!
-//! The inverse of the factor turns the question around: its largest singular value, which a bidiagonal matrix built from a
-//! few products with it gives (Golub & Kahan, J. SIAM Numer. Anal. B 2 (1965) 205-224). Plain inverse iteration is slow
+//! The inverse of the factor turns the question around: its largest singular value, which a tridiagonal matrix built from a
+//! few products with it and its transpose gives (Lanczos, J. Res. Natl. Bur. Stand. 45 (1950) 255-282). Plain inverse iteration is slow
 //! where the two smallest values are close, which is where a tracker lives: the weakest guard direction and the new one
 //! both carry noise. This converges in a handful of steps and, after as many steps as there are rows, is exact.
 //! The step count is decided by the residual, never fixed.
@@ -25,13 +25,10 @@ const KEPT: f64 = 0.5;
 pub(super) struct Smallest {
     /// The inverse, times the largest diagonal entry: squares of it stay in range.
     inverse: RowStore<f64>,
-    /// Orthonormal vectors of the search, one a step: in the space of the images, and of the directions.
-    left: RowStore<f64>,
-    right: RowStore<f64>,
-    /// The bidiagonal matrix.
-    alpha: Vec<f64>,
-    beta: Vec<f64>,
+    /// Orthonormal vectors of the search, one a step.
+    found: RowStore<f64>,
     square: Tridiagonal,
+    image: Vec<f64>,
     /// The vector at hand, before and after it is made orthogonal to those found.
     raw: Vec<f64>,
     clean: Vec<f64>,
@@ -45,11 +42,9 @@ impl Smallest {
     pub(super) fn with_room(limit: usize) -> Self {
         Self {
             inverse: RowStore::zeros(limit, limit),
-            left: RowStore::zeros(limit, limit),
-            right: RowStore::zeros(limit, limit),
-            alpha: vec![0.0; limit],
-            beta: vec![0.0; limit],
+            found: RowStore::zeros(limit, limit),
             square: Tridiagonal::with_room(limit),
+            image: vec![0.0; limit],
             raw: vec![0.0; limit],
             clean: vec![0.0; limit],
             products: vec![0.0; limit],
@@ -69,90 +64,62 @@ impl Smallest {
         let size = self.raw.len();
         self.square.clear();
         let first = self.invert(factor);
-        self.left.row_mut(0).copy_from_slice(self.inverse.row(first));
-        normalize(self.left.row_mut(0));
+        self.image.copy_from_slice(self.inverse.row(first));
+        normalize(&mut self.image);
+        ops::project(self.inverse.view(size), &self.image, &mut self.clean);
+        normalize(&mut self.clean);
         let mut steps = 0;
+        let mut before = 0.0;
         loop {
-            // alpha u = A v - beta u_before, with A the inverse.
-            ops::project(self.inverse.view(size), self.left.row(steps), &mut self.raw);
-            orthogonalize(self.right.view(steps), &mut self.raw, &mut self.clean, &mut self.products);
-            let alpha = normalize(&mut self.clean);
-            self.right.row_mut(steps).copy_from_slice(&self.clean);
-            self.alpha[steps] = alpha;
-            let before = if steps == 0 { 0.0 } else { self.beta[steps - 1] };
-            // -beta v_next = alpha v - A^T u.
+            self.found.row_mut(steps).copy_from_slice(&self.clean);
+            // beta v_next = A A^T v - alpha v - beta v_before, A being the inverse; raw holds A A^T v, less the sign.
+            let v = self.found.row(steps);
+            let alpha = ops::subtract(self.inverse.view(size), v, &self.zeros, &mut self.image);
+            ops::project(self.inverse.view(size), &self.image, &mut self.raw);
+            for (entry, v) in self.raw.iter_mut().zip(v) {
+                *entry = -(*entry + alpha * v);
+            }
+            if steps > 0 {
+                for (entry, v) in self.raw.iter_mut().zip(self.found.row(steps - 1)) {
+                    *entry -= before * v;
+                }
+            }
             steps += 1;
-            ops::subtract(self.inverse.view(size), &self.clean, &self.zeros, &mut self.raw);
-            orthogonalize(self.left.view(steps), &mut self.raw, &mut self.clean, &mut self.products);
+            orthogonalize(self.found.view(steps), &mut self.raw, &mut self.clean, &mut self.products);
             let beta = normalize(&mut self.clean);
-            self.beta[steps - 1] = beta;
-            self.square.push(alpha * alpha + before * before, alpha * beta);
-            let ends = steps == size || alpha == 0.0 || beta == 0.0;
+            self.square.push(alpha, beta);
+            let ends = steps == size || beta == 0.0;
             if ends || self.square.may_couple_below(COUPLING) {
                 let largest = self.square.largest();
                 let last = self.square.vector()[steps - 1];
-                if ends || alpha * beta * last.abs() <= COUPLING * largest {
+                if ends || beta * last.abs() <= COUPLING * largest {
                     break;
                 }
             }
-            let next = self.left.row_mut(steps);
-            for (out, entry) in next.iter_mut().zip(&self.clean) {
-                *out = -entry;
-            }
+            before = beta;
         }
-        self.assemble(steps);
-        if !self.direction.iter().all(|x| x.is_finite()) {
-            eprintln!(
-                "BAD steps {steps} size {size} alpha {:?} beta {:?} vec {:?} inv finite {} {:?}",
-                &self.alpha[..steps],
-                &self.beta[..steps],
-                self.square.vector(),
-                (0..size).all(|r| self.inverse.row(r).iter().all(|x| x.is_finite())),
-                (0..size).map(|r| factor.tail(r)[0]).collect::<Vec<_>>()
-            );
-            std::process::abort();
+        for (weight, entry) in self.products.iter_mut().zip(self.square.vector()) {
+            *weight = -entry;
         }
+        let weights = &self.products[..steps];
+        ops::subtract(self.found.view(steps), weights, &self.zeros, &mut self.direction);
+        normalize(&mut self.direction);
     }
 
-    /// Forms the inverse, from the last row up, and returns the longest of its rows: the image of the direction sought
-    /// prevails in it.
+    /// Forms the inverse and returns the longest of its rows: the image of the direction sought prevails in it.
     fn invert(&mut self, factor: &Factor) -> usize {
         let size = self.raw.len();
-        let scale = (0..size).map(|row| factor.tail(row)[0].abs()).fold(f64::MIN_POSITIVE, f64::max);
-        let (mut longest, mut first) = (0.0, 0);
-        for row in (0..size).rev() {
-            let tail = factor.tail(row);
-            self.raw[row..].fill(0.0);
-            for (below, &entry) in tail.iter().enumerate().skip(1) {
-                let solved = &self.inverse.row(row + below)[row + below..];
-                for (out, value) in self.raw[row + below..].iter_mut().zip(solved) {
-                    *out -= entry * value;
-                }
-            }
-            self.raw[row] = scale;
-            let pivot = if tail[0].abs() < NULL * scale { NULL * scale } else { tail[0] };
-            let reciprocal = pivot.recip();
-            let mut squares = 0.0;
-            for (out, value) in self.inverse.row_mut(row)[row..].iter_mut().zip(&self.raw[row..]) {
-                *out = value * reciprocal;
-                squares += *out * *out;
-            }
-            if squares > longest {
-                (longest, first) = (squares, row);
-            }
+        let pivots = &mut self.raw;
+        for (row, pivot) in pivots.iter_mut().enumerate() {
+            *pivot = factor.tail(row)[0];
         }
-        first
-    }
-
-    /// The direction from the vector of the bidiagonal matrix: `B g`, in the basis of the search.
-    fn assemble(&mut self, steps: usize) {
-        let g = self.square.vector();
-        for (step, weight) in self.products[..steps].iter_mut().enumerate() {
-            let next = if step + 1 < steps { self.beta[step] * g[step + 1] } else { 0.0 };
-            *weight = -(self.alpha[step] * g[step] + next);
+        let scale = pivots.iter().fold(f64::MIN_POSITIVE, |largest, pivot| largest.max(pivot.abs()));
+        for pivot in pivots.iter_mut().filter(|pivot| pivot.abs() < NULL * scale) {
+            *pivot = NULL * scale;
         }
-        ops::subtract(self.right.view(steps), &self.products[..steps], &self.zeros, &mut self.direction);
-        normalize(&mut self.direction);
+        let (entries, stride) = factor.entries();
+        let (inverse, inverse_stride) = self.inverse.parts_mut();
+        ops::invert_triangle(entries, stride, &pivots[..size], scale, inverse, inverse_stride)
     }
 }
 

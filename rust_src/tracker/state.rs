@@ -33,6 +33,7 @@ impl<T: Scalar> State for Tracker<T> {
             scaled: _,
             coefficients: _,
             scores: _,
+            block: _,
         } = self;
         let Settings { channels, rank, memory, center, guard } = settings;
         to.word("channels", channels);

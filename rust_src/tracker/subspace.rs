@@ -1,12 +1,13 @@
 //! The tracked rows `R Q`: an orthonormal basis and a small triangular factor, taking in one row after another.
 //!
-//! A row costs one sweep for `h = Q e`, one for the residual with its measured loss, one for the reflection and
-//! one that measures an old direction: `12 k channels` flops, and `O(k^2)` on the factor.
+//! A row costs one sweep for `h = Q e`, one for the residual with its measured loss, one for the reflection, and every
+//! fourth row one that measures an old direction: `(2 + 4 + 4 + 2 / 4) k channels` flops, and on the factor `k^3 / 3` for its
+//! inverse and about `100 k^2`.
 
 use super::factor::Factor;
 use super::smallest::Smallest;
 use crate::basis::{Measured, clean};
-use crate::ops;
+use crate::ops::{self, End};
 use crate::orthonormal::Mender;
 use crate::rows::{RowStore, Rows};
 use crate::scalar::Scalar;
@@ -82,6 +83,26 @@ impl<T: Scalar> Subspace<T> {
         &self.factor
     }
 
+    /// To be written together with [`Self::replace`].
+    pub(super) fn factor_mut(&mut self) -> &mut Factor {
+        &mut self.factor
+    }
+
+    /// Takes `directions`, as many as are kept, orthonormal and one after another, for the basis; of the energy lost before
+    /// the share `kept` remains, and `given_up` is added.
+    pub(super) fn replace(&mut self, directions: &[f64], kept: f64, given_up: f64) {
+        for (index, direction) in directions.chunks_exact(self.q.dim()).enumerate() {
+            ops::scale_into(1.0, direction, self.q.row_mut(index));
+        }
+        // Rounding of a difference may leave less than nothing.
+        self.lost = kept * self.lost + given_up.max(0.0);
+        if self.lost < NOTHING {
+            self.lost = 0.0;
+        }
+        self.cuts += 1;
+        self.mender.take_turn(&mut self.q, self.limit, End::Front);
+    }
+
     /// Energy given up so far, weighted as the rest: the trace of what the factor lacks.
     pub(super) fn lost(&self) -> f64 {
         self.lost
@@ -103,11 +124,22 @@ impl<T: Scalar> Subspace<T> {
         self.lost += lost;
     }
 
+    /// Where the first sweep of the next row starts: where the last one of the row before finished. Three sweeps a row and
+    /// one more where a direction is measured, each from the other end than the one before.
+    fn end(&self) -> End {
+        if (3 * (self.cuts % 2) + self.cuts / MEASURED_EVERY).is_multiple_of(2) {
+            End::Front
+        } else {
+            End::Back
+        }
+    }
+
     /// Takes in a row `e` of finite squared norm; residuals up to `rounding` carry no direction.
     pub(super) fn absorb(&mut self, e: &[f64], rounding: f64) {
         let count = self.count();
         let q = self.q.view(count);
-        let squares = ops::project(q, e, &mut self.h[..count]);
+        let end = self.end();
+        let squares = ops::project_from(end, q, e, &mut self.h[..count]);
         if squares < NO_ROW {
             return;
         }
@@ -115,7 +147,8 @@ impl<T: Scalar> Subspace<T> {
         for buffer in [&mut self.s, &mut self.correction] {
             buffer.resize(count, 0.0);
         }
-        let squares = ops::subtract_measured(q, &self.h[..count], e, &mut self.w, &mut self.s);
+        let h = &self.h[..count];
+        let squares = ops::subtract_measured_from(end.other(), q, h, e, &mut self.w, &mut self.s);
         let leftover: f64 = self.s.iter().map(|entry| entry * entry).sum();
         let full = count == self.limit && count < self.q.dim();
         let norm = if full && leftover <= SLIGHT * SLIGHT * squares {
@@ -151,6 +184,7 @@ impl<T: Scalar> Subspace<T> {
     /// for the cleaned and normalized direction.
     fn give_up(&mut self, norm: f64) {
         let count = self.limit;
+        let end = self.end();
         self.smallest.find(&self.factor);
         let z = self.smallest.direction();
         self.factor.apply(z, &mut self.image);
@@ -171,11 +205,11 @@ impl<T: Scalar> Subspace<T> {
             *out = entry - last * left;
         }
         let (rows, stride) = self.q.parts_mut();
-        ops::reflect_along(rows, stride, count, u, &self.along, &self.w);
+        ops::reflect_along(end, rows, stride, u, &self.along, &self.w);
         self.factor.cut(u, &mut self.image);
         self.cuts += 1;
         if self.cuts.is_multiple_of(MEASURED_EVERY) {
-            self.mender.take_turn(&mut self.q, count);
+            self.mender.take_turn(&mut self.q, count, end.other());
         }
     }
 }

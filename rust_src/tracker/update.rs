@@ -40,7 +40,7 @@ impl<T: Scalar> Tracker<T> {
     /// Learns `row` with `weight`, one tick after the row before. NaN is a gap and is filled with the model's
     /// value. A weight of 0, or too few observed channels, learns nothing and forgets nothing.
     ///
-    /// `12 channels (rank + guard)` flops in four sweeps and `O((rank + guard)^2)` on the small factor; gaps
+    /// About `11 channels (rank + guard)` flops in three sweeps and `(rank + guard)^3 / 3` on the small factor; gaps
     /// add one sweep and `O((rank + guard)^2 (rank + guard + gaps))`. Nothing is allocated.
     ///
     /// # Errors
@@ -95,19 +95,6 @@ impl<T: Scalar> Tracker<T> {
         self.clock += elapsed;
         self.principal.outdate();
         Ok(Update { skipped: None, missing })
-    }
-
-    /// Learns rows, one after another in `rows`, one tick each.
-    ///
-    /// # Errors
-    /// As [`Self::update`], naming the row. An infinity is found before anything is learned, a row whose squares overflow
-    /// when it is reached.
-    pub fn update_rows(&mut self, rows: &[f64]) -> Result<(), Error> {
-        self.check_rows(rows)?;
-        for (index, row) in rows.chunks_exact(self.settings.channels).enumerate() {
-            self.update(row, 1.0).map_err(|error| error.in_row(index))?;
-        }
-        Ok(())
     }
 
     /// Checks rows, one after another in `rows`, for a wrong length or an infinity.

@@ -1,4 +1,4 @@
-//! Once its capacity stands, the basis allocates nothing; nor does the watch once settled.
+//! Once its capacity stands, the basis allocates nothing; nor does the tracker, nor the watch once settled.
 #![allow(clippy::unwrap_used, reason = "a test may stop where it finds a surprise")]
 #![allow(unsafe_code, reason = "an allocator that counts has to be one: GlobalAlloc is an unsafe trait")]
 
@@ -6,6 +6,7 @@ use std::alloc::{GlobalAlloc, Layout, System};
 use std::cell::Cell;
 use std::hint::black_box;
 
+use perpend::tracker::{self, Tracker};
 use perpend::watch::{Limits, Phase, Settings, Watch};
 use perpend::{Basis, Scalar, ops};
 
@@ -143,6 +144,27 @@ fn allocates_nothing<T: Scalar>() {
 fn once_its_capacity_stands_a_basis_allocates_nothing() {
     allocates_nothing::<f64>();
     allocates_nothing::<f32>();
+}
+
+/// Row by row from the first one on, in blocks from the second one on: among the channels and among the rows.
+#[test]
+fn a_tracker_allocates_nothing_but_room_for_its_first_block() {
+    black_box(ops::Path::current());
+    for channels in [CHANNELS, 6 * CHANNELS] {
+        let settings = tracker::Settings { memory: Some(200.0), ..tracker::Settings::new(channels, 3) };
+        let mut tracker = Tracker::<f64>::new(settings).unwrap();
+        let mut rows = healthy(2_400 * channels / CHANNELS, 3);
+        rows[1_000 * channels + 5] = f64::NAN;
+        let (first, rest) = rows.split_at(1_200 * channels);
+        let one_by_one = requests(|| {
+            for row in first.chunks_exact(channels) {
+                tracker.update(row, 1.0).unwrap();
+            }
+        });
+        assert_eq!(one_by_one, 0, "{channels} channels");
+        assert!(requests(|| tracker.update_rows(first).unwrap()) > 0, "room for the first block");
+        assert_eq!(requests(|| tracker.update_rows(rest).unwrap()), 0, "{channels} channels");
+    }
 }
 
 /// Healthy rows, gaps, an alarm, its adoption and the peace after it: each tick without a request.

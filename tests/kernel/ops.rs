@@ -1,6 +1,6 @@
 //! The sweeps on every path, against loops too plain to be wrong.
 
-use perpend::ops::Path;
+use perpend::ops::{End, Path};
 use perpend::{RowStore, Scalar};
 use proptest::prelude::*;
 
@@ -38,19 +38,32 @@ fn plain_dot<T: Scalar>(row: &[T], x: &[f64]) -> (f64, f64) {
 fn sweeps_agree<T: Scalar>(path: Path, rows: &[Vec<f64>], v: &[f64], u: &[f64]) {
     let (dim, count) = (v.len(), rows.len());
     let mut q = store::<T>(rows, dim);
-    let mut h = vec![f64::NAN; count];
-    let squares = path.project(q.view(count), v, &mut h);
-    let (plain, size) = plain_dot(v, v);
-    assert!((squares - plain).abs() <= slack(dim, size));
-    for (index, &got) in h.iter().enumerate() {
-        let (plain, size) = plain_dot(q.row(index), v);
-        assert!((got - plain).abs() <= slack(dim, size), "project: {got} against {plain}");
+    for end in [End::Back, End::Front] {
+        let mut h = vec![f64::NAN; count];
+        let squares = path.project_from(end, q.view(count), v, &mut h);
+        let (plain, size) = plain_dot(v, v);
+        assert!((squares - plain).abs() <= slack(dim, size));
+        for (index, &got) in h.iter().enumerate() {
+            let (plain, size) = plain_dot(q.row(index), v);
+            assert!((got - plain).abs() <= slack(dim, size), "project: {got} against {plain}");
+        }
     }
 
     let coefficients = &u[..count];
     let mut w = vec![f64::NAN; dim];
     let mut s = vec![f64::NAN; count];
     let measured = path.subtract_measured(q.view(count), coefficients, v, &mut w, &mut s);
+    let mut from_front = vec![f64::NAN; dim];
+    let mut left = vec![f64::NAN; count];
+    path.subtract_measured_from(End::Front, q.view(count), coefficients, v, &mut from_front, &mut left);
+    assert_eq!(from_front, w);
+    for ((index, got), back) in left.iter().enumerate().zip(&s) {
+        let (_, size) = plain_dot(q.row(index), &w);
+        assert!(
+            (got - back).abs() <= slack(dim, size),
+            "measure: {got} from the front, {back} from the back"
+        );
+    }
     for column in 0..dim {
         let terms: Vec<f64> = (0..count).map(|i| coefficients[i] * q.row(i)[column].to_f64()).collect();
         let plain = v[column] - terms.iter().sum::<f64>();
@@ -89,6 +102,9 @@ fn blocks_agree<T: Scalar>(path: Path, q: &RowStore<T>, v: &[f64], u: &[f64]) {
         let mut again = vec![f64::NAN; count * rank];
         path.subtract_block_in_place(q, &factors, &mut in_place, count, &mut again);
         assert_eq!((&in_place, &again), (&w, &s));
+        let mut combined = many.clone();
+        path.combine_block(q, &factors, &mut combined, count);
+        assert_eq!(combined, w);
         for index in 0..count {
             let x = &many[index * dim..][..dim];
             for (row, &got) in h[index * rank..][..rank].iter().enumerate() {
@@ -112,7 +128,6 @@ fn blocks_agree<T: Scalar>(path: Path, q: &RowStore<T>, v: &[f64], u: &[f64]) {
 }
 
 fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]) {
-    let count = q.rows();
     let norm = u.iter().map(|x| x * x).sum::<f64>().sqrt().max(f64::MIN_POSITIVE);
     let unit: Vec<f64> = u.iter().map(|x| x / norm).collect();
     let before = q.clone();
@@ -120,10 +135,10 @@ fn reflects<T: Scalar>(path: Path, q: &mut RowStore<T>, extra: &[f64], u: &[f64]
     let along: Vec<f64> = unit.iter().map(|x| 0.5 - x).collect();
     let mut other = q.clone();
     let (rows, stride) = other.parts_mut();
-    path.reflect_along(rows, stride, count, &unit, &along, extra);
+    path.reflect_along(End::Back, rows, stride, &unit, &along, extra);
     assert_reflected(&before, &other, extra, &unit, &along);
     let (rows, stride) = q.parts_mut();
-    path.reflect(rows, stride, count, &unit, extra);
+    path.reflect(rows, stride, &unit, extra);
     assert_reflected(&before, q, extra, &unit, &unit);
 }
 
@@ -173,6 +188,42 @@ proptest! {
                 let (a, b) = (before.row(0)[i], before.row(1)[i]);
                 prop_assert!((pair.row(0)[i] - (angle.cos() * a + angle.sin() * b)).abs() <= slack(2, 2e3));
                 prop_assert!((pair.row(1)[i] - (angle.cos() * b - angle.sin() * a)).abs() <= slack(2, 2e3));
+            }
+        }
+    }
+
+    /// Up to 40 rows: past every register's width. What is kept beside the triangle is no part of it.
+    #[test]
+    fn a_triangle_times_its_inverse_is_the_identity(
+        (size, more) in (1..40_usize, 0..3_usize),
+        scale in 0.5..4.0_f64,
+        seed in prop::collection::vec(-1.0..1.0_f64, 40 * 43),
+    ) {
+        let stride = size + more;
+        let triangle = &seed[..size * stride];
+        let pivots: Vec<f64> = (0..size).map(|row| 0.5 + triangle[row * stride + row]).collect();
+        prop_assume!(pivots.iter().all(|pivot| pivot.abs() > 1e-3));
+        let entry = |row: usize, column: usize| {
+            if row == column { pivots[row] } else { triangle[row * stride + column] }
+        };
+        for path in Path::available() {
+            let mut inverse = RowStore::<f64>::zeros(size, size);
+            let (out, out_stride) = inverse.parts_mut();
+            let longest = path.invert_triangle(triangle, stride, &pivots, scale, out, out_stride);
+            let norm = |row: usize| inverse.row(row).iter().map(|x| x * x).sum::<f64>();
+            for row in 0..size {
+                prop_assert!(norm(row) <= norm(longest) * (1.0 + slack(size, 1.0)));
+                for column in 0..size {
+                    if column < row {
+                        prop_assert!(inverse.row(row)[column].abs() < f64::MIN_POSITIVE);
+                        continue;
+                    }
+                    let terms: Vec<f64> =
+                        (row..=column).map(|k| entry(row, k) * inverse.row(k)[column]).collect();
+                    let expected = if row == column { scale } else { 0.0 };
+                    let magnitude = terms.iter().map(|term| term.abs()).sum::<f64>();
+                    prop_assert!((terms.iter().sum::<f64>() - expected).abs() <= slack(size, magnitude));
+                }
             }
         }
     }

@@ -1,6 +1,7 @@
 //! The tracker against the decomposition of all rows at once.
 
 mod admitting;
+mod blocks;
 mod gaps;
 mod hardship;
 mod merging;
