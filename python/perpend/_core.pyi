@@ -758,6 +758,30 @@ class Reading:
     def contributions(self) -> NDArray[np.float64]:
         """Squared residual of each channel: shape (channels,), they sum to `spe`."""
 
+    def expected(self) -> NDArray[np.float64]:
+        """Give what the model makes of the row, in the channels' own units: beside a trace it shows what is amiss.
+
+        Returns
+        -------
+        ndarray, shape (channels,)
+            The mean and what the axes say of the row; in a gap what the other channels say of it. The difference from the
+            row is the residual whose square, in spreads, is the contribution. NaN for a channel that takes no part, and
+            everywhere where the row was not judged.
+
+        Examples
+        --------
+        >>> import numpy as np
+        >>> import perpend
+        >>> rng = np.random.default_rng(4)
+        >>> speed = rng.uniform(900, 1500, (600, 1))
+        >>> rows = speed * [1, 0.02, 0.3, 1.5] + rng.normal(0, [5, 0.2, 2, 8], (600, 4))
+        >>> watch = perpend.Watch(4, ["speed", "flow", "power", "noise"], rank=1)
+        >>> watch.settle_on(rows)
+        >>> reading = watch.tick([1200, float("nan"), 361, 1790])
+        >>> print(reading.expected()[1].round())
+        24.0
+        """
+
     def suspects(self, n: int = 3) -> list[tuple[str, float]]:
         """Name the channels whose single correction would take away most of the excess.
 
@@ -1006,6 +1030,10 @@ class Watch:
     @property
     def rank(self) -> int:
         """Principal axes in use; 0 while settling."""
+
+    @property
+    def energies(self) -> NDArray[np.float64]:
+        """Variances along the principal axes in use, in squared spreads: shape (rank,), descending; none while settling."""
 
     @property
     def ticks(self) -> int:

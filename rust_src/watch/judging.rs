@@ -108,6 +108,7 @@ impl<T: Scalar> Judging<T> {
         };
         let verdicts = [self.charts[0].judge(judged.spe, judged.share), self.charts[1].judge(judged.t2, 1.0)];
         record(reading, judged, &verdicts, self.model.lens.residual());
+        self.model.expect(&mut reading.expected);
         self.suspect(judged, &verdicts, reading);
 
         // A feed that stands still, all channels repeating themselves, is no news: it would teach that nothing moves.

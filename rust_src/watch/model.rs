@@ -89,6 +89,21 @@ impl<T: Scalar> Model<T> {
         self.lens.judge(self.observed)
     }
 
+    /// Writes what the axes say of the row looked at last, in the channels' own units; NaN for a channel that takes no
+    /// part. `3 channels` flops, and `2 rank` a gap.
+    pub fn expect(&self, expected: &mut [f64]) {
+        let residual = self.lens.residual();
+        for (channel, value) in expected.iter_mut().enumerate() {
+            let scaled = self.scaled[channel];
+            let explained = if scaled.is_nan() {
+                self.tracker.mean()[channel] + self.lens.told_of(channel)
+            } else {
+                scaled - residual[channel]
+            };
+            *value = self.units.unscaled(channel, explained);
+        }
+    }
+
     /// Learns the row looked at last.
     ///
     /// # Errors

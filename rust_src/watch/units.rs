@@ -80,6 +80,12 @@ impl Units {
         each.filter(|(_, moves)| **moves).map(|((mean, spread), _)| (mean / spread).abs()).fold(0.0, f64::max)
     }
 
+    /// A scaled value of `channel` in its own unit; NaN where it takes no part.
+    #[must_use]
+    pub fn unscaled(&self, channel: usize, scaled: f64) -> f64 {
+        if self.moves[channel] { self.mean[channel] + self.spread[channel] * scaled } else { f64::NAN }
+    }
+
     /// Writes the scaled row; NaN stays NaN. Returns how many channels that take part have a value.
     pub fn scale(&self, row: &[f64], scaled: &mut [f64]) -> usize {
         let mut observed = 0;
