@@ -764,9 +764,9 @@ class Reading:
         Returns
         -------
         ndarray, shape (channels,)
-            The mean and what the axes say of the row; in a gap what the other channels say of it. The difference from the
-            row is the residual whose square, in spreads, is the contribution. NaN for a channel that takes no part, and
-            everywhere where the row was not judged.
+            The mean and what the axes say of the row; in a gap what the other channels say of it. The difference from
+            the row is the residual whose square, in spreads, is the contribution. NaN for a channel that takes no part,
+            and everywhere where the row was not judged.
 
         Examples
         --------
@@ -1033,7 +1033,7 @@ class Watch:
 
     @property
     def energies(self) -> NDArray[np.float64]:
-        """Variances along the principal axes in use, in squared spreads: shape (rank,), descending; none while settling."""
+        """Variances along the axes in use, in squared spreads: shape (rank,), descending; none while settling."""
 
     @property
     def ticks(self) -> int:

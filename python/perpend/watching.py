@@ -106,7 +106,7 @@ def _run(request: WatchRequest, table: Table, layout: Layout, watch: Watch, sett
     observers: list[Observer] = [tally, Narrator(sys.stdout, tally, progress.clear), progress]
     history = None
     if request.report is not None:
-        history = History()
+        history = History(watch)
         observers.append(history)
     interrupted = False
     with ExitStack() as stack:
