@@ -759,7 +759,7 @@ class Reading:
         """Squared residual of each channel: shape (channels,), they sum to `spe`."""
 
     def expected(self) -> NDArray[np.float64]:
-        """Give what the model makes of the row, in the channels' own units: beside a trace it shows what is amiss.
+        """Give what the model makes of the row, in the channels' own units.
 
         Returns
         -------
@@ -780,6 +780,17 @@ class Reading:
         >>> reading = watch.tick([1200, float("nan"), 361, 1790])
         >>> print(reading.expected()[1].round())
         24.0
+        """
+
+    def corrected(self) -> NDArray[np.float64]:
+        """Give what each channel would have to read if it alone were put right, in its own unit.
+
+        Returns
+        -------
+        ndarray, shape (channels,)
+            What the others say of the channel: with it in the row, SPE and T2 over their limits have the least sum. A
+            suspect's own trace departs from it in every alarm, from `expected` only where SPE is beyond: the model may
+            explain a fault by an axis. As `expected` in a gap and where there is nothing to say.
         """
 
     def suspects(self, n: int = 3) -> list[tuple[str, float]]:

@@ -204,7 +204,7 @@ def trace(
     label : str
         Its name.
     expected : array_like, shape (rows,), optional
-        What the model made of it, such as a column of `Reading.expected`; drawn dashed.
+        What was expected of it, such as a column of `Reading.corrected` or `Reading.expected`; drawn dashed.
     alarm : array_like of bool, optional
         Rows on which the alarm was on.
     time, time_label, dated
@@ -227,7 +227,7 @@ def trace(
     >>> rows = flow * [1.0, 0.4, 2.5, 0.1] + rng.normal(0, [1, 0.4, 3, 0.1], (500, 4))
     >>> watch = perpend.Watch(4, settle=400)
     >>> readings = [watch.tick(row) for row in rows]
-    >>> pressure = [reading.expected()[2] for reading in readings]
+    >>> pressure = [reading.corrected()[2] for reading in readings]
     >>> figure = plot.trace(rows[:, 2], "pressure", expected=pressure, alarm=[each.alarm for each in readings])
     >>> [text.get_text() for text in figure.axes[0].get_legend().get_texts()]
     ['measured', 'expected']

@@ -89,18 +89,21 @@ impl<T: Scalar> Model<T> {
         self.lens.judge(self.observed)
     }
 
-    /// Writes what the axes say of the row looked at last, in the channels' own units; NaN for a channel that takes no
-    /// part. `3 channels` flops, and `2 rank` a gap.
-    pub fn expect(&self, expected: &mut [f64]) {
-        let residual = self.lens.residual();
-        for (channel, value) in expected.iter_mut().enumerate() {
-            let scaled = self.scaled[channel];
-            let explained = if scaled.is_nan() {
-                self.tracker.mean()[channel] + self.lens.told_of(channel)
-            } else {
-                scaled - residual[channel]
-            };
-            *value = self.units.unscaled(channel, explained);
+    /// Writes what the axes say of the row looked at last, and what its channels would each have to read to suit them best,
+    /// as far as [`Lens::blame`] has found; in the channels' own units, NaN for a channel that takes no part.
+    /// `6 channels` flops, and `2 rank` a gap.
+    pub fn explain(&self, expected: &mut [f64], corrected: &mut [f64]) {
+        self.units.unscale_less(&self.scaled, self.lens.residual(), expected);
+        self.units.unscale_less(&self.scaled, self.lens.correction(), corrected);
+        if self.observed == self.units.moving() {
+            return;
+        }
+        for (channel, scaled) in self.scaled.iter().enumerate() {
+            if scaled.is_nan() {
+                let told = self.tracker.mean()[channel] + self.lens.told_of(channel);
+                expected[channel] = self.units.unscaled(channel, told);
+                corrected[channel] = expected[channel];
+            }
         }
     }
 

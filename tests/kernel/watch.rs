@@ -107,7 +107,9 @@ fn in_a_gap_the_value_is_expected_that_leaves_no_residual_there() {
     for row in each(&healthy(40, 24)) {
         let mut row = row.to_vec();
         row[5] = f64::NAN;
-        let guess = watch.tick(&row).unwrap().expected[5];
+        let reading = watch.tick(&row).unwrap();
+        let guess = reading.expected[5];
+        assert_eq!(guess.to_bits(), reading.corrected[5].to_bits());
         row[5] = guess;
         let reading = watch.tick(&row).unwrap();
         // In a gap the noise takes a little off the scores, as it does not where the row is whole.
@@ -115,10 +117,28 @@ fn in_a_gap_the_value_is_expected_that_leaves_no_residual_there() {
         assert!(left < 0.05, "{left}");
     }
     let silent = watch.tick(&[f64::NAN; CHANNELS]).unwrap();
-    assert!(
-        silent.expected.iter().all(|value| value.is_nan()),
-        "a row that is not judged has nothing expected"
-    );
+    let mut said = silent.expected.iter().chain(&silent.corrected);
+    assert!(said.all(|value| value.is_nan()), "nothing is said of a row that is not judged");
+}
+
+#[test]
+fn a_channel_corrected_alone_takes_its_share_from_the_statistic() {
+    let mut watch = settled(27);
+    watch.freeze();
+    let total = |reading: &Reading| reading.spe / reading.spe_limit + reading.t2 / reading.t2_limit;
+    for (index, row) in each(&healthy(60, 28)).enumerate() {
+        let channel = index % CHANNELS;
+        let mut row = row.to_vec();
+        row[channel] += 9.0;
+        let reading = watch.tick(&row).unwrap().clone();
+        assert!(reading.exceeds[0] || reading.exceeds[1], "{index}");
+        row[channel] = reading.corrected[channel];
+        let left = total(watch.tick(&row).unwrap());
+        let expected = total(&reading) * (1.0 - reading.shares[channel]);
+        // Rows of up to 200 spreads off zero are rounded on the way to their own unit and back.
+        let tolerance = 4.0 * f64::EPSILON * 200.0 * CHANNELS as f64 * (1.0 + total(&reading));
+        assert!((left - expected).abs() < tolerance, "{index}: {left} {expected}");
+    }
 }
 
 #[test]

@@ -90,6 +90,16 @@ def test_expected_fills_gaps_and_is_nothing_where_nothing_was_judged():
     assert np.isnan(watch.tick(np.full(CHANNELS, np.nan)).expected()).all()
 
 
+def test_corrected_says_of_a_faulty_channel_what_the_others_do(watch):
+    row = healthy(1, 8)[0]
+    wrong = row.copy()
+    wrong[7] += 30
+    reading = watch.tick(wrong)
+    assert reading.suspects(1)[0][0] == "probe_h"
+    assert abs(reading.corrected()[7] - row[7]) < 4 * 0.4
+    assert abs(reading.expected()[7] - row[7]) > 4 * 0.4
+
+
 def test_energies_are_descending_one_an_axis_and_a_copy(watch):
     energies = watch.energies
     assert energies.shape == (watch.rank,)

@@ -164,8 +164,8 @@ def alarm_charts(alarm: Alarm, episode: Episode, names: list[str], run: Run) -> 
     shown = [name for name, _ in found[:TRACES]]
     if shown:
         alt = (
-            f"{', '.join(shown)} around the start of alarm {episode.number}: as measured, and dashed as the model"
-            " expects by what all channels say together. Hatched while the alarm was on."
+            f"{', '.join(shown)} around the start of alarm {episode.number}: as measured, and dashed what the"
+            " others let expect of it. Hatched while the alarm was on."
         )
         draw = partial(_traces, episode=episode, names=names, shown=shown, run=run)
         parts.append(drawing(draw, f"trace-{episode.number}", alt, height=0.6 + 1.6 * len(shown)))

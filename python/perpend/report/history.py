@@ -38,7 +38,7 @@ class Episode:
     peak : float
         How far above its limit the worst statistic went, while the rows were kept.
     values, expected : list of arrays, each of shape (channels,)
-        One a row: as measured, and what the model makes of it.
+        One a row: as measured, and what the others say of each channel.
     alarm : list of bool
         Whether it was on.
     time : list of float
@@ -55,7 +55,7 @@ class Episode:
     def take(self, row: Row, reading: Reading) -> None:
         """Keep one row."""
         self.values.append(np.array(row.values, dtype=np.float64))
-        self.expected.append(reading.expected())
+        self.expected.append(reading.corrected())
         self.alarm.append(reading.alarm)
         self.time.append(Moment.of(row).value)
         for name in reading.exceeds:
