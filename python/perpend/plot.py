@@ -129,7 +129,7 @@ def suspects(found: Sequence[tuple[str, float]], *, figure: Figure | SubFigure |
     if not found:
         axes.text(2, 0, "none stands out", va="center", color=INK)
     dress(axes, grid="x")
-    axes.set_xlabel("% of the excess gone if it alone is put right")
+    axes.set_xlabel("share of the excess, %")
     return sheet
 
 
@@ -229,7 +229,7 @@ def trace(
     >>> readings = [watch.tick(row) for row in rows]
     >>> pressure = [reading.corrected()[2] for reading in readings]
     >>> figure = plot.trace(rows[:, 2], "pressure", expected=pressure, alarm=[each.alarm for each in readings])
-    >>> [text.get_text() for text in figure.axes[0].get_legend().get_texts()]
+    >>> [text.get_text() for text in figure.legends[0].get_texts()]
     ['measured', 'expected']
     """
     sheet = figure if figure is not None else Figure(figsize=(10, 2.2), layout="constrained")
@@ -280,15 +280,9 @@ def draw_trace(
 
 
 def label_lines(axes: Any) -> None:
-    """Say which line is which, above the axes: nothing can lie under it there."""
-    axes.legend(
-        loc="lower right",
-        bbox_to_anchor=(1, 1),
-        borderaxespad=0.1,
-        frameon=False,
-        labelcolor=INK,
-        ncols=2,
-        handlelength=2.6,
+    """Say which line is which, above all axes: nothing can lie under it there."""
+    axes.figure.legend(
+        *axes.get_legend_handles_labels(), loc="outside upper right", frameon=False, labelcolor=INK, ncols=2
     )
 
 

@@ -19,6 +19,9 @@ from perpend.tally import Alarm, Tally
 TRACES = 3
 SHOWN = 5
 LEAST_SHARE = 0.02
+# Of the time axis: left free at either end; to write a word in.
+MARGIN = 0.004
+LEAST_EMPTY = 0.12
 
 # The log of a run: a lane each, so that the place says it and not the colour alone.
 LANES = {
@@ -58,9 +61,21 @@ class Run:
         alarms = place(np.array(ends).reshape(-1, 2), 0, dated=dated).tolist()
         return cls(bands, alarms, len(history), history.lanes, time_label, dated)
 
-    def label_time(self, axes: Any) -> None:
-        """Say what the time axis counts."""
+    def set_time(self, axes: Any) -> None:
+        """Say what the time axis counts, and let it show the whole run: so one drawing is read under another."""
+        where = self.bands["time"].where
+        if len(where) > 1:
+            margin = MARGIN * (where[-1] - where[0])
+            axes.set_xlim(where[0] - margin, where[-1] + margin)
         label_time(axes, self.time_label, dated=self.dated)
+
+    def mark_settling(self, axes: Any) -> None:
+        """Write into the empty time before the first row was judged why it is empty."""
+        where, settling = self.bands["time"].where, self.bands["settling"]
+        for left, right in flagged(where, settling.lowest > 0):
+            if right - left > LEAST_EMPTY * (where[-1] - where[0]):
+                middle = (left + right) / 2
+                axes.text(middle, 0.5, "settling", transform=axes.get_xaxis_transform(), ha="center", color=INK)
 
 
 def readings_chart(run: Run) -> str:
@@ -72,6 +87,9 @@ def readings_chart(run: Run) -> str:
 
     def draw(figure: Figure) -> None:
         plot.draw_readings(figure, run.bands, run.alarms, run.time_label, dated=run.dated)
+        for axes in figure.get_axes():
+            run.set_time(axes)
+            run.mark_settling(axes)
 
     return drawing(draw, "readings", alt, height=4.6)
 
@@ -90,7 +108,7 @@ def logbook_chart(run: Run) -> str:
             axes.broken_barh(bars, (height - 0.28, 0.56), color=TRACE, linewidth=0.8)
         axes.set_yticks(range(len(LANES)), list(reversed(LANES.values())))
         axes.set_ylim(-0.6, len(LANES) - 0.4)
-        run.label_time(axes)
+        run.set_time(axes)
         dress(axes, grid="y")
 
     return drawing(draw, "logbook", alt, height=2.1)
@@ -117,7 +135,7 @@ def drift_chart(run: Run) -> str:
             axes.tick_params(labelbottom=axes is sheets[-1])
             mark_alarms(axes, run.alarms)
             dress(axes, grid="y")
-        run.label_time(sheets[-1])
+        run.set_time(sheets[-1])
 
     return drawing(draw, "drift", alt, height=0.5 + 1.5 * len(shown))
 
@@ -141,7 +159,7 @@ def energies_chart(run: Run) -> str:
             axes.fill_between(each.where, each.lowest, each.highest, color=TRACE, linewidth=1.4)
         log_scale(axes)
         mark_alarms(axes, run.alarms)
-        run.label_time(axes)
+        run.set_time(axes)
         dress(axes, grid="y")
         _number_ends(axes, [_last(run.bands[name]) for name in shown])
 
@@ -191,7 +209,7 @@ def _traces(figure: Figure, episode: Episode, names: list[str], shown: list[str]
         mark_alarms(axes, flagged(where, episode.alarm))
         axes.tick_params(labelbottom=axes is sheets[-1])
     plot.label_lines(sheets[0])
-    run.label_time(sheets[-1])
+    label_time(sheets[-1], run.time_label, dated=run.dated)
 
 
 def _last(band: Band) -> float:

@@ -1,6 +1,7 @@
 """Set a run's figures, tables and drawings into one page that needs nothing else."""
 
 import math
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from html import escape
@@ -25,6 +26,7 @@ from perpend.tally import Alarm, Moment, Tally
 NOTHING_FROM_OUTSIDE = "default-src 'none'; style-src 'unsafe-inline'; img-src data:"
 LISTED = 1000
 NEW_LINE = "\n"
+SHARE = re.compile(r" (\d+) %")
 
 CAUTIONS = """\
 perpend advises; it is no protective system. Trips, interlocks and safety functions stay with the equipment made and
@@ -181,8 +183,8 @@ def _row(number: int, alarm: Alarm) -> str:
 
 
 def _kept_together(text: str) -> str:
-    """Keep a number with its percent sign and a date with its time."""
-    lines = [line.replace(" %", "\u00a0%") for line in text.split(NEW_LINE)]
+    """Keep a name with its share and a date with its time."""
+    lines = [SHARE.sub("\u00a0\\1\u00a0%", line) for line in text.split(NEW_LINE)]
     return "<br>".join([escape(lines[0]), *(f"<span>{escape(line)}</span>" for line in lines[1:])])
 
 
