@@ -294,9 +294,20 @@ def _against_limit(axes: Any, values: Band, limit: Band, label: str) -> None:
         axes.plot(values.where, low, color=TRACE, linewidth=0.9)
     else:
         axes.fill_between(values.where, low, high, color=TRACE, linewidth=0.7)
-    axes.plot(limit.where, limit.lowest, color=LIMIT, linewidth=1.3, dashes=(5, 2), label="limit")
+    axes.plot(limit.where, limit.lowest, color=LIMIT, linewidth=1.3, dashes=(5, 2))
     if len(known) and np.isfinite(high).any():
         log_scale(axes)
-        axes.legend(loc="upper left", frameon=False, labelcolor=INK, handlelength=2.6, borderpad=0.1)
+        # Beside the end of its line, where nothing is drawn.
+        end = (1, float(known[-1]))
+        axes.annotate(
+            "limit",
+            end,
+            xycoords=("axes fraction", "data"),
+            xytext=(3, 0),
+            textcoords="offset points",
+            va="center",
+            color=LIMIT,
+            annotation_clip=False,
+        )
     axes.set_ylabel(plain(label))
     dress(axes, grid="y")

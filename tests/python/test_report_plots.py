@@ -63,7 +63,7 @@ def test_readings_are_drawn_against_limits_on_a_scale_that_shows_quiet_and_peak(
     assert upper.get_yscale() == lower.get_yscale() == "log"
     assert upper.get_ylim()[0] < 1
     assert upper.get_ylim()[1] > 500
-    assert [text.get_text() for text in upper.texts] == ["1"]
+    assert [text.get_text() for text in upper.texts] == ["limit", "1"]
 
 
 def test_long_series_are_drawn_in_bounded_size():

@@ -10,7 +10,7 @@ import numpy as np
 from matplotlib.figure import Figure
 
 from perpend import plot
-from perpend.dressing import INK, TRACE, dress, flagged, label_time, log_scale, mark_alarms, place
+from perpend.dressing import INK, TRACE, dress, flagged, label_time, log_scale, mark_alarms, place, width
 from perpend.envelope import Band
 from perpend.report.drawing import drawing
 from perpend.report.history import ENERGIES, Episode, History
@@ -19,9 +19,10 @@ from perpend.tally import Alarm, Tally
 TRACES = 3
 SHOWN = 5
 LEAST_SHARE = 0.02
-# Of the time axis: left free at either end; to write a word in.
+# Of the time axis, left free at either end.
 MARGIN = 0.004
-LEAST_EMPTY = 0.12
+# What a word takes, with room about it.
+SETTLING_INCHES = 1.1
 
 # The log of a run: a lane each, so that the place says it and not the colour alone.
 LANES = {
@@ -73,7 +74,7 @@ class Run:
         """Write into the empty time before the first row was judged why it is empty."""
         where, settling = self.bands["time"].where, self.bands["settling"]
         for left, right in flagged(where, settling.lowest > 0):
-            if right - left > LEAST_EMPTY * (where[-1] - where[0]):
+            if width(axes) * (right - left) > SETTLING_INCHES * (where[-1] - where[0]):
                 middle = (left + right) / 2
                 axes.text(middle, 0.5, "settling", transform=axes.get_xaxis_transform(), ha="center", color=INK)
 
