@@ -70,8 +70,7 @@ def false_alarms(scenario: Scenario, tally: Tally) -> list[str]:
     for each in stray:
         lines.append(wrapped(f"{MARGIN}{each.start.text}  ", f"{span(each.rows)}, suspects {named(each.first)}"))
     if any(name in WEATHER for each in stray for name, _ in each.first[:1]):
-        lines.append(f"{MARGIN}The weather went beyond what the days of settling had shown of it:")
-        lines.append(f"{MARGIN}settle on ten times what the slowest healthy movement takes, or longer.")
+        lines.append(f"{MARGIN}The weather went beyond what the days of settling had shown of it.")
     return lines
 
 

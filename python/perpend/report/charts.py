@@ -170,14 +170,14 @@ def energies_chart(run: Run) -> str:
 def alarm_charts(alarm: Alarm, episode: Episode, names: list[str], run: Run) -> str:
     """Draw the suspects of one alarm as bars, and their own traces around its start."""
     found = [(name, share) for name, share in alarm.suspects(SHOWN) if share >= LEAST_SHARE]
-    bars = ", ".join(f"{name} {100 * share:.0f} %" for name, share in found)
+    bars = ", ".join(f"{name}\u00a0{100 * share:.0f}\u00a0%" for name, share in found)
     parts = [
         drawing(
             partial(_suspects, found=found),
             f"suspects-{episode.number}",
             f"Suspects of alarm {episode.number}: {bars or 'none stands out'}.",
             height=0.9 + 0.32 * max(len(found), 1),
-            wide=8.0,
+            wide=6.8,
         )
     ]
     shown = [name for name, _ in found[:TRACES]]

@@ -14,7 +14,7 @@ from perpend.dressing import ALARM, GRID, INK, LIMIT, TRACE
 COLOURS = {INK: "--ink", GRID: "--grid", TRACE: "--trace", LIMIT: "--limit", ALARM: "--alarm"}
 
 # Inches at 72 points: a wide drawing for screens and print, a narrow one for a phone. Text keeps its size in both.
-WIDE, NARROW = 13.0, 4.6
+WIDE, NARROW = 11.0, 4.6
 
 STYLE: dict[Any, Any] = {
     "svg.fonttype": "none",
