@@ -952,9 +952,9 @@ class Watch:
     def to_bytes(self) -> bytes:
         """Give the state as bytes: all that what the watch does next depends on.
 
-        A safetensors container, which any reader of that format opens: ``watch.model.lens.axes`` and their energies, the
-        tracker as ``watch.model.tracker...``, moments of the statistics, alarms, names; settings and counters in the
-        metadata. The same state gives the same bytes. Only the last reading is no part of it.
+        A safetensors container, which any reader of that format opens: ``watch.model.lens.axes`` and their energies,
+        the tracker as ``watch.model.tracker...``, moments of the statistics, alarms, names; settings and counters in
+        the metadata. The same state gives the same bytes. Only the last reading is no part of it.
 
         Returns
         -------
