@@ -57,9 +57,13 @@ impl<T: Scalar> Model<T> {
     pub fn new(units: Units, channels: usize, rank: usize, memory: Option<f64>) -> Result<Self, Error> {
         let settings = tracker::Settings { channels, rank, memory, center: true, guard: None };
         let floor = rounding_energy::<T>(&units);
+        let mut trackers = [Tracker::new(settings)?, Tracker::new(settings)?];
+        // Either may be what is learned anew, and refreshed within a tick.
+        trackers.iter_mut().for_each(Tracker::make_room_to_refresh);
+        let [tracker, next] = trackers;
         Ok(Self {
-            tracker: Tracker::new(settings)?,
-            next: Tracker::new(settings)?,
+            tracker,
+            next,
             lens: Lens::new(channels, rank),
             renewal: Renewal::with_room(channels, rank, settings.directions()),
             units,
