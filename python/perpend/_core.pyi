@@ -763,6 +763,41 @@ class Reading:
     def contributions(self) -> NDArray[np.float64]:
         """Squared residual of each channel: shape (channels,), they sum to `spe`."""
 
+    def expected(self) -> NDArray[np.float64]:
+        """Give what the model makes of the row, in the channels' own units.
+
+        Returns
+        -------
+        ndarray, shape (channels,)
+            The mean and what the axes say of the row; in a gap what the other channels say of it. The difference from
+            the row is the residual whose square, in spreads, is the contribution. NaN for a channel that takes no part,
+            and everywhere where the row was not judged.
+
+        Examples
+        --------
+        >>> import numpy as np
+        >>> import perpend
+        >>> rng = np.random.default_rng(4)
+        >>> speed = rng.uniform(900, 1500, (600, 1))
+        >>> rows = speed * [1, 0.02, 0.3, 1.5] + rng.normal(0, [5, 0.2, 2, 8], (600, 4))
+        >>> watch = perpend.Watch(4, ["speed", "flow", "power", "noise"], rank=1)
+        >>> watch.settle_on(rows)
+        >>> reading = watch.tick([1200, float("nan"), 361, 1790])
+        >>> print(reading.expected()[1].round())
+        24.0
+        """
+
+    def corrected(self) -> NDArray[np.float64]:
+        """Give what each channel would have to read if it alone were put right, in its own unit.
+
+        Returns
+        -------
+        ndarray, shape (channels,)
+            What the others say of the channel: with it in the row, SPE and T2 over their limits have the least sum. A
+            suspect's own trace departs from it in every alarm, from `expected` only where SPE is beyond: the model may
+            explain a fault by an axis. As `expected` in a gap and where there is nothing to say.
+        """
+
     def suspects(self, n: int = 3) -> list[tuple[str, float]]:
         """Name the channels whose single correction would take away most of the excess.
 
@@ -1015,6 +1050,10 @@ class Watch:
     @property
     def rank(self) -> int:
         """Principal axes in use; 0 while settling."""
+
+    @property
+    def energies(self) -> NDArray[np.float64]:
+        """Variances along the axes in use, in squared spreads: shape (rank,), descending; none while settling."""
 
     @property
     def ticks(self) -> int:

@@ -215,16 +215,26 @@ def _add_bench(commands: Any) -> None:
         allow_abbrev=False,
     )
     bench.add_argument("--check", action="store_true", help="assert every answer on small cases, time nothing")
+    bench.add_argument(
+        "--plot", metavar="FILE", help="draw time against size for streaming and batch too: .png, .svg or .pdf"
+    )
     bench.set_defaults(run=_run_bench)
 
 
 def _run_bench(found: argparse.Namespace) -> int:
     from perpend import bench
+    from perpend.bench.picture import need_plot, write_plot
 
+    if found.plot is not None and found.check:
+        raise InputError("--check times nothing that --plot could draw; give one of them")
+    if found.plot is not None:
+        need_plot(found.plot)
     for line in bench.conditions():
         print(line)
-    for line in bench.lines(bench.compare(check=found.check)):
-        print(line, flush=True)
+    bench.told(bench.compare(check=found.check))
+    if found.plot is not None:
+        write_plot(bench.told(bench.across_sizes()), found.plot)
+        print(f"The plot: {found.plot}")
     return 0
 
 

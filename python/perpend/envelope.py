@@ -1,11 +1,27 @@
 """Reduce a long series for drawing, so that no peak and no dip is lost."""
 
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 Series = NDArray[np.float64]
+
+
+@dataclass(slots=True, frozen=True)
+class Band:
+    """A series for drawing: where each run of rows begins, and its lowest and highest value."""
+
+    where: NDArray[Any]
+    lowest: Series
+    highest: Series
+
+
+def band(values: ArrayLike, where: NDArray[Any], runs: int) -> Band:
+    """Reduce a series to a band of at most so many runs."""
+    start, lowest, highest = envelope(values, runs)
+    return Band(where[start], lowest, highest)
 
 
 def envelope(values: ArrayLike, buckets: int) -> tuple[NDArray[np.intp], Series, Series]:

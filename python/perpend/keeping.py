@@ -56,7 +56,8 @@ def resume(path: str, channels: Sequence[str], settings: Mapping[str, Any]) -> W
         if made_with[name] != value:
             option = OPTIONS.get(name, f"--{name}")
             raise InputError(
-                f"{option}: the state was made with {made_with[name]}, got {value}; leave it out, or begin another state",
+                f"{option}: the state was made with {made_with[name]}, got {value};"
+                " leave it out, or begin another state",
                 path,
             )
     return watch
@@ -74,7 +75,7 @@ def _difference(channels: Sequence[str], kept: Sequence[str]) -> str:
 
 @contextmanager
 def asked_to_end() -> Iterator[None]:
-    """Take a request to terminate, as a service manager sends it, for an interrupt: the state is saved on the way out."""
+    """Take a request to terminate, as a service manager sends it, for an interrupt: the state is saved then."""
 
     def end(number: int, frame: FrameType | None) -> None:
         raise KeyboardInterrupt

@@ -3,37 +3,36 @@
 Each function gives a figure of matplotlib, drawn without its global state, or draws into the (sub)figure it is handed.
 """
 
-import importlib
 from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
+from matplotlib.figure import Figure, SubFigure
+from matplotlib.ticker import MaxNLocator
 from numpy.typing import ArrayLike, NDArray
 
-from perpend.envelope import Series, envelope, spans
-
-try:
-    dates: Any = importlib.import_module("matplotlib.dates")  # untyped
-    from matplotlib.figure import Figure, SubFigure
-    from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
-except ImportError as error:
-    raise ImportError("plots need matplotlib: pip install 'perpend[plot]'") from error
+from perpend.dressing import (
+    GRID,
+    INK,
+    LIMIT,
+    TRACE,
+    brief,
+    dress,
+    flagged,
+    label_time,
+    log_scale,
+    mark_alarms,
+    place,
+    plain,
+)
+from perpend.envelope import Band, band
 
 __all__ = ["energies", "readings", "suspects", "trace"]
 
-INK = "#1d2b2a"
-GRID = "#cdd9d3"
-TRACE = "#14606b"
-LIMIT = "#8a5a00"
-ALARM = "#b3261e"
 BUCKETS = 900
 
 # The quiet part of a log scale: a statistic far below its limit is drawn no lower than this share of it.
 FLOOR = 1e-2
-
-# Room that an alarm's number takes above the axes.
-LABEL_INCHES = 0.55
-TWO_DECADES = 100
 
 
 def readings(
@@ -66,16 +65,30 @@ def readings(
     -------
     Figure or SubFigure
         Two axes, SPE above T2.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> import perpend
+    >>> from perpend import plot
+    >>> rng = np.random.default_rng(8)
+    >>> flow = rng.uniform(30, 90, (900, 1))
+    >>> rows = flow * [1.0, 0.4, 2.5, 0.1] + rng.normal(0, [1, 0.4, 3, 0.1], (900, 4))
+    >>> rows[700:, 2] += 25
+    >>> watch = perpend.Watch(4, ["flow", "power", "pressure", "noise"], settle=400)
+    >>> figure = plot.readings(watch.replay(rows))
+    >>> [axes.get_ylabel() for axes in figure.axes]
+    ['SPE', 'T2']
+
+    In a notebook the figure shows itself; ``figure.savefig("readings.png")`` keeps it.
     """
-    sheet = figure if figure is not None else Figure(figsize=(10, 4.5), layout="constrained")
-    upper, lower = sheet.subplots(2, 1, sharex=True)
-    for axes, name, label in ((upper, "spe", "SPE"), (lower, "t2", "T2")):
+    bands = {}
+    for name in ("spe", "spe_limit", "t2", "t2_limit"):
         values = np.asarray(found[name], dtype=np.float64)
         where = place(time, len(values), dated=dated)
-        _against_limit(axes, where, values, np.asarray(found[f"{name}_limit"], dtype=np.float64), label)
-        mark_alarms(axes, where, found["alarm"], numbered=axes is upper)
-    upper.tick_params(labelbottom=False)
-    label_time(lower, time_label, dated=dated)
+        bands[name] = band(values, where, BUCKETS)
+    sheet = figure if figure is not None else Figure(figsize=(10, 4.5), layout="constrained")
+    draw_readings(sheet, bands, flagged(where, found["alarm"]), time_label, dated=dated)
     return sheet
 
 
@@ -88,20 +101,35 @@ def suspects(found: Sequence[tuple[str, float]], *, figure: Figure | SubFigure |
         What `Reading.suspects` gives.
     figure : Figure or SubFigure, optional
         To draw into.
+
+    Returns
+    -------
+    Figure or SubFigure
+        With one axes.
+
+    Examples
+    --------
+    >>> from perpend import plot
+    >>> figure = plot.suspects([("gearbox_temp", 0.81), ("oil_temp", 0.12)])
+    >>> [label.get_text() for label in figure.axes[0].get_yticklabels()]
+    ['gearbox_temp', 'oil_temp']
     """
-    sheet = figure if figure is not None else Figure(figsize=(5, 0.6 + 0.35 * max(len(found), 1)), layout="constrained")
+    sheet = figure if figure is not None else Figure(figsize=(5, 0.8 + 0.35 * max(len(found), 1)), layout="constrained")
     axes = sheet.subplots()
-    names = [plain(name) for name, _ in found]
     shares = [100 * share for _, share in found]
-    places = np.arange(len(names))[::-1]
+    places = np.arange(len(found))[::-1]
     axes.barh(places, shares, height=0.6, color=TRACE, edgecolor=TRACE)
-    axes.set_yticks(places, names)
+    axes.set_yticks(places, [brief(name) for name, _ in found])
+    # A lone bar is no thicker than one of several.
+    axes.set_ylim(-0.6, max(len(found), 1) - 0.4)
     axes.set_xlim(0, 118)
     axes.set_xticks([0, 50, 100])
-    for place_, share in zip(places, shares, strict=True):
-        axes.text(share + 1.5, place_, f"{share:.0f} %", va="center", color=INK)
+    for height, share in zip(places, shares, strict=True):
+        axes.text(share + 1.5, height, f"{share:.0f} %", va="center", color=INK)
+    if not found:
+        axes.text(2, 0, "none stands out", va="center", color=INK)
     dress(axes, grid="x")
-    axes.set_xlabel("share of the excess that its own correction takes away, %")
+    axes.set_xlabel("share of the excess, %")
     return sheet
 
 
@@ -113,11 +141,28 @@ def energies(
     Parameters
     ----------
     values : array_like, shape (axes,)
-        Such as `Tracker.energies`.
+        Such as `Watch.energies` or `Tracker.energies`.
     rank : int, optional
         Axes in use; the others are drawn hollow.
     figure : Figure or SubFigure, optional
         To draw into.
+
+    Returns
+    -------
+    Figure or SubFigure
+        With one axes.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> import perpend
+    >>> from perpend import plot
+    >>> rng = np.random.default_rng(9)
+    >>> watch = perpend.Watch(6)
+    >>> watch.settle_on(rng.standard_normal((300, 2)) @ rng.uniform(1, 3, (2, 6)) + rng.normal(0, 0.1, (300, 6)))
+    >>> figure = plot.energies(watch.energies)
+    >>> figure.axes[0].get_yscale()
+    'log'
     """
     sheet = figure if figure is not None else Figure(figsize=(5, 3), layout="constrained")
     axes = sheet.subplots()
@@ -125,12 +170,17 @@ def energies(
     numbers = np.arange(1, len(heights) + 1)
     used = numbers <= (len(heights) if rank is None else rank)
     axes.plot(numbers, heights, color=GRID, linewidth=1)
-    axes.plot(numbers[used], heights[used], "o", color=TRACE)
-    axes.plot(numbers[~used], heights[~used], "o", color=TRACE, markerfacecolor="none")
-    log_scale(axes)
+    axes.plot(numbers[used], heights[used], "o", color=TRACE, label="in use")
+    if not used.all():
+        axes.plot(numbers[~used], heights[~used], "o", color=TRACE, markerfacecolor="none", label="beyond the rank")
+        axes.legend(loc="upper right", frameon=False, labelcolor=INK)
+    axes.xaxis.set_major_locator(MaxNLocator(integer=True))
+    if (heights > 0).any():
+        log_scale(axes)
     axes.set_xlabel("axis")
     axes.set_ylabel("energy")
     dress(axes, grid="y")
+    axes.margins(x=0.05)
     return sheet
 
 
@@ -154,133 +204,110 @@ def trace(
     label : str
         Its name.
     expected : array_like, shape (rows,), optional
-        The model's own values, drawn dashed.
+        What was expected of it, such as a column of `Reading.corrected` or `Reading.expected`; drawn dashed.
     alarm : array_like of bool, optional
         Rows on which the alarm was on.
     time, time_label, dated
         As for `readings`.
     figure : Figure or SubFigure, optional
         To draw into.
+
+    Returns
+    -------
+    Figure or SubFigure
+        With one axes.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> import perpend
+    >>> from perpend import plot
+    >>> rng = np.random.default_rng(8)
+    >>> flow = rng.uniform(30, 90, (500, 1))
+    >>> rows = flow * [1.0, 0.4, 2.5, 0.1] + rng.normal(0, [1, 0.4, 3, 0.1], (500, 4))
+    >>> watch = perpend.Watch(4, settle=400)
+    >>> readings = [watch.tick(row) for row in rows]
+    >>> pressure = [reading.corrected()[2] for reading in readings]
+    >>> figure = plot.trace(rows[:, 2], "pressure", expected=pressure, alarm=[each.alarm for each in readings])
+    >>> [text.get_text() for text in figure.legends[0].get_texts()]
+    ['measured', 'expected']
     """
-    sheet = figure if figure is not None else Figure(figsize=(10, 2), layout="constrained")
+    sheet = figure if figure is not None else Figure(figsize=(10, 2.2), layout="constrained")
     axes = sheet.subplots()
     series = np.asarray(values, dtype=np.float64)
     where = place(time, len(series), dated=dated)
-    axes.plot(where, series, color=TRACE, linewidth=1.2, label="measured")
+    draw_trace(axes, where, series, None if expected is None else np.asarray(expected, dtype=np.float64), label)
     if expected is not None:
-        axes.plot(
-            where, np.asarray(expected, dtype=np.float64), color=LIMIT, linewidth=1.2, dashes=(4, 2), label="expected"
-        )
-        axes.legend(loc="best", frameon=False, labelcolor=INK, ncols=2)
+        label_lines(axes)
     if alarm is not None:
-        mark_alarms(axes, where, alarm, numbered=False)
-    axes.set_ylabel(plain(label))
+        mark_alarms(axes, flagged(where, alarm))
     label_time(axes, time_label, dated=dated)
-    dress(axes, grid="y")
     return sheet
 
 
-def place(time: ArrayLike | None, rows: int, *, dated: bool) -> NDArray[Any]:
-    """Return where rows stand on the time axis: numbers, or moments where they are dated."""
-    if time is None:
-        return np.arange(1, rows + 1, dtype=np.float64)
-    where = np.asarray(time, dtype=np.float64)
-    return (where * 1e6).astype("datetime64[us]") if dated else where
+def draw_readings(
+    sheet: Figure | SubFigure,
+    bands: Mapping[str, Band],
+    alarms: Sequence[tuple[float, float]],
+    time_label: str,
+    *,
+    dated: bool,
+) -> None:
+    """Draw what `readings` does, of series that have been reduced."""
+    upper, lower = sheet.subplots(2, 1, sharex=True)
+    for axes, name, label in ((upper, "spe", "SPE"), (lower, "t2", "T2")):
+        _against_limit(axes, bands[name], bands[f"{name}_limit"], label)
+        where = bands[name].where
+        extent = float(where[-1] - where[0]) if axes is upper and len(where) else None
+        mark_alarms(axes, alarms, extent=extent)
+    upper.tick_params(labelbottom=False)
+    label_time(lower, time_label, dated=dated)
 
 
-def mark_alarms(axes: Any, where: NDArray[Any], alarm: ArrayLike, *, numbered: bool) -> None:
-    """Hatch the time in which an alarm was on, and number the alarms on top."""
-    found = spans(alarm)
-    for start, end in found:
-        left, right = where[start], where[min(end, len(where) - 1)]
-        axes.axvspan(left, right, facecolor=ALARM, alpha=0.13, linewidth=0)
-        axes.axvspan(left, right, facecolor="none", edgecolor=ALARM, hatch="////", linewidth=0.8, alpha=0.55)
-    if not (numbered and found):
-        return
-    room = LABEL_INCHES / _width(axes) * (where[-1] - where[0])
-    for first, last, row in _clusters([where[start] for start, _ in found], room):
-        axes.annotate(
-            str(first) if first == last else f"{first}-{last}",
-            (row, 1),
-            xycoords=("data", "axes fraction"),
-            xytext=(0, 2),
-            textcoords="offset points",
-            color=ALARM,
-            fontweight="bold",
-            annotation_clip=False,
-        )
-
-
-def label_time(axes: Any, label: str, *, dated: bool) -> None:
-    """Say what the time axis counts; write dates as briefly as the width asks for."""
-    if not dated:
-        axes.set_xlabel(plain(label))
-        return
-    # With fewer than five ticks the locator finds no interval for some spans.
-    most: Any = max(5, int(0.8 * _width(axes)))
-    locator: Any = dates.AutoDateLocator(minticks=2, maxticks=most)
-    axes.xaxis.set_major_locator(locator)
-    axes.xaxis.set_major_formatter(dates.ConciseDateFormatter(locator))
-
-
-def _width(axes: Any) -> float:
-    """Width in inches of the figure or subfigure that axes are in."""
-    return float(axes.figure.bbox.width / axes.figure.dpi)
-
-
-def _clusters(places: list[Any], room: Any) -> list[tuple[int, int, Any]]:
-    """Join alarms whose numbers would be written over each other: first and last number, and where."""
-    joined: list[tuple[int, int, Any]] = []
-    for number, place_ in enumerate(places, start=1):
-        if joined and place_ - joined[-1][2] < room:
-            joined[-1] = (joined[-1][0], number, joined[-1][2])
-        else:
-            joined.append((number, number, place_))
-    return joined
-
-
-def _against_limit(axes: Any, where: NDArray[Any], values: Series, limit: Series, label: str) -> None:
-    known = limit[np.isfinite(limit) & (limit > 0)]
-    floor = FLOOR * float(known.min()) if len(known) else 0.0
-    drawn = np.where(values < floor, floor, values)
-    start, lowest, highest = envelope(drawn, BUCKETS)
-    if len(start) < len(values):
-        axes.fill_between(where[start], lowest, highest, color=TRACE, linewidth=0.7)
-    else:
-        axes.plot(where, drawn, color=TRACE, linewidth=0.9)
-    start, low, _ = envelope(limit, BUCKETS)
-    axes.plot(where[start], low, color=LIMIT, linewidth=1.3, dashes=(5, 2), label="limit")
-    if len(known) and np.isfinite(values).any():
-        log_scale(axes)
-        axes.legend(loc="upper left", frameon=False, labelcolor=INK, handlelength=2.6, borderpad=0.1)
-    axes.set_ylabel(label)
+def draw_trace(
+    axes: Any,
+    where: NDArray[np.float64],
+    measured: NDArray[np.float64],
+    expected: NDArray[np.float64] | None,
+    name: str,
+) -> None:
+    """Draw one channel, its name above, and dashed what was expected of it."""
+    axes.plot(where, measured, color=TRACE, linewidth=1.2, label="measured")
+    if expected is not None:
+        axes.plot(where, expected, color=LIMIT, linewidth=1.2, dashes=(4, 2), label="expected")
+    axes.set_title(brief(name), loc="left", fontsize="medium")
     dress(axes, grid="y")
 
 
-def plain(name: str) -> str:
-    """Keep a dollar sign in a channel's name from being taken for mathematics."""
-    return name.replace("$", r"\$")
+def label_lines(axes: Any) -> None:
+    """Say which line is which, above all axes: nothing can lie under it there."""
+    axes.figure.legend(
+        *axes.get_legend_handles_labels(), loc="outside upper right", frameon=False, labelcolor=INK, ncols=2
+    )
 
 
-def log_scale(axes: Any) -> None:
-    """Make the vertical axis logarithmic, its numbers written out."""
-    axes.set_yscale("log")
-    low, high = axes.get_ylim()
-    steps = (1.0, 2.0, 5.0) if high < TWO_DECADES * low else (1.0,)
-    axes.yaxis.set_major_locator(LogLocator(subs=steps))
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:,g}"))
-    axes.yaxis.set_minor_formatter(NullFormatter())
-
-
-def dress(axes: Any, *, grid: str) -> None:
-    """Give axes the look of the others: ink on two sides, a fine grid."""
-    axes.grid(visible=True, axis=grid, color=GRID, linewidth=0.6)
-    axes.set_axisbelow(True)
-    if grid == "y":
-        axes.margins(x=0.004)
-    for side, spine in axes.spines.items():
-        spine.set_visible(side in ("left", "bottom"))
-        spine.set_color(INK)
-    axes.tick_params(which="both", colors=INK, labelcolor=INK)
-    axes.xaxis.label.set_color(INK)
-    axes.yaxis.label.set_color(INK)
+def _against_limit(axes: Any, values: Band, limit: Band, label: str) -> None:
+    known = limit.lowest[np.isfinite(limit.lowest) & (limit.lowest > 0)]
+    floor = FLOOR * float(known.min()) if len(known) else 0.0
+    low, high = (np.where(series < floor, floor, series) for series in (values.lowest, values.highest))
+    if np.array_equal(low, high, equal_nan=True):
+        axes.plot(values.where, low, color=TRACE, linewidth=0.9)
+    else:
+        axes.fill_between(values.where, low, high, color=TRACE, linewidth=0.7)
+    axes.plot(limit.where, limit.lowest, color=LIMIT, linewidth=1.3, dashes=(5, 2))
+    if len(known) and np.isfinite(high).any():
+        log_scale(axes)
+        # Beside the end of its line, where nothing is drawn.
+        end = (1, float(known[-1]))
+        axes.annotate(
+            "limit",
+            end,
+            xycoords=("axes fraction", "data"),
+            xytext=(3, 0),
+            textcoords="offset points",
+            va="center",
+            color=LIMIT,
+            annotation_clip=False,
+        )
+    axes.set_ylabel(plain(label))
+    dress(axes, grid="y")

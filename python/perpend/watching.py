@@ -117,7 +117,7 @@ def _run(
     observers: list[Observer] = [tally, Narrator(sys.stdout, tally, progress.clear), progress]
     history = None
     if request.report is not None:
-        history = History()
+        history = History(watch)
         observers.append(history)
     keeper = None
     if request.state is not None:

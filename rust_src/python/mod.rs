@@ -1,5 +1,10 @@
 //! The binding: thin, one file a class. The documentation of its classes is in `_core.pyi`.
-#![allow(clippy::doc_markdown, reason = "what the stub documents is numpydoc")]
+#![allow(
+    clippy::doc_markdown,
+    clippy::doc_link_with_quotes,
+    clippy::doc_lazy_continuation,
+    reason = "what the stub documents is numpydoc, examples included"
+)]
 
 /// The documentation that `_core.pyi` gives a class or one of its members; the build script lays it out.
 macro_rules! stub_doc {

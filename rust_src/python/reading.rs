@@ -166,6 +166,16 @@ impl PyReading {
         PyArray1::from_slice(py, &self.reading.contributions)
     }
 
+    #[doc = stub_doc!("Reading.expected")]
+    fn expected<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<f64>> {
+        PyArray1::from_slice(py, &self.reading.expected)
+    }
+
+    #[doc = stub_doc!("Reading.corrected")]
+    fn corrected<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<f64>> {
+        PyArray1::from_slice(py, &self.reading.corrected)
+    }
+
     #[doc = stub_doc!("Reading.suspects")]
     #[pyo3(signature = (n=3))]
     fn suspects(&self, n: usize) -> Vec<(&str, f64)> {

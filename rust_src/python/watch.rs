@@ -287,6 +287,14 @@ impl PyWatch {
         self.inner.read(py, |inner| either!(inner, watch => watch.rank()))
     }
 
+    #[doc = stub_doc!("Watch.energies")]
+    #[getter]
+    fn energies<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<f64>> {
+        let energies: Vec<f64> =
+            self.inner.read(py, |inner| either!(inner, watch => watch.energies().to_vec()));
+        PyArray1::from_vec(py, energies)
+    }
+
     #[doc = stub_doc!("Watch.dropped")]
     #[getter]
     fn dropped(&self, py: Python<'_>) -> usize {

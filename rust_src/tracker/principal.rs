@@ -152,6 +152,12 @@ impl<T: Scalar> Tracker<T> {
         Ok(())
     }
 
+    /// Takes the room that [`Tracker::refresh`] needs once all directions are there: it allocates nothing then.
+    pub(crate) fn make_room_to_refresh(&mut self) {
+        let size = self.settings().directions();
+        self.principal.svd.0 = Some((size, Svd::new(size, size)));
+    }
+
     /// Axes reported: as set or, where a share is followed, as chosen at the last refresh.
     #[must_use]
     pub fn rank(&self) -> usize {

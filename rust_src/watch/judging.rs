@@ -109,6 +109,7 @@ impl<T: Scalar> Judging<T> {
         let verdicts = [self.charts[0].judge(judged.spe, judged.share), self.charts[1].judge(judged.t2, 1.0)];
         record(reading, judged, &verdicts, self.model.lens.residual());
         self.suspect(judged, &verdicts, reading);
+        self.model.explain(&mut reading.expected, &mut reading.corrected);
 
         // A feed that stands still, all channels repeating themselves, is no news: it would teach that nothing moves.
         let frozen = frozen || self.stands_still(reading);

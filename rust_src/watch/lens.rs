@@ -54,6 +54,7 @@ pub struct Lens<T> {
     /// Work: weights on the axes.
     weights: Vec<f64>,
     blame: Vec<f64>,
+    correction: Vec<f64>,
     fit: Cholesky,
 }
 
@@ -74,6 +75,7 @@ impl<T: Scalar> Lens<T> {
             residual: vec![0.0; channels],
             weights: vec![0.0; rank],
             blame: vec![0.0; channels],
+            correction: vec![0.0; channels],
             fit: Cholesky::new(rank),
         }
     }
@@ -122,6 +124,12 @@ impl<T: Scalar> Lens<T> {
     #[must_use]
     pub fn residual(&self) -> &[f64] {
         &self.residual
+    }
+
+    /// What each channel's deviation has too much, if it alone is to be put right: of the row blamed last; zero in the gaps.
+    #[must_use]
+    pub fn correction(&self) -> &[f64] {
+        &self.correction
     }
 
     /// What the scores of the row judged last say of `channel`'s deviation.
@@ -210,11 +218,13 @@ impl<T: Scalar> Lens<T> {
             *weight = -score / energy * ratio;
         }
         ops::subtract(self.axes.view(self.rank), &self.weights, &self.residual, &mut self.blame);
-        for (channel, value) in self.blame.iter_mut().enumerate() {
+        for (channel, (value, correction)) in self.blame.iter_mut().zip(&mut self.correction).enumerate() {
             let phi = *value * by_spe;
             let curvature = self.left[channel] * by_spe + self.told[channel] * by_t2;
             let observed = !self.deviation[channel].is_nan();
-            *value = if observed && curvature > 0.0 { phi * phi / curvature } else { 0.0 };
+            let step = if observed && curvature > 0.0 { phi / curvature } else { 0.0 };
+            *correction = step;
+            *value = phi * step;
         }
         &self.blame
     }
@@ -236,6 +246,7 @@ impl<T: Scalar> Part for Lens<T> {
             residual: _,
             weights: _,
             blame: _,
+            correction: _,
             fit: _,
         } = self;
         to.rows("axes", axes.view(*rank), *rank);

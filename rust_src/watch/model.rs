@@ -57,9 +57,13 @@ impl<T: Scalar> Model<T> {
     pub fn new(units: Units, channels: usize, rank: usize, memory: Option<f64>) -> Result<Self, Error> {
         let settings = tracker::Settings { channels, rank, memory, center: true, guard: None };
         let floor = rounding_energy::<T>(&units);
+        let mut trackers = [Tracker::new(settings)?, Tracker::new(settings)?];
+        // Either may be what is learned anew, and refreshed within a tick.
+        trackers.iter_mut().for_each(Tracker::make_room_to_refresh);
+        let [tracker, next] = trackers;
         Ok(Self {
-            tracker: Tracker::new(settings)?,
-            next: Tracker::new(settings)?,
+            tracker,
+            next,
             lens: Lens::new(channels, rank),
             renewal: Renewal::with_room(channels, rank, settings.directions()),
             units,
@@ -87,6 +91,24 @@ impl<T: Scalar> Model<T> {
             *deviation = value - mean;
         }
         self.lens.judge(self.observed)
+    }
+
+    /// Writes what the axes say of the row looked at last, and what its channels would each have to read to suit them best,
+    /// as far as [`Lens::blame`] has found; in the channels' own units, NaN for a channel that takes no part.
+    /// `6 channels` flops, and `2 rank` a gap.
+    pub fn explain(&self, expected: &mut [f64], corrected: &mut [f64]) {
+        self.units.unscale_less(&self.scaled, self.lens.residual(), expected);
+        self.units.unscale_less(&self.scaled, self.lens.correction(), corrected);
+        if self.observed == self.units.moving() {
+            return;
+        }
+        for (channel, scaled) in self.scaled.iter().enumerate() {
+            if scaled.is_nan() {
+                let told = self.tracker.mean()[channel] + self.lens.told_of(channel);
+                expected[channel] = self.units.unscaled(channel, told);
+                corrected[channel] = expected[channel];
+            }
+        }
     }
 
     /// Learns the row looked at last.

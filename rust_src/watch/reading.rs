@@ -88,6 +88,13 @@ pub struct Reading {
     pub drift: Drift,
     /// Squared residual of each channel, scaled as the SPE is: they sum to it.
     pub contributions: Vec<f64>,
+    /// What the model makes of the row, in the channels' own units: the value of each channel that the scores stand for,
+    /// in its gaps too. NaN for a channel that takes no part. The squared differences from the row, in squared spreads
+    /// and over the observed share of the SPE, are the contributions.
+    pub expected: Vec<f64>,
+    /// What each channel would have to read, in its own unit, for the row to suit the model best if it alone were put
+    /// right: see [`super::suspects`]. As `expected` in a gap.
+    pub corrected: Vec<f64>,
     /// Reconstruction share of each channel.
     pub shares: Vec<f64>,
     /// Gaps, stuck and vanished channels.
@@ -100,6 +107,8 @@ impl Reading {
     pub fn new(channels: usize) -> Self {
         let mut reading = Self {
             contributions: vec![0.0; channels],
+            expected: vec![0.0; channels],
+            corrected: vec![0.0; channels],
             shares: vec![0.0; channels],
             conditions: vec![Condition::default(); channels],
             ..Self::default()
@@ -129,6 +138,8 @@ impl Reading {
         self.exceeds = [false; 4];
         self.weight = 0.0;
         self.contributions.fill(f64::NAN);
+        self.expected.fill(f64::NAN);
+        self.corrected.fill(f64::NAN);
         self.shares.fill(0.0);
     }
 }

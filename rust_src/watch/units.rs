@@ -80,6 +80,28 @@ impl Units {
         each.filter(|(_, moves)| **moves).map(|((mean, spread), _)| (mean / spread).abs()).fold(0.0, f64::max)
     }
 
+    /// A scaled value of `channel` in its own unit; NaN where it takes no part.
+    #[must_use]
+    pub fn unscaled(&self, channel: usize, scaled: f64) -> f64 {
+        if self.moves[channel] { self.mean[channel] + self.spread[channel] * scaled } else { f64::NAN }
+    }
+
+    /// Writes `scaled - less` in the channels' own units; NaN where one takes no part.
+    pub fn unscale_less(&self, scaled: &[f64], less: &[f64], values: &mut [f64]) {
+        // No branch within the loop: it is done at each tick.
+        let units = self.mean.iter().zip(&self.spread);
+        for (((value, (mean, spread)), scaled), less) in values.iter_mut().zip(units).zip(scaled).zip(less) {
+            *value = mean + spread * (scaled - less);
+        }
+        if self.moving < values.len() {
+            values
+                .iter_mut()
+                .zip(&self.moves)
+                .filter(|(_, moves)| !**moves)
+                .for_each(|(value, _)| *value = f64::NAN);
+        }
+    }
+
     /// Writes the scaled row; NaN stays NaN. Returns how many channels that take part have a value.
     pub fn scale(&self, row: &[f64], scaled: &mut [f64]) -> usize {
         let mut observed = 0;

@@ -17,6 +17,17 @@ fn settled(seed: u64) -> Watch<f64> {
     watch
 }
 
+/// Standard deviation of each channel.
+fn spreads(rows: &[f64]) -> Vec<f64> {
+    let n = (rows.len() / CHANNELS) as f64;
+    let column = |c: usize| each(rows).map(move |row| row[c]);
+    let spread = |c: usize| {
+        let mean = column(c).sum::<f64>() / n;
+        (column(c).map(|x| (x - mean).powi(2)).sum::<f64>() / n).sqrt()
+    };
+    (0..CHANNELS).map(spread).collect()
+}
+
 /// The readings compared to the last bit; those that do not exist are equal.
 fn same(a: &Reading, b: &Reading) -> bool {
     let bits = |r: &Reading| {
@@ -50,8 +61,7 @@ fn spe_and_t2_agree_with_a_batch_decomposition_of_the_settling_rows() {
     let n = 400.0;
     let column = |c: usize| each(&rows).map(move |row| row[c]);
     let mean: Vec<f64> = (0..CHANNELS).map(|c| column(c).sum::<f64>() / n).collect();
-    let spread: Vec<f64> =
-        (0..CHANNELS).map(|c| (column(c).map(|x| (x - mean[c]).powi(2)).sum::<f64>() / n).sqrt()).collect();
+    let spread = spreads(&rows);
     let scaled = |row: &[f64], c: usize| (row[c] - mean[c]) / spread[c];
     let matrix = Mat::from_fn(400, CHANNELS, |i, j| scaled(&rows[i * CHANNELS..][..CHANNELS], j) / n.sqrt());
     let svd = matrix.thin_svd().unwrap();
@@ -66,6 +76,82 @@ fn spe_and_t2_agree_with_a_batch_decomposition_of_the_settling_rows() {
         assert!((reading.spe - spe).abs() < tolerance, "{} {spe}", reading.spe);
         assert!((reading.t2 / t2 - 1.0).abs() < 1e-11, "{} {t2}", reading.t2);
     }
+}
+
+#[test]
+fn the_spe_is_the_scaled_squared_difference_of_row_and_expected() {
+    let settling = healthy(400, 21);
+    let mut watch = Watch::<f64>::new(Settings::new(CHANNELS)).unwrap();
+    assert!(
+        watch.reading().expected.iter().all(|value| value.is_nan()),
+        "nothing is expected before settling"
+    );
+    watch.settle_on(&settling).unwrap();
+    assert_eq!(watch.dropped(), 0, "the spreads below are those of all rows");
+    let spread = spreads(&settling);
+    for row in each(&healthy(300, 22)) {
+        let reading = watch.tick(row).unwrap();
+        let off = |c: usize| (row[c] - reading.expected[c]) / spread[c];
+        let spe: f64 = (0..CHANNELS).map(|c| off(c).powi(2)).sum();
+        // Leaving the unit and coming back rounds each channel by some eps of its value in spreads, below 200 here.
+        let tolerance = 4.0 * f64::EPSILON * 200.0 * CHANNELS as f64 * (1.0 + spe.sqrt());
+        assert!((spe - reading.spe).abs() < tolerance, "{spe} {}", reading.spe);
+    }
+}
+
+#[test]
+fn in_a_gap_the_value_is_expected_that_leaves_no_residual_there() {
+    let mut watch = settled(23);
+    watch.freeze();
+    let spread = spreads(&healthy(500, 23))[5];
+    for row in each(&healthy(40, 24)) {
+        let mut row = row.to_vec();
+        row[5] = f64::NAN;
+        let reading = watch.tick(&row).unwrap();
+        let guess = reading.expected[5];
+        assert_eq!(guess.to_bits(), reading.corrected[5].to_bits());
+        row[5] = guess;
+        let reading = watch.tick(&row).unwrap();
+        // In a gap the noise takes a little off the scores, as it does not where the row is whole.
+        let left = (reading.expected[5] - guess).abs() / spread;
+        assert!(left < 0.05, "{left}");
+    }
+    let silent = watch.tick(&[f64::NAN; CHANNELS]).unwrap();
+    let mut said = silent.expected.iter().chain(&silent.corrected);
+    assert!(said.all(|value| value.is_nan()), "nothing is said of a row that is not judged");
+}
+
+#[test]
+fn a_channel_corrected_alone_takes_its_share_from_the_statistic() {
+    let mut watch = settled(27);
+    watch.freeze();
+    let total = |reading: &Reading| reading.spe / reading.spe_limit + reading.t2 / reading.t2_limit;
+    for (index, row) in each(&healthy(60, 28)).enumerate() {
+        let channel = index % CHANNELS;
+        let mut row = row.to_vec();
+        row[channel] += 9.0;
+        let reading = watch.tick(&row).unwrap().clone();
+        assert!(reading.exceeds[0] || reading.exceeds[1], "{index}");
+        row[channel] = reading.corrected[channel];
+        let left = total(watch.tick(&row).unwrap());
+        let expected = total(&reading) * (1.0 - reading.shares[channel]);
+        // Rows of up to 200 spreads off zero are rounded on the way to their own unit and back.
+        let tolerance = 4.0 * f64::EPSILON * 200.0 * CHANNELS as f64 * (1.0 + total(&reading));
+        assert!((left - expected).abs() < tolerance, "{index}: {left} {expected}");
+    }
+}
+
+#[test]
+fn energies_descend_and_are_the_variances_of_the_scores() {
+    let mut watch = Watch::<f64>::new(Settings { rank: Some(4), ..Settings::new(CHANNELS) }).unwrap();
+    assert!(watch.energies().is_empty(), "none while settling");
+    watch.settle_on(&healthy(2_000, 25)).unwrap();
+    let energies = watch.energies().to_vec();
+    assert!(energies.len() == 4 && energies.windows(2).all(|pair| pair[0] >= pair[1]), "{energies:?}");
+    // T2 divides by them: over the rows they were found from it averages to the rank.
+    watch.freeze();
+    let t2: f64 = each(&healthy(2_000, 25)).map(|row| watch.tick(row).unwrap().t2).sum();
+    assert!((t2 / 2_000.0 - 4.0).abs() < 0.05, "{}", t2 / 2_000.0);
 }
 
 #[test]

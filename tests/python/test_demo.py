@@ -82,6 +82,13 @@ def test_the_demo_tells_every_trouble_beside_its_finding_in_80_columns():
     assert "no protective system" in told
 
 
+def test_weather_that_settling_had_not_seen_is_said_to_be_that(capsys):
+    assert main(["demo"]) == 3
+    told = capsys.readouterr().out
+    stray = told[told.index("between troubles") :]
+    assert ("suspects dry_bulb" in stray) == ("had shown of it" in stray)
+
+
 def test_rows_written_by_the_demo_are_rows_to_watch(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
     assert main(["demo", "--rows", "plant.csv"]) == 0

@@ -12,8 +12,10 @@ import pytest
 
 pytest.importorskip("matplotlib", reason="the extra report is not installed")
 
+from perpend import Watch
 from perpend.cli import main
-from perpend.report.history import BEFORE, DURING, EPISODES
+from perpend.intake import Row
+from perpend.report.history import BEFORE, DURING, EPISODES, RUNS, History
 
 CHROMIUM = shutil.which("chromium") or shutil.which("chromium-browser") or shutil.which("google-chrome")
 NAMES = ["flow", "pressure <1>", "price $", "speed & torque", "level", "power"]
@@ -87,12 +89,38 @@ def test_the_alarm_table_the_suspects_and_the_cautions_are_there(page):
     text = page.read_text(encoding="utf-8")
     table = text[text.index('<table id="alarms">') : text.index("</table>")]
     assert 'data-label="suspects">pressure &lt;1&gt;' in table
-    for name in ("readings", "logbook", "drift", "suspects-1", "trace-1"):
+    for name in ("readings", "logbook", "drift", "energies", "suspects-1", "trace-1"):
         assert f'<figure id="{name}">' in text
     plain = html.unescape(re.sub(r"<[^>]+>", " ", text))
     assert "no protective system" in plain
     assert "60 cells in 10 rows" in plain
     assert "speed & torque" in plain or "pressure <1>" in plain
+
+
+def test_a_suspect_is_drawn_beside_what_is_expected_of_it(page):
+    text = page.read_text(encoding="utf-8")
+    start = text.index('<figure id="trace-1">')
+    drawn = text[start : text.index("</figure>", start)]
+    assert ">measured</text>" in drawn
+    assert ">expected</text>" in drawn
+    assert "pressure &lt;1&gt;</text>" in drawn
+
+
+def test_the_history_takes_the_same_room_however_long_the_run():
+    watch = Watch(3, settle=30)
+    found = rows(5)[:, :3]
+    history, kept = History(watch), []
+    for number in range(6_000):
+        reading = watch.tick(found[number % 400])
+        history.take(Row(number + 1, "", found[number % 400], None), reading)
+        if number + 1 in (30, 6_000):
+            kept.append(history.bands())
+    assert len(history) == 6_000
+    assert len(kept[0]["spe"].where) == 30
+    assert RUNS // 2 <= len(kept[1]["spe"].where) <= RUNS
+    assert kept[1]["time"].highest[-1] == 6_000
+    assert np.nanmax(kept[1]["energy_1"].highest) == pytest.approx(watch.energies[0], rel=0.5)
+    assert history.lanes["settling"] == 30
 
 
 def test_colours_follow_the_page_and_text_is_text(page):

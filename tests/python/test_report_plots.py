@@ -2,11 +2,12 @@
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
 from perpend.envelope import envelope, spans
+from perpend.report.reduced import Reduced
 
 plot = pytest.importorskip("perpend.plot", reason="the extra plot is not installed", exc_type=ImportError)
 
@@ -28,6 +29,24 @@ def test_a_reduced_series_keeps_the_extremes_of_every_run(series, buckets):
         assert (np.isnan(low) and np.isnan(high)) if len(known) == 0 else (low, high) == (known.min(), known.max())
 
 
+@given(arrays(float, st.tuples(st.integers(1, 3_000), st.just(2)), elements=st.floats(-9, 9) | st.just(np.nan)))
+@settings(max_examples=30, deadline=None)
+def test_a_run_kept_reduced_loses_no_extreme_and_takes_no_more_room(rows):
+    kept = Reduced(2, 8)
+    for count, row in enumerate(rows.tolist(), start=1):
+        kept.take(row)
+        if count % 701 == 0:
+            kept.runs()
+    lowest, highest = kept.runs()
+    assert min(4, len(rows)) <= len(lowest) <= 8
+    length = 1
+    while length * 8 <= len(rows):
+        length *= 2
+    start = np.arange(0, len(rows), length)
+    assert np.array_equal(lowest, np.fmin.reduceat(rows, start), equal_nan=True)
+    assert np.array_equal(highest, np.fmax.reduceat(rows, start), equal_nan=True)
+
+
 @given(st.lists(st.booleans(), max_size=60))
 def test_spans_cover_exactly_the_flagged_rows(flags):
     covered = np.zeros(len(flags), dtype=bool)
@@ -44,7 +63,7 @@ def test_readings_are_drawn_against_limits_on_a_scale_that_shows_quiet_and_peak(
     assert upper.get_yscale() == lower.get_yscale() == "log"
     assert upper.get_ylim()[0] < 1
     assert upper.get_ylim()[1] > 500
-    assert [text.get_text() for text in upper.texts] == ["1"]
+    assert [text.get_text() for text in upper.texts] == ["limit", "1"]
 
 
 def test_long_series_are_drawn_in_bounded_size():

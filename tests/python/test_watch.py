@@ -65,6 +65,50 @@ def test_contributions_have_a_channel_each_and_sum_to_the_spe(watch):
     np.testing.assert_allclose(contributions.sum(), reading.spe, rtol=40 * np.finfo(float).eps)
 
 
+def test_expected_lies_beside_the_row_in_its_own_units(watch):
+    rows = healthy(200, 6)
+    readings = [watch.tick(row) for row in rows]
+    off = rows - [reading.expected() for reading in readings]
+    contributions = np.array([reading.contributions() for reading in readings])
+    spread = healthy(400).std(axis=0)
+    rounding = 1e3 * np.finfo(float).eps * np.abs(rows).max()
+    np.testing.assert_allclose(np.abs(off), spread * np.sqrt(contributions), rtol=0, atol=rounding)
+
+
+def test_expected_fills_gaps_and_is_nothing_where_nothing_was_judged():
+    rows = healthy(400, 7)
+    rows[:, 2] = 4.0
+    watch = Watch(CHANNELS, settle=300)
+    assert np.isnan(watch.tick(rows[0]).expected()).all()
+    assert watch.energies.shape == (0,)
+    watch.replay(rows[1:300])
+    row, missing = rows[300].copy(), rows[300].copy()
+    missing[6] = np.nan
+    whole, filled = watch.copy().tick(row).expected(), watch.tick(missing).expected()
+    assert np.isnan(whole).tolist() == np.isnan(filled).tolist() == [channel == 2 for channel in range(CHANNELS)]
+    assert abs(filled[6] - row[6]) < 3 * 0.4 * np.sqrt(2)
+    assert np.isnan(watch.tick(np.full(CHANNELS, np.nan)).expected()).all()
+
+
+def test_corrected_says_of_a_faulty_channel_what_the_others_do(watch):
+    row = healthy(1, 8)[0]
+    wrong = row.copy()
+    wrong[7] += 30
+    reading = watch.tick(wrong)
+    assert reading.suspects(1)[0][0] == "probe_h"
+    assert abs(reading.corrected()[7] - row[7]) < 4 * 0.4
+    assert abs(reading.expected()[7] - row[7]) > 4 * 0.4
+
+
+def test_energies_are_descending_one_an_axis_and_a_copy(watch):
+    energies = watch.energies
+    assert energies.shape == (watch.rank,)
+    assert (np.diff(energies) < 0).all()
+    assert energies.sum() < CHANNELS
+    energies[:] = 0
+    assert (watch.energies > 0).all()
+
+
 def test_replay_gives_arrays_named_as_the_readings():
     rows = healthy(600, 4)
     rows[500:, 1] += 5

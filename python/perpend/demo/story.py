@@ -55,7 +55,7 @@ def run_demo(seed: int | None = None, report: str | None = None) -> int:
         need_plots(report)
     scenario = make_scenario(SEED if seed is None else seed)
     watch = Watch(len(NAMES), NAMES, settle=SETTLE, memory=MEMORY)
-    tally, history = Tally(), History()
+    tally, history = Tally(), History(watch)
     print(OPENING)
     print("\nAS IT HAPPENED\n")
     judge(watch, _rows(scenario), [tally, history, Chronicle(scenario, tally), Crew(scenario, watch)])

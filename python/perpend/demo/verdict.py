@@ -10,6 +10,7 @@ from perpend.tally import Alarm, Tally
 # An alarm that begins this soon after a repair still belongs to the trouble: the metal is still cooling.
 AFTERMATH = 3 * ROWS_AN_HOUR
 MARGIN = "    "
+WEATHER = ("wet_bulb", "dry_bulb")
 
 
 def compared(trouble: Trouble, alarms: list[Alarm]) -> list[str]:
@@ -68,6 +69,8 @@ def false_alarms(scenario: Scenario, tally: Tally) -> list[str]:
     ]
     for each in stray:
         lines.append(wrapped(f"{MARGIN}{each.start.text}  ", f"{span(each.rows)}, suspects {named(each.first)}"))
+    if any(name in WEATHER for each in stray for name, _ in each.first[:1]):
+        lines.append(f"{MARGIN}The weather went beyond what the days of settling had shown of it.")
     return lines
 
 

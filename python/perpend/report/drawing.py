@@ -9,12 +9,12 @@ from typing import Any
 import matplotlib as mpl
 from matplotlib.figure import Figure
 
-from perpend.plot import ALARM, GRID, INK, LIMIT, TRACE
+from perpend.dressing import ALARM, GRID, INK, LIMIT, TRACE
 
 COLOURS = {INK: "--ink", GRID: "--grid", TRACE: "--trace", LIMIT: "--limit", ALARM: "--alarm"}
 
 # Inches at 72 points: a wide drawing for screens and print, a narrow one for a phone. Text keeps its size in both.
-WIDE, NARROW = 13.0, 4.6
+WIDE, NARROW = 11.0, 4.6
 
 STYLE: dict[Any, Any] = {
     "svg.fonttype": "none",
@@ -26,7 +26,10 @@ STYLE: dict[Any, Any] = {
     "path.simplify": True,
 }
 
-Draw = Callable[[Figure], None]
+# Digits of a point beyond the second: a hundredth of a point is not seen, and half of a page.
+FINE = re.compile(r"(\.\d\d)\d+")
+
+Draw = Callable[[Figure], object]
 
 
 def drawing(draw: Draw, name: str, alt: str, *, height: float, wide: float = WIDE, narrow: float = NARROW) -> str:
@@ -68,6 +71,7 @@ def _svg(draw: Draw, name: str, alt: str, width: float, height: float, kind: str
     text = out.getvalue()
     text = text[text.index("<svg") :]
     text = re.sub(r"<metadata>.*?</metadata>", "", text, flags=re.DOTALL)
+    text = re.sub(r' d="[^"]*"', lambda path: FINE.sub(r"\1", path[0]), text)
     for colour, variable in COLOURS.items():
         text = text.replace(colour, f"var({variable})")
     text = _keep_used_ids(text)

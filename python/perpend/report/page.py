@@ -1,6 +1,7 @@
 """Set a run's figures, tables and drawings into one page that needs nothing else."""
 
 import math
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from html import escape
@@ -10,13 +11,22 @@ from pathlib import Path
 from perpend._core import __version__
 from perpend.narrator import counted, drift_text, named, placed, share
 from perpend.refusal import InputError
-from perpend.report.charts import alarm_charts, drift_chart, heading, logbook_chart, readings_chart
+from perpend.report.charts import (
+    Run,
+    alarm_charts,
+    drift_chart,
+    energies_chart,
+    heading,
+    logbook_chart,
+    readings_chart,
+)
 from perpend.report.history import History
 from perpend.tally import Alarm, Moment, Tally
 
 NOTHING_FROM_OUTSIDE = "default-src 'none'; style-src 'unsafe-inline'; img-src data:"
 LISTED = 1000
 NEW_LINE = "\n"
+SHARE = re.compile(r" (\d+) %")
 
 CAUTIONS = """\
 perpend advises; it is no protective system. Trips, interlocks and safety functions stay with the equipment made and
@@ -89,15 +99,15 @@ def write_report(name: str, about: About, tally: Tally, history: History) -> Non
 def make_page(about: About, tally: Tally, history: History) -> str:
     """Make the page's HTML."""
     style = files("perpend.report").joinpath("style.css").read_text(encoding="utf-8")
-    label, dated = about.time_label, about.dated
+    run = Run.of(history, tally, about.time_label, dated=about.dated)
     body = [
         f"<header><h1>{escape(about.title)}</h1><p>{escape(_verdict(tally))}</p></header>",
         "<main>",
         _section("At a glance", _glance(about, tally)),
-        _section("SPE and T2 over time", readings_chart(history, label, dated=dated)),
-        _section("Alarms", _table(tally) + _alarms(about, tally, history), kind="found"),
-        _section("What was learned", logbook_chart(history, label, dated=dated) + _constant(about)),
-        _section("Drift", drift_chart(history, label, dated=dated)),
+        _section("SPE and T2 over time", readings_chart(run)),
+        _section("Alarms", _table(tally) + _alarms(about, tally, history, run), kind="found"),
+        _section("What was learned", logbook_chart(run) + _constant(about)),
+        _section("Drift and energies", _drift(tally) + drift_chart(run) + energies_chart(run)),
         _section("Settings", _settings(about)),
         _section("Cautions", f"<p>{CAUTIONS}</p><p>{READING_IT}</p>", kind="cautions"),
         "</main>",
@@ -140,7 +150,7 @@ def _glance(about: About, tally: Tally) -> str:
             "gaps": f"{counted(tally.gaps, 'cell')} in {counted(tally.rows_with_gaps, 'row')}",
             "not judged": counted(tally.unjudged, "row"),
             "adopted": counted(tally.adopted, "row"),
-            "drift": "; ".join(part.strip() for part in drift_text(tally.last).split("\n")),
+            "drift": _drift_parts(tally)[0],
         }
     )
 
@@ -173,8 +183,8 @@ def _row(number: int, alarm: Alarm) -> str:
 
 
 def _kept_together(text: str) -> str:
-    """Keep a number with its percent sign and a date with its time."""
-    lines = [line.replace(" %", "\u00a0%") for line in text.split(NEW_LINE)]
+    """Keep a name with its share and a date with its time."""
+    lines = [SHARE.sub("\u00a0\\1\u00a0%", line) for line in text.split(NEW_LINE)]
     return "<br>".join([escape(lines[0]), *(f"<span>{escape(line)}</span>" for line in lines[1:])])
 
 
@@ -182,15 +192,23 @@ def _where(moment: Moment) -> str:
     return f"row {moment.number:,}" + (f"{NEW_LINE}{moment.text}" if moment.text else "")
 
 
-def _alarms(about: About, tally: Tally, history: History) -> str:
+def _alarms(about: About, tally: Tally, history: History, run: Run) -> str:
     parts = []
     if len(history.episodes) < len(tally.alarms):
         parts.append(f"<p>Drawn below: the {len(history.episodes)} alarms that went highest above their limit.</p>")
     for episode in history.episodes:
         alarm = tally.alarms[episode.number - 1]
         parts.append(f"<h3>{heading(alarm, episode.number)}</h3>")
-        parts.append(alarm_charts(alarm, episode, about.channels, about.time_label, dated=about.dated))
+        parts.append(alarm_charts(alarm, episode, about.channels, run))
     return "\n".join(parts)
+
+
+def _drift(tally: Tally) -> str:
+    return f"<p>At the end: {escape('; '.join(_drift_parts(tally)))}.</p>"
+
+
+def _drift_parts(tally: Tally) -> list[str]:
+    return [part.strip() for part in drift_text(tally.last).split(NEW_LINE)]
 
 
 def _constant(about: About) -> str:

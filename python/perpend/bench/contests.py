@@ -1,40 +1,20 @@
-"""The basis against what a user would pick instead, on this machine: a table of ratios.
+"""The contests: each answer asserted, then the two ways timed."""
 
-Every answer is asserted before it is timed. Contenders run on one thread each and take turns, so that a busy machine
-slows both; what counts is the ratio of their medians in the same run.
-"""
-
-from __future__ import annotations
-
-import contextlib
-import importlib
 import math
-import time
 from collections.abc import Callable, Iterable, Iterator
-from contextlib import AbstractContextManager
-from dataclasses import dataclass
-from types import ModuleType
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from perpend._core import Basis, kernel_path
-
-__all__ = ["SHORT", "Comparison", "compare", "conditions", "lines"]
+from perpend.bench.turns import Comparison, Contest, one_thread, optional
 
 Matrix = NDArray[np.float64]
-Work = Callable[[], object]
 
 #: Shapes (entries a vector, vectors) that take a few seconds in all.
 SHORT = ((16, 4), (1000, 64), (10_000, 64))
 
-#: Seconds in one timing at least: far above the resolution of the clock.
-_SHORTEST = 2e-3
-#: Seconds spent on a comparison, about.
-_BUDGET = 2.0
-#: Timings a contender, at least and at most.
-_REPEATS = (5, 51)
 #: Shortest streams that say something about batch work: under it a call costs more than its arithmetic.
 _STREAM = 1000
 #: Rounding allowed to two contenders' answers, in units of eps times the square root of the entries of a vector;
@@ -42,51 +22,6 @@ _STREAM = 1000
 _ROUNDING = 500.0
 #: Shape to which `compare` cuts down the cases it only checks.
 _CHECKED = (200, 16)
-
-
-@dataclass(frozen=True)
-class Comparison:
-    """One line of the table.
-
-    Attributes
-    ----------
-    what, against : str
-        The contenders.
-    dim, rank : int
-        Entries a vector, and how many vectors.
-    seconds, other_seconds : float
-        Medians of the time one took; not a number where nothing was timed.
-    goal : float or None
-        The ratio to stay below; None for a line that is only there for scale.
-    """
-
-    what: str
-    against: str
-    dim: int
-    rank: int
-    seconds: float
-    other_seconds: float
-    goal: float | None
-
-    @property
-    def ratio(self) -> float:
-        """Share of the other's time."""
-        return self.seconds / self.other_seconds
-
-
-def _optional(name: str) -> ModuleType | None:
-    try:
-        return importlib.import_module(name)
-    except ImportError:
-        return None
-
-
-def _one_thread() -> AbstractContextManager[Any]:
-    threadpoolctl = _optional("threadpoolctl")
-    if threadpoolctl is None:
-        return contextlib.nullcontext()
-    limits: AbstractContextManager[Any] = threadpoolctl.threadpool_limits(limits=1)
-    return limits
 
 
 def conditions() -> Iterator[str]:
@@ -98,29 +33,10 @@ def conditions() -> Iterator[str]:
         One line each.
     """
     yield f"kernel path {kernel_path()}, numpy {np.__version__}; medians of turns taken, one thread each"
-    if _optional("scipy.linalg") is None:
+    if optional("scipy.linalg") is None:
         yield "scipy is not installed: nothing is compared with its qr_insert"
-    if _optional("threadpoolctl") is None:
+    if optional("threadpoolctl") is None:
         yield "threadpoolctl is not installed: numpy may use more than one thread; set OMP_NUM_THREADS=1 beforehand"
-
-
-def _turns(ours: Work, theirs: Work) -> tuple[float, float]:
-    """Medians of the seconds each takes, timed in turns."""
-
-    def seconds(work: Work, calls: int) -> float:
-        start = time.perf_counter()
-        for _ in range(calls):
-            work()
-        return (time.perf_counter() - start) / calls
-
-    calls = [max(1, math.ceil(_SHORTEST / max(seconds(work, 3), 1e-9))) for work in (ours, theirs)]
-    # Warm, and long enough to plan by.
-    first = [seconds(work, count) for work, count in zip((ours, theirs), calls, strict=True)]
-    round_seconds = sum(count * each for count, each in zip(calls, first, strict=True))
-    repeats = min(max(_REPEATS[0], round(_BUDGET / round_seconds)), _REPEATS[1])
-    turns = [(seconds(ours, calls[0]), seconds(theirs, calls[1])) for _ in range(repeats)]
-    one, other = np.median(turns, axis=0)
-    return float(one), float(other)
 
 
 def _assert_alike(vectors: Matrix, triangular: Matrix, q: Matrix, r: Matrix) -> None:
@@ -153,27 +69,7 @@ def _four_calls(q: Matrix, v: Matrix) -> tuple[Matrix, Matrix]:
     return h + s, w / np.linalg.norm(w)
 
 
-@dataclass(frozen=True)
-class _Contest:
-    """Two ways to do the same work, once their answers have been found alike."""
-
-    what: str
-    against: str
-    dim: int
-    rank: int
-    goal: float | None
-    ours: Work
-    theirs: Work
-
-    def timed(self, check: bool) -> Comparison:
-        if check:
-            self.ours()
-            self.theirs()
-        one, other = (math.nan, math.nan) if check else _turns(self.ours, self.theirs)
-        return Comparison(self.what, self.against, self.dim, self.rank, one, other, self.goal)
-
-
-def _streams(vectors: Matrix) -> Iterator[_Contest]:
+def streams(vectors: Matrix) -> Iterator[Contest]:
     """Whole streams against one batch factorization."""
     rank, dim = vectors.shape
     # The order of storage that batch QR works in: it has nothing to transpose.
@@ -186,10 +82,10 @@ def _streams(vectors: Matrix) -> Iterator[_Contest]:
         def ours(stream: Callable[[Matrix], Basis] = stream) -> object:
             return stream(vectors)
 
-        yield _Contest(what, "numpy.linalg.qr", dim, rank, goal, ours, lambda: np.linalg.qr(columns))
+        yield Contest(what, "numpy.linalg.qr", dim, rank, goal, ours, lambda: np.linalg.qr(columns))
 
 
-def _one_more(vectors: Matrix, v: Matrix) -> Iterator[_Contest]:
+def _one_more(vectors: Matrix, v: Matrix) -> Iterator[Contest]:
     """One vector more at full rank, and forgotten again, which costs nothing for the last."""
     rank, dim = vectors.shape
     basis = Basis(dim, rank + 1)
@@ -204,7 +100,7 @@ def _one_more(vectors: Matrix, v: Matrix) -> Iterator[_Contest]:
     rows, triangular = np.asarray(grown.vectors, float), grown.triangular
     held, factor = rows[:rank].copy(), triangular[:rank, :rank].copy()
 
-    linalg = _optional("scipy.linalg")
+    linalg = optional("scipy.linalg")
     if linalg is not None:
         # Stored by columns, as qr_insert itself returns what it has grown, it has nothing to transpose; by rows is how
         # numpy.linalg.qr returns Q, and what it meets the first time.
@@ -214,16 +110,16 @@ def _one_more(vectors: Matrix, v: Matrix) -> Iterator[_Contest]:
                 return linalg.qr_insert(q, factor, v, rank, which="col")
 
             _assert_alike(rows, triangular, *inserted())
-            yield _Contest("one add", f"scipy qr_insert, Q by {order}", dim, rank, 1 / 8, ours, inserted)
+            yield Contest("one add", f"scipy qr_insert, Q by {order}", dim, rank, 1 / 8, ours, inserted)
 
     h, unit = _four_calls(held, v)
     slack = _ROUNDING * float(np.finfo(float).eps) * math.sqrt(dim)
     np.testing.assert_allclose(unit, rows[rank], rtol=0, atol=slack)
     np.testing.assert_allclose(h, triangular[:rank, rank], rtol=0, atol=slack * float(np.abs(h).max()))
-    yield _Contest("one add", "Gram-Schmidt twice in numpy", dim, rank, None, ours, lambda: _four_calls(held, v))
+    yield Contest("one add", "Gram-Schmidt twice in numpy", dim, rank, None, ours, lambda: _four_calls(held, v))
 
 
-def _smallest(rng: np.random.Generator) -> _Contest:
+def _smallest(rng: np.random.Generator) -> Contest:
     """Compare what a call costs where there is next to nothing to do."""
     dim, rank = 8, 2
     vectors, v = rng.standard_normal((rank, dim)), rng.standard_normal(dim)
@@ -231,7 +127,7 @@ def _smallest(rng: np.random.Generator) -> _Contest:
     expected = np.linalg.lstsq(vectors.T, v, rcond=None)[1][0]
     np.testing.assert_allclose(basis.residual_norm(v) ** 2, expected, rtol=_ROUNDING * float(np.finfo(float).eps))
     pair = np.array([0.75, -1.25])
-    return _Contest(
+    return Contest(
         "residual_norm", "numpy.vdot of 2", dim, rank, 1.0, lambda: basis.residual_norm(v), lambda: np.vdot(pair, pair)
     )
 
@@ -257,54 +153,12 @@ def compare(cases: Iterable[tuple[int, int]] = SHORT, *, check: bool = False) ->
         Where two contenders disagree on an answer.
     """
     rng = np.random.default_rng(20261201)
-    with _one_thread():
+    with one_thread():
         for dim, rank in cases:
-            streams = dim >= _STREAM
+            whole = dim >= _STREAM
             size = (min(dim, _CHECKED[0]), min(rank, _CHECKED[1])) if check else (dim, rank)
             vectors, v = rng.standard_normal(size[::-1]), rng.standard_normal(size[0])
-            contests = [*(_streams(vectors) if streams else ()), *_one_more(vectors, v)]
+            contests = [*(streams(vectors) if whole else ()), *_one_more(vectors, v)]
             for contest in contests:
                 yield contest.timed(check)
         yield _smallest(rng).timed(check)
-
-
-def _duration(seconds: float) -> str:
-    if math.isnan(seconds):
-        return "-"
-    for unit, size in (("s", 1.0), ("ms", 1e-3), ("us", 1e-6)):
-        if seconds >= size:
-            return f"{seconds / size:.3g} {unit}"
-    return f"{seconds / 1e-9:.3g} ns"
-
-
-def lines(comparisons: Iterable[Comparison]) -> Iterator[str]:
-    """Write comparisons as a table, a line as each arrives.
-
-    Parameters
-    ----------
-    comparisons : iterable of Comparison
-        From `compare`.
-
-    Yields
-    ------
-    str
-        A heading, then a line a comparison; ``ratio`` is the share of the other's time.
-    """
-    form = "{:<18}  {:<29}  {:>12}  {:>9}  {:>9}  {:>6}  {:>6}  {}"
-    yield form.format("what", "against", "shape", "median", "other", "ratio", "goal", "").rstrip()
-    for line in comparisons:
-        ratio = "-" if math.isnan(line.ratio) else f"{line.ratio:.3f}"
-        goal = "-" if line.goal is None else f"{line.goal:.3f}"
-        verdict = ""
-        if line.goal is not None and not math.isnan(line.ratio):
-            verdict = "reached" if line.ratio <= line.goal else "missed"
-        yield form.format(
-            line.what,
-            line.against,
-            f"{line.dim} x {line.rank}",
-            _duration(line.seconds),
-            _duration(line.other_seconds),
-            ratio,
-            goal,
-            verdict,
-        ).rstrip()
