@@ -1,7 +1,7 @@
 """Examples in the documentation of the classes and plots, run as they stand there."""
 
 import doctest
-import importlib
+import importlib.util
 import inspect
 
 import pytest
@@ -9,7 +9,7 @@ import pytest
 import perpend
 from perpend import _core
 
-MODULES = ["perpend", "perpend.plot"]
+MODULES = ["perpend", "perpend.plot"] if importlib.util.find_spec("matplotlib") else ["perpend"]
 
 
 def documented():
