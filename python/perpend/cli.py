@@ -11,6 +11,7 @@ from typing import Any, NoReturn
 from perpend._core import __version__
 from perpend.intake.delimited import SEPARATORS, Dialect
 from perpend.refusal import InputError, shown
+from perpend.voice import hush, plain
 
 BAD_INPUT, INTERRUPTED = 2, 130
 WHERE_HELP = "perpend {} --help says more"
@@ -65,12 +66,14 @@ def main(argv: Sequence[str] | None = None) -> int:
         sys.stderr = open(os.devnull, "w")  # noqa: SIM115
     try:
         code = _dispatch(arguments)
-        sys.stdout.flush()
+        try:
+            sys.stdout.flush()
+        except BrokenPipeError:
+            hush()
     except InputError as error:
         return _complain(called, str(error), BAD_INPUT)
     except BrokenPipeError:
-        # Whoever read the output has gone; the interpreter must not complain about it when it closes.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        hush()
         return 0
     except OSError as error:
         return _complain(called, f"{error.filename or 'output'}: {error.strerror or error}", BAD_INPUT)
@@ -80,7 +83,7 @@ def main(argv: Sequence[str] | None = None) -> int:
 
 
 def _complain(called: str, what: str, code: int) -> int:
-    print(f"{called}: {' '.join(what.split())}", file=sys.stderr)
+    print(f"{called}: {plain(' '.join(what.split()))}", file=sys.stderr)
     return code
 
 
@@ -170,7 +173,7 @@ def _add_watch(commands: Any) -> None:
     )
     add(
         "--settle",
-        type=_whole(2),
+        type=_whole(20),
         metavar="ROWS",
         help="rows to learn units, rank and first limits from",
     )
@@ -178,7 +181,7 @@ def _add_watch(commands: Any) -> None:
         "--false-alarm",
         type=_probability,
         metavar="SHARE",
-        help="share of healthy rows that may pass each limit",
+        help="share of healthy rows that may pass one limit or another",
     )
     add(
         "--rank",
@@ -298,15 +301,15 @@ def _memory(text: str) -> float:
     if text == "none":
         return math.inf
     value = _float(text)
-    if not 1 < value < math.inf:
-        raise argparse.ArgumentTypeError(f"expected a number of rows above 1, or none, got {shown(text)}")
+    if not 2 <= value < math.inf:
+        raise argparse.ArgumentTypeError(f"expected 2 rows or more, or none, got {shown(text)}")
     return value
 
 
 def _probability(text: str) -> float:
     value = _float(text)
-    if not 0 < value <= 0.5:
-        raise argparse.ArgumentTypeError(f"expected a share above 0 and up to 0.5, such as 1e-3, got {shown(text)}")
+    if not 1e-9 <= value <= 0.2:
+        raise argparse.ArgumentTypeError(f"expected a share from 1e-9 to 0.2, such as 1e-3, got {shown(text)}")
     return value
 
 

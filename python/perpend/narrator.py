@@ -3,11 +3,11 @@
 import math
 import textwrap
 from collections.abc import Callable, Sequence
-from typing import TextIO
 
 from perpend._core import Reading
 from perpend.intake import Row
 from perpend.tally import Alarm, Moment, Tally, largest_excess
+from perpend.voice import Voice
 
 CAUTION = "perpend advises; it is no protective system. Suspects are not causes."
 LABEL = 10
@@ -21,7 +21,7 @@ class Narrator:
 
     Parameters
     ----------
-    out : text stream
+    out : Voice
         Where to.
     tally : Tally
         Has taken a row before the narrator does.
@@ -29,7 +29,7 @@ class Narrator:
         Called before each line: takes away what stands in its way on a terminal.
     """
 
-    def __init__(self, out: TextIO, tally: Tally, clear: Callable[[], None] = lambda: None) -> None:
+    def __init__(self, out: Voice, tally: Tally, clear: Callable[[], None] = lambda: None) -> None:
         self._out = out
         self._clear = clear
         self._tally = tally

@@ -23,6 +23,7 @@ from perpend.refusal import InputError
 from perpend.report.history import History
 from perpend.report.readiness import need_plots
 from perpend.tally import Tally
+from perpend.voice import Voice, plain
 
 NO_ALARM, ALARM_RAISED, INTERRUPTED = 0, 3, 130
 SETTLE = 500
@@ -90,7 +91,11 @@ def run_watch(request: WatchRequest) -> int:
     with open_table(request.source, request.dialect) as table:
         layout = arrange(table, time=request.time, ignored=ignored, like=like)
         _say(_guesses(table) + layout.said)
-        watch = resume(request.state, layout.channels, request.settings) if request.state is not None else None
+        watch = (
+            resume(request.state, _plain_names(layout.channels), request.settings)
+            if request.state is not None
+            else None
+        )
         if watch is not None:
             _say([f"{request.state}: resumed after row {watch.ticks:,}, with all that was learned until then"])
             return _run(request, table, layout, watch, f"resumed from {request.state}", resumed=True)
@@ -112,9 +117,9 @@ def _run(
     first = next(rows, None)
     if first is None:
         raise InputError("a header and no rows", table.label)
-    tally = Tally()
+    tally, voice = Tally(), Voice()
     progress = Progress(table.opened)
-    observers: list[Observer] = [tally, Narrator(sys.stdout, tally, progress.clear), progress]
+    observers: list[Observer] = [tally, Narrator(voice, tally, progress.clear), progress]
     history = None
     if request.report is not None:
         history = History(watch)
@@ -142,14 +147,19 @@ def _run(
                 keeper.save()
     if watch.phase == "settling" and not interrupted and keeper is None:
         raise InputError(_unsettled(tally.rows, request.settings.get("settle", SETTLE)), table.label)
-    for line in summary(tally, len(layout.channels), settled_on):
-        print(line)
+    voice.write("".join(f"{line}\n" for line in summary(tally, len(layout.channels), settled_on)))
+    voice.flush()
     if history is not None:
         _report(request, layout, watch, settled_on, tally, history)
     if interrupted:
         _say([f"interrupted after row {tally.rows}"])
         return INTERRUPTED
     return ALARM_RAISED if tally.alarms else NO_ALARM
+
+
+def _plain_names(channels: Sequence[str]) -> list[str]:
+    """Names as the watch has them, and so all that is said and drawn of it; line ends in them made plain as well."""
+    return [plain(name).replace("\n", "\\n") for name in channels]
 
 
 def _unsettled(rows: int, settle: int) -> str:
@@ -173,7 +183,7 @@ def _report(
     clock = layout.clock
     about = About(
         title="standard input" if request.source == "-" else Path(request.source).name,
-        channels=layout.channels,
+        channels=watch.names,
         learned=settled_on if request.learn is None else settled_on.replace(request.learn, Path(request.learn).name),
         time_label="row" if clock is None else clock.column,
         dated=clock is not None and clock.dated,
@@ -202,7 +212,7 @@ def _make_watch(channels: list[str], request: WatchRequest, table: Table) -> Wat
     if rank is not None and rank >= len(channels):
         raise InputError(f"--rank: expected 1 to {len(channels) - 1} for {len(channels)} channels, got {rank}")
     try:
-        return Watch(len(channels), channels, **request.settings)
+        return Watch(len(channels), _plain_names(channels), **request.settings)
     except (ValueError, MemoryError) as error:
         raise InputError(f"{error}; perpend watch --help says more") from None
 
@@ -233,4 +243,4 @@ def _guesses(table: Table) -> list[str]:
 
 def _say(lines: Sequence[str]) -> None:
     for line in lines:
-        print(f"perpend watch: {line}", file=sys.stderr)
+        print(f"perpend watch: {plain(line)}", file=sys.stderr)

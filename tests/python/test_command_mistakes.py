@@ -44,6 +44,15 @@ MISTAKES = {
         "line 3: expected 3 cells as in the header, got 2",
     ),
     "row too long": ("flow,speed,torque\n1,2,3,4\n", [], "line 2: expected 3 cells as in the header, got 4"),
+    "quote open to the end": (
+        'flow,speed\n1,2\n3,4\n5,"6\n' + "7,8\n" * 30,
+        [],
+        "line 4: a quotation mark opened there is not closed by line 34",
+    ),
+    "settle on a moment": (GOOD, ["--settle", "5"], "--settle: expected a whole number, at least 20, got '5'"),
+    "alarm at every other row": (GOOD, ["--false-alarm", "0.5"], "--false-alarm: expected a share from 1e-9 to 0.2"),
+    "no memory": (GOOD, ["--memory", "1"], "--memory: expected 2 rows or more, or none, got '1'"),
+    "settle for ever": (GOOD, ["--settle", "1000000000000000"], "memory"),
     "open quote": ('flow,speed\n1,"2\n', [], "line 2: cannot be split into cells"),
     "one row": (
         "flow,speed\n1,2\n",
@@ -89,13 +98,13 @@ MISTAKES = {
     "memory of text": (
         GOOD,
         ["--memory", "long"],
-        "--memory: expected a number of rows above 1, or none, got 'long'",
+        "--memory: expected 2 rows or more, or none, got 'long'",
     ),
     "memory of nothing": (GOOD, ["--memory", "0"], "--memory: expected"),
     "settle on a fraction": (
         GOOD,
         ["--settle", "2.5"],
-        "--settle: expected a whole number, at least 2, got '2.5'",
+        "--settle: expected a whole number, at least 20, got '2.5'",
     ),
     "false alarms in percent": (GOOD, ["--false-alarm", "1%"], "--false-alarm: expected a share .*got '1%'"),
     "false alarms above half": (GOOD, ["--false-alarm", "5"], "--false-alarm: expected a share"),
@@ -113,7 +122,7 @@ MISTAKES = {
         "out.csv: --readings: cannot be written",
     ),
     "learn from nothing": (GOOD, ["--learn", "absent.csv"], "absent.csv: there is no such file"),
-    "learn and settle": (GOOD, ["--learn", "a.csv", "--settle", "9"], "give --learn or --settle, not both"),
+    "learn and settle": (GOOD, ["--learn", "a.csv", "--settle", "90"], "give --learn or --settle, not both"),
 }
 
 

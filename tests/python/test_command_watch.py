@@ -230,3 +230,36 @@ def test_a_logger_that_hangs_is_told_at_the_end_and_not_passed_over_as_healthy(t
     still = next(line for line in printed.splitlines() if line.startswith("still"))
     assert 600 <= int(still.split()[1]) <= 700
     assert "p0, p1, p2, p3, p4" in " ".join(printed.split())
+
+
+def test_names_that_a_terminal_would_obey_are_written_out(tmp_path):
+    names = ["a\x1b[31m", "b\u202e", "c\u2066", "Druck \u00e4", "\u6e29", "e", "f", "g"]
+    rows = healthy(ROWS, 2)
+    rows[FAULT_AT:, :3] += 12
+    with (tmp_path / "names.csv").open("w", newline="", encoding="utf-8") as out:
+        table = csv.writer(out)
+        table.writerow(names)
+        table.writerows(rows.tolist())
+    outcome = run(
+        tmp_path, "names.csv", "--time", "none", "--settle", str(SETTLE), "--readings", "r.csv", encoding="utf-8"
+    )
+    said = outcome.stdout + outcome.stderr + (tmp_path / "r.csv").read_text(encoding="utf-8")
+    assert not any(character in said for character in "\x1b\u202e\u2066")
+    assert "a\\x1b[31m" in outcome.stdout
+    assert "suspects" in outcome.stdout
+
+
+@pytest.mark.skipif(os.name != "posix", reason="pipes as POSIX has them")
+def test_a_run_whose_reader_has_gone_is_finished_all_the_same(folder, tmp_path):
+    readings = tmp_path / "readings.csv"
+    command = [*PERPEND, "watch", "fault.csv", "--settle", str(SETTLE), "--readings", str(readings)]
+    reader, writer = os.pipe()
+    os.close(reader)
+    try:
+        outcome = subprocess.run(command, cwd=folder, stdout=writer, stderr=subprocess.PIPE, text=True, check=False)
+    finally:
+        os.close(writer)
+    assert outcome.returncode == 3
+    assert readings.read_text().count("\n") == ROWS + 1
+    assert "Traceback" not in outcome.stderr
+    assert "Broken" not in outcome.stderr

@@ -124,15 +124,20 @@ class DelimitedTable:
             yield from lines
 
         reader = csv.reader(all_lines(), delimiter=self.separator, strict=True)
+        begun = self._line
         while True:
             try:
                 cells = next(reader, None)
             except csv.Error as error:
+                if self._line > begun:
+                    what = f"a quotation mark opened there is not closed by line {self._line}"
+                    raise InputError(what, f"{self.label}, line {begun}") from None
                 raise InputError(f"cannot be split into cells ({error})", self._here()) from None
             if cells is None:
                 return
             if cells:
                 yield self._line, cells
+            begun = self._line + 1
 
     def _check_header(self) -> None:
         place = self._here()
