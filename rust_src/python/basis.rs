@@ -1,6 +1,7 @@
 //! `perpend.Basis`.
 
 use numpy::PyArray1;
+use pyo3::exceptions::PyTypeError;
 use pyo3::prelude::*;
 use pyo3::types::{PyBytes, PyType};
 
@@ -37,11 +38,24 @@ pub(super) struct PyBasis {
     inner: Guarded<Inner>,
 }
 
-/// The tolerance argument: nothing, a relative one, or a pair of a relative and an absolute one.
-#[derive(FromPyObject)]
-enum ToleranceArgument {
-    Relative(f64),
-    Both(f64, f64),
+/// The tolerance argument: a relative one, or a pair of a relative and an absolute one.
+struct ToleranceArgument(Tolerance);
+
+impl<'py> FromPyObject<'_, 'py> for ToleranceArgument {
+    type Error = PyErr;
+
+    fn extract(object: Borrowed<'_, 'py, PyAny>) -> PyResult<Self> {
+        if let Ok(relative) = object.extract::<f64>() {
+            return Ok(Self(Tolerance { relative, absolute: 0.0 }));
+        }
+        match object.extract::<(f64, f64)>() {
+            Ok((relative, absolute)) => Ok(Self(Tolerance { relative, absolute })),
+            Err(_) => Err(PyTypeError::new_err(format!(
+                "tolerance: expected a number, or a pair of a relative and an absolute one, got {}",
+                object.repr()?
+            ))),
+        }
+    }
 }
 
 /// Makes a basis of one type.
@@ -69,10 +83,7 @@ impl PyBasis {
         tolerance: Option<ToleranceArgument>,
     ) -> PyResult<Self> {
         let (dim, capacity) = (dim.0, capacity.map(|capacity| capacity.0));
-        let tolerance = tolerance.map(|argument| match argument {
-            ToleranceArgument::Relative(relative) => Tolerance { relative, absolute: 0.0 },
-            ToleranceArgument::Both(relative, absolute) => Tolerance { relative, absolute },
-        });
+        let tolerance = tolerance.map(|argument| argument.0);
         let inner = match dtype {
             Stored::Float64 => Inner::Float64(make(dim, capacity, tolerance)?),
             Stored::Float32 => Inner::Float32(make(dim, capacity, tolerance)?),

@@ -149,15 +149,17 @@ impl<'py> FromPyObject<'_, 'py> for Stored {
 
     /// Reads a `dtype` argument: a name, or anything NumPy takes for one.
     fn extract(object: Borrowed<'_, 'py, PyAny>) -> PyResult<Self> {
-        let name = if object.is_instance_of::<PyString>() {
-            object.str()?
-        } else {
-            object.py().import("numpy")?.call_method1("dtype", (object,))?.getattr("name")?.str()?
+        let refused = || -> PyResult<PyErr> {
+            let got = object.str()?;
+            Ok(PyTypeError::new_err(format!("expected float64 or float32, got {got}")))
         };
-        match name.to_str()? {
-            "float64" => Ok(Self::Float64),
+        let Ok(dtype) = object.py().import("numpy")?.call_method1("dtype", (object,)) else {
+            return Err(refused()?);
+        };
+        match dtype.getattr("name")?.str()?.to_str()? {
+            "float64" if !object.is_none() => Ok(Self::Float64),
             "float32" => Ok(Self::Float32),
-            other => Err(PyTypeError::new_err(format!("expected float64 or float32, got {other}"))),
+            _ => Err(refused()?),
         }
     }
 }
@@ -175,7 +177,10 @@ impl<'py> FromPyObject<'_, 'py> for Count {
             Err(error) if error.is_instance_of::<PyOverflowError>(object.py()) => Err(PyValueError::new_err(
                 format!("expected a whole number, 0 or more, got {}", object.str()?),
             )),
-            Err(error) => Err(error),
+            Err(_) => {
+                let got = object.repr()?;
+                Err(PyTypeError::new_err(format!("expected a whole number, 0 or more, got {got}")))
+            }
         }
     }
 }

@@ -6,6 +6,7 @@ use numpy::PyArray1;
 use pyo3::prelude::*;
 use pyo3::types::PyTuple;
 
+use super::convert::Count;
 use crate::watch::{Condition, LIMITS, Reading, suspects};
 
 #[doc = stub_doc!("Reading")]
@@ -177,9 +178,9 @@ impl PyReading {
     }
 
     #[doc = stub_doc!("Reading.suspects")]
-    #[pyo3(signature = (n=3))]
-    fn suspects(&self, n: usize) -> Vec<(&str, f64)> {
-        let foremost = suspects::foremost(&self.reading.shares, n);
+    #[pyo3(signature = (n=Count(3)), text_signature = "(n=3)")]
+    fn suspects(&self, n: Count) -> Vec<(&str, f64)> {
+        let foremost = suspects::foremost(&self.reading.shares, n.0);
         foremost.into_iter().map(|(channel, share)| (self.names[channel].as_str(), share)).collect()
     }
 

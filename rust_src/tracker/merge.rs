@@ -59,10 +59,11 @@ impl<T: Scalar> Tracker<T> {
     /// Refuses a model of another kind.
     fn check_like(&self, other: &Self) -> Result<(), Error> {
         let (mine, theirs) = (&self.settings, &other.settings);
+        let rows = |memory: Option<f64>| memory.map_or_else(|| "none".to_owned(), |rows| rows.to_string());
         let pairs = [
             ("channels", mine.channels.to_string(), theirs.channels.to_string()),
             ("rank", mine.rank.to_string(), theirs.rank.to_string()),
-            ("memory", format!("{:?}", mine.memory), format!("{:?}", theirs.memory)),
+            ("memory", rows(mine.memory), rows(theirs.memory)),
             ("center", mine.center.to_string(), theirs.center.to_string()),
         ];
         for (what, expected, got) in pairs {
