@@ -178,7 +178,7 @@ impl PyReading {
     }
 
     #[doc = stub_doc!("Reading.suspects")]
-    #[pyo3(signature = (n=Count(3)), text_signature = "(n=3)")]
+    #[pyo3(signature = (n=Count(3)), text_signature = "($self, n=3)")]
     fn suspects(&self, n: Count) -> Vec<(&str, f64)> {
         let foremost = suspects::foremost(&self.reading.shares, n.0);
         foremost.into_iter().map(|(channel, share)| (self.names[channel].as_str(), share)).collect()
