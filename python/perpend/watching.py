@@ -98,7 +98,7 @@ def run_watch(request: WatchRequest) -> int:
         )
         if watch is not None:
             _say([f"{request.state}: resumed after row {watch.ticks:,}, with all that was learned until then"])
-            return _run(request, table, layout, watch, f"resumed from {request.state}", resumed=True)
+            return _run(request, table, layout, watch, f"an earlier run, kept in {request.state}", resumed=True)
         watch = _make_watch(layout.channels, request, table)
         settled_on = f"the first {request.settings.get('settle', SETTLE):,} rows"
         if learned is not None:
